@@ -1,0 +1,1 @@
+"""A table onto a picture, window by window."""

@@ -1,0 +1,1 @@
+"""Encodings and profiles, colour spaces, differences, optical density, gamut."""

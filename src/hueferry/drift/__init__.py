@@ -1,0 +1,1 @@
+"""Control charts of a scanner, a camera or a staining run."""

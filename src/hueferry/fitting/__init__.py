@@ -1,0 +1,1 @@
+"""From two pictures to the table that brings one towards the other."""

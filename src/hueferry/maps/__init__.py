@@ -1,0 +1,1 @@
+"""Colour to colour: one protocol, many maps."""

@@ -1,0 +1,1 @@
+"""What separates two palettes, and how much of it is noise."""

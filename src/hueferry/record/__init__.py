@@ -1,0 +1,1 @@
+"""Everything that ran: inputs and outputs with hashes, settings, versions, numbers."""

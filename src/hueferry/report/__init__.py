@@ -1,0 +1,1 @@
+"""A record as pages and pictures for people."""

@@ -1,0 +1,1 @@
+"""The sample pictures of Marrowfield Tileworks, rendered by code."""

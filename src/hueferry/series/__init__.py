@@ -1,0 +1,1 @@
+"""Many pictures: which belong together, one joint solution, the journal, the workers."""

@@ -1,0 +1,1 @@
+"""Stained sections of any size, in optical density, window by window."""
