@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     from hueferry.errors import HueferryError, InputError, SolverError
     from hueferry.fitting.fit import Fit
     from hueferry.measure.cost import Cost
-    from hueferry.palette.palette import Palette
+    from hueferry.palettes.palette import Palette
     from hueferry.picture import Picture
 
 __version__ = "0.1.0"
@@ -31,7 +31,7 @@ _HOMES = {
     "Fit": "hueferry.fitting.fit",
     "HueferryError": "hueferry.errors",
     "InputError": "hueferry.errors",
-    "Palette": "hueferry.palette.palette",
+    "Palette": "hueferry.palettes.palette",
     "Picture": "hueferry.picture",
     "SolverError": "hueferry.errors",
     "apply": "hueferry.api",
