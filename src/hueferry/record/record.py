@@ -23,6 +23,17 @@ _RECORDED_PACKAGES = ("hueferry", "numpy", "opencolorio", "imagecodecs", "pillow
 _CHUNK = 1 << 20
 
 
+def installed_versions() -> dict[str, str]:
+    """Return the versions of Python and of every package whose code touches a colour."""
+    found = {"python": platform.python_version()}
+    for name in _RECORDED_PACKAGES:
+        try:
+            found[name] = version(name)
+        except PackageNotFoundError:
+            continue
+    return found
+
+
 @attrs.frozen
 class FileFact:
     """A file that was read or written: its path (POSIX form), size in bytes and SHA-256."""
@@ -79,22 +90,11 @@ class Record:
     failures: Sequence[Failure] = ()
     sentences: Sequence[str] = ()
     overview: Mapping[str, Any] = attrs.field(factory=dict)
-    versions: Mapping[str, str] = attrs.field(factory=lambda: installed_versions())
+    versions: Mapping[str, str] = attrs.field(factory=installed_versions)
 
     def as_dict(self) -> dict[str, Any]:
         """Return the record as JSON values."""
         return {"schema": SCHEMA, **attrs.asdict(self)}
-
-
-def installed_versions() -> dict[str, str]:
-    """Return the versions of Python and of every package whose code touches a colour."""
-    found = {"python": platform.python_version()}
-    for name in _RECORDED_PACKAGES:
-        try:
-            found[name] = version(name)
-        except PackageNotFoundError:
-            continue
-    return found
 
 
 def to_json(record: Record) -> str:

@@ -1,0 +1,75 @@
+"""Where each output goes, decided before anything is written."""
+
+from __future__ import annotations
+
+import unicodedata
+from collections.abc import Callable, Iterable, Sequence
+from pathlib import Path
+
+import attrs
+
+from hueferry.errors import InputError, OutputError
+
+
+@attrs.frozen
+class Errand:
+    """One picture to do.
+
+    Attributes:
+        source: the file to read.
+        output: the file to write; it does not exist in the plan of a first run.
+    """
+
+    source: Path
+    output: Path
+
+
+def plan_errands(
+    inputs: Sequence[Path], out: Path, *, find: Callable[[Sequence[Path]], list[Path]]
+) -> tuple[Errand, ...]:
+    """Pair every picture under `inputs` with the file it will be written to.
+
+    A file goes to `out` under its own name, and a file found in a folder keeps its place below that folder. Names that
+    a file system could take for the same one (by case or by Unicode form) get a number, in the order of the inputs.
+
+    Args:
+        inputs: files and folders as the caller named them.
+        out: the output folder; need not exist.
+        find: lists the pictures of files and folders, in a fixed order.
+
+    Raises:
+        InputError: no picture was found.
+        OutputError: an output would be an input.
+    """
+    sources: dict[Path, Path] = {}
+    for path in inputs:
+        for picture in find([path]):
+            below = picture.relative_to(path) if path.is_dir() else Path(picture.name)
+            sources.setdefault(picture, below)
+    if not sources:
+        raise InputError("no picture was found in " + ", ".join(str(path) for path in inputs))
+    errands = tuple(_without_collisions(sources.items(), out))
+    _check_inputs_survive(errands)
+    return errands
+
+
+def _without_collisions(placed: Iterable[tuple[Path, Path]], out: Path) -> Iterable[Errand]:
+    taken: set[str] = set()
+    for source, below in placed:
+        candidate, number = below, 1
+        while _folded(candidate) in taken:
+            number += 1
+            candidate = below.with_name(f"{below.stem}-{number}{below.suffix}")
+        taken.add(_folded(candidate))
+        yield Errand(source, out / candidate)
+
+
+def _folded(path: Path) -> str:
+    return unicodedata.normalize("NFKC", path.as_posix()).casefold()
+
+
+def _check_inputs_survive(errands: Sequence[Errand]) -> None:
+    originals = {errand.source.resolve() for errand in errands}
+    for errand in errands:
+        if errand.output.resolve() in originals:
+            raise OutputError(errand.output, "this is one of the originals; choose another folder with --out")
