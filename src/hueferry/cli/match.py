@@ -1,0 +1,93 @@
+"""`hueferry match`: bring pictures together."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import TYPE_CHECKING
+
+import typer
+
+from hueferry.cli import options
+from hueferry.cli.terminal import remark, show_json, show_table
+from hueferry.fitting.settings import Aim, Settings
+
+if TYPE_CHECKING:
+    from hueferry.record.record import Entry, Failure, Record
+    from hueferry.series.job import Done
+
+SOME_FAILED = 1
+
+
+def match(
+    pictures: options.Pictures,
+    out: options.Out,
+    *,
+    to: options.To = None,
+    aim: options.AimOption = Aim.AGREE,
+    method: options.MethodOption = "auto",
+    strength: options.Strength = 1.0,
+    only: options.OnlyOption = None,
+    keep_neutrals: options.KeepNeutrals = False,
+    hold: options.Hold = None,
+    max_gain: options.MaxGain = None,
+    seed: options.Seed = 0,
+    json: options.Json = False,
+    quiet: options.Quiet = False,
+    overwrite: options.Overwrite = False,
+) -> None:
+    """Bring pictures together in colour: towards references, or towards their own common palette."""
+    chosen = options.parse_method(method)
+
+    from hueferry.api import match_files
+    from hueferry.series.match import MatchOrder
+
+    settings = Settings(
+        aim=aim,
+        method=chosen,
+        strength=strength,
+        only=only,
+        keep_neutrals=keep_neutrals,
+        max_gain=max_gain,
+        seed=seed,
+    )
+    order = MatchOrder(inputs=pictures, to=to or (), out=out, settings=settings, hold=hold, overwrite=overwrite)
+    record = match_files(order, on_done=None if quiet else say)
+    if json:
+        show_json(record.as_dict())
+    else:
+        show_costs(record)
+    if record.failures:
+        raise typer.Exit(SOME_FAILED)
+
+
+def say(number: int, count: int, outcome: Done | Failure) -> None:
+    """Print one line of progress."""
+    from hueferry.record.record import Failure
+
+    if isinstance(outcome, Failure):
+        remark(f"{number}/{count}  failed: {outcome.reason}")
+        return
+    remark(f"{number}/{count}  {outcome.entry.source.path}: {' '.join(outcome.entry.sentences)}")
+
+
+def show_costs(record: Record) -> None:
+    """Print what every picture cost before and after, and where it went."""
+    rows = [_row(entry) for entry in record.entries]
+    if rows:
+        title = f"Transport cost, {' '.join(record.sentences)} (root mean square, ΔE*ab, D50)"
+        show_table(title, ("picture", "before", "after", "moved", "largest gain", "evidence"), rows)
+    if record.failures:
+        count = len(record.failures)
+        remark(f"{count} of {count + len(record.entries)} pictures failed; the rest is done")
+
+
+def _row(entry: Entry) -> Sequence[str]:
+    numbers = entry.numbers
+    return (
+        entry.source.path.rsplit("/", 1)[-1],
+        f"{numbers['cost_before']['w2']:.2f}",
+        f"{numbers['cost_after']['w2']:.2f}",
+        f"{numbers['moved']:.2f}",
+        f"{numbers['certificate']['largest_gain']:.2f}",
+        str(numbers["evidence"]["basis"]),
+    )

@@ -1,0 +1,49 @@
+"""What pictures are brought towards."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import attrs
+
+from hueferry.errors import InputError
+from hueferry.palettes.palette import Palette
+from hueferry.picture import Picture
+
+
+@attrs.frozen(eq=False)
+class Reference:
+    """A reference: a picture, or a palette alone.
+
+    Attributes:
+        name: what people call it.
+        palette: its colours.
+        picture: the picture itself, where there is one; pairs of the same surface can then be looked for.
+    """
+
+    name: str
+    palette: Palette
+    picture: Picture | None = None
+
+    @classmethod
+    def of_picture(cls, picture: Picture, name: str | None = None) -> Reference:
+        """Make a reference of a picture, counting all of its pixels."""
+        from hueferry.palettes.build import palette_of
+
+        shown = name if name is not None else (picture.path.name if picture.path is not None else "reference")
+        return cls(shown, palette_of(picture), picture)
+
+
+def joint_palette(references: Sequence[Reference]) -> Palette:
+    """Return the one palette that several references stand for: their own if there is one, else the common one.
+
+    Raises:
+        InputError: there is no reference.
+    """
+    if not references:
+        raise InputError("there is no reference to bring the picture towards")
+    if len(references) == 1:
+        return references[0].palette
+    from hueferry.transport.barycentre import common_palette
+
+    return common_palette([reference.palette for reference in references])

@@ -1,0 +1,70 @@
+"""One picture of a run: read, fit, apply, write, and what to put on record."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+
+import attrs
+
+from hueferry.arrays import Mask
+from hueferry.errors import HueferryError
+from hueferry.fitting.fit import Fit, fit_picture
+from hueferry.fitting.reference import Reference
+from hueferry.fitting.settings import Settings
+from hueferry.picture import Picture
+from hueferry.record.record import Entry, Failure, FileFact
+from hueferry.series.plan import Errand
+
+
+@attrs.frozen(eq=False)
+class Done:
+    """A picture that was done: its entry in the record, and thumbnails (before, after) for the contact sheet."""
+
+    entry: Entry
+    before: Picture
+    after: Picture
+
+
+def run_errand(
+    errand: Errand,
+    references: Sequence[Reference],
+    settings: Settings,
+    *,
+    hold: Mask | None = None,
+    overwrite: bool = False,
+    longest: int = 480,
+) -> Done | Failure:
+    """Do one picture from file to file; a picture that cannot be done is a `Failure`, not an exception."""
+    from hueferry.files.read import read
+    from hueferry.files.thumbnail import thumbnail
+    from hueferry.files.write import write
+
+    try:
+        picture = read(errand.source)
+        fitted = fit_picture(picture, references, settings, hold=hold)
+        result = fitted.apply(picture)
+        errand.output.parent.mkdir(parents=True, exist_ok=True)
+        write(result, errand.output, overwrite=overwrite)
+        entry = entry_of(errand, fitted, picture)
+        return Done(entry, thumbnail(picture, longest), thumbnail(result, longest))
+    except HueferryError as error:
+        return Failure(errand.source.as_posix(), str(error))
+
+
+def entry_of(errand: Errand, fitted: Fit, picture: Picture) -> Entry:
+    """Return what the record says of one picture."""
+    return Entry(
+        source=FileFact.of(errand.source),
+        output=FileFact.of(errand.output),
+        numbers=fitted.as_dict(),
+        sentences=(*picture.notes, *fitted.sentences),
+    )
+
+
+def relative_to_folder(entry: Entry, out: Path) -> Entry:
+    """Return the entry with its output named relative to the folder of the run."""
+    if entry.output is None:
+        return entry
+    below = Path(entry.output.path).relative_to(out).as_posix()
+    return attrs.evolve(entry, output=attrs.evolve(entry.output, path=below))
