@@ -1,1 +1,1 @@
-"""What a correction may rest on: pairs, palettes, a prior, and the judged choice between them."""
+"""Telling light from content: pairs, palettes, prior, and the choice between them."""

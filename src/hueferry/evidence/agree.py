@@ -1,0 +1,143 @@
+"""The map that removes differences of light and camera only, and what it rests on."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from types import MappingProxyType
+from typing import Literal
+
+import numpy as np
+
+from hueferry.arrays import Colours, Mask
+from hueferry.colour.difference import delta_e_2000
+from hueferry.colour.spaces import oklab_to_lab
+from hueferry.errors import InputError
+from hueferry.evidence.camera import SIZE, CameraMap
+from hueferry.evidence.controls import hold_colours, keep_neutrals_of, keep_white, only_chroma, only_tone
+from hueferry.evidence.estimate import expected_error
+from hueferry.evidence.evidence import Basis, Evidence
+from hueferry.evidence.prior import Prior, no_change
+from hueferry.evidence.reduced import Reduced, reduce_picture
+from hueferry.evidence.testimony import hear
+from hueferry.evidence.witness import Verdict, Witness, combine
+from hueferry.maps.protocol import Map
+from hueferry.picture import Picture
+
+HOLD_LIMIT = 1.0
+"""ΔE00 that held colours may move."""
+
+_ONLY = MappingProxyType({"tone": only_tone, "chroma": only_chroma})
+_SAMPLE = 1500
+
+
+def agree(
+    source: Picture | Reduced,
+    references: Sequence[Picture | Reduced],
+    *,
+    keep_neutrals: bool = False,
+    only: Literal["tone", "chroma"] | str | None = None,
+    hold: Mask | None = None,
+    mask: Mask | None = None,
+    seed: int = 0,
+) -> tuple[Map, Evidence]:
+    """Find the change of light and camera between `source` and `references`, and undo it as far as it is known.
+
+    Args:
+        source: the picture to correct, or its reduced form (then `mask` has been taken account of already).
+        references: what it is brought towards, at least one.
+        keep_neutrals: leave the gray axis without colour.
+        only: "tone" or "chroma" to correct that part alone.
+        hold: (height, width) of the source, true where colours must not move more than `HOLD_LIMIT`.
+        mask: (height, width) of the source, true where pixels count.
+        seed: seed of every draw.
+
+    Returns:
+        The map, Oklab to Oklab, and the evidence. Where the evidence carries no correction the map moves nothing,
+        and `Evidence.decision` says why.
+
+    Raises:
+        InputError: no reference, an unknown `only`, or a mask of another size.
+    """
+    if not references:
+        raise InputError("there is no reference to agree with; give at least one")
+    if only is not None and only not in _ONLY:
+        raise InputError(f"only the tone or the chroma can be corrected alone, not {only!r}")
+    ours = source if isinstance(source, Reduced) else reduce_picture(source, mask=mask)
+    theirs = [ref if isinstance(ref, Reduced) else reduce_picture(ref) for ref in references]
+    sample = _sample(ours.colours, seed)
+    if not len(sample):
+        return _nothing("nothing of the picture counts: every pixel is masked, transparent or not finite", len(theirs))
+    priors = [no_change(source_exposure=ours.exposure, reference_exposure=their.exposure) for their in theirs]
+    witnesses = [hear(ours, their, prior, seed=seed) for their, prior in zip(theirs, priors, strict=True)]
+    if all(witness.basis is Basis.NONE for witness in witnesses):
+        return _nothing(witnesses[0].reason, len(theirs))
+    prior = priors[0] if len(theirs) == 1 else no_change()
+    verdict = combine(witnesses, prior, sample)
+    map_ = _controlled(verdict, ours, keep_neutrals=keep_neutrals, only=only, hold=hold)
+    return map_, _evidence(map_, verdict, witnesses, sample, _stops(ours, theirs))
+
+
+def identity() -> Map:
+    """Return the map that moves nothing."""
+    return CameraMap(np.zeros(SIZE))
+
+
+def _controlled(verdict: Verdict, ours: Reduced, *, keep_neutrals: bool, only: str | None, hold: Mask | None) -> Map:
+    map_: Map = CameraMap(verdict.parameters)
+    map_ = keep_neutrals_of(map_) if keep_neutrals else keep_white(map_)
+    if only is not None:
+        map_ = _ONLY[only](map_)
+    if hold is not None:
+        map_ = hold_colours(map_, ours.colours_under(hold), limit=HOLD_LIMIT)
+    return map_
+
+
+def _nothing(reason: str, references: int) -> tuple[Map, Evidence]:
+    decision = f"Nothing was changed: {reason}."
+    return identity(), Evidence(basis=Basis.NONE, decision=decision, influence=(0.0,) * references)
+
+
+def _sample(colours: Colours, seed: int) -> Colours:
+    """Draw at most `_SAMPLE` colours, seeded."""
+    if len(colours) <= _SAMPLE:
+        return colours
+    return colours[np.random.default_rng(seed).choice(len(colours), _SAMPLE, replace=False)]
+
+
+def _stops(ours: Reduced, theirs: Sequence[Reduced]) -> float | None:
+    known = [their.exposure for their in theirs if their.exposure is not None]
+    return None if ours.exposure is None or not known else float(ours.exposure - np.mean(known))
+
+
+def _evidence(
+    map_: Map, verdict: Verdict, witnesses: Sequence[Witness], sample: Colours, stops: float | None
+) -> Evidence:
+    says = np.array(verdict.influence)
+    paired = np.array([witness.basis is Basis.PAIRS for witness in witnesses])
+    pairs_share = float(says[paired].sum()) * verdict.data_share
+    found = [witness.pairs for witness in witnesses if witness.pairs is not None]
+    judged = [witness.judged for witness in witnesses if witness.judged is not None]
+    basis = Basis.PAIRS if pairs_share * 2 >= verdict.data_share else Basis.PALETTE
+    moved = float(delta_e_2000(oklab_to_lab(map_(sample)), oklab_to_lab(sample)).mean())
+    error = expected_error(CameraMap(verdict.parameters), verdict.parameters, verdict.covariance, sample)
+    facts: Mapping[Basis, str] = {
+        Basis.PAIRS: f"the pictures show the same surfaces ({sum(len(pairs) for pairs in found)} pairs)",
+        Basis.PALETTE: "the pictures show no common surface, and their palettes support a change of light in part",
+    }
+    return Evidence(
+        basis=basis,
+        decision=f"Moved by {moved:.1f} ΔE00 on average, because {facts[basis]}.",
+        pairs_share=pairs_share,
+        palette_share=verdict.data_share - pairs_share,
+        prior_share=1 - verdict.data_share,
+        pairs=sum(len(pairs) for pairs in found),
+        coverage=max((pairs.coverage for pairs in found), default=0.0),
+        inliers=sum(pairs.inliers for pairs in found),
+        expected_error=error,
+        moved=moved,
+        influence=verdict.influence,
+        judged_before=float(np.mean([before for before, _ in judged])) if judged else None,
+        judged_after=float(np.mean([after for _, after in judged])) if judged else None,
+        exposure_stops=stops,
+        camera=CameraMap(verdict.parameters).as_dict(),
+    )

@@ -1,0 +1,124 @@
+"""Controls on the map of `agree`: neutrals, clipped white, held colours."""
+
+from __future__ import annotations
+
+import attrs
+import numpy as np
+from numpy.typing import NDArray
+
+from hueferry.arrays import Colours, read_only
+from hueferry.maps.protocol import Map
+
+_LEVELS = np.linspace(0.0, 1.25, 501)
+
+WHITE_FROM = 0.965
+"""Oklab lightness (code 246 of 255) from which neutrals run back to no colour, so that clipped white stays white."""
+
+
+@attrs.frozen(eq=False)
+class NeutralAxis:
+    """A map less the colour that it gives to neutrals, as far as `keep` says at each lightness.
+
+    What is taken off depends on the source's lightness alone, so the Jacobian's determinant stays that of `inner`
+    wherever `inner` carries lightness by lightness alone.
+
+    Attributes:
+        inner: the map.
+        keep: (501,) share taken off at lightness 0 … 1.25.
+        tint: (501, 2) Oklab a, b that `inner` gives to neutrals there.
+    """
+
+    inner: Map
+    keep: NDArray[np.float64] = attrs.field(converter=read_only)
+    tint: NDArray[np.float64] = attrs.field(converter=read_only)
+
+    def __call__(self, colours: Colours) -> Colours:
+        """Carry (n, 3) Oklab colours over."""
+        carried = np.array(self.inner(colours))
+        level = np.clip(np.asarray(colours)[:, 0], 0.0, _LEVELS[-1])
+        share = np.interp(level, _LEVELS, self.keep)
+        for axis in (0, 1):
+            carried[:, axis + 1] -= share * np.interp(level, _LEVELS, self.tint[:, axis])
+        return carried
+
+
+def keep_neutrals_of(inner: Map) -> NeutralAxis:
+    """Leave every neutral without colour."""
+    return _with_neutrals(inner, np.ones_like(_LEVELS))
+
+
+def keep_white(inner: Map) -> NeutralAxis:
+    """Leave clipped white without colour: what was clipped holds no colour that a correction could know."""
+    rise = np.clip((_LEVELS - WHITE_FROM) / (1 - WHITE_FROM), 0.0, 1.0)
+    return _with_neutrals(inner, rise)
+
+
+def _with_neutrals(inner: Map, keep: NDArray[np.float64]) -> NeutralAxis:
+    neutrals = np.stack([_LEVELS, np.zeros_like(_LEVELS), np.zeros_like(_LEVELS)], axis=1)
+    return NeutralAxis(inner, keep, inner(neutrals)[:, 1:])
+
+
+@attrs.frozen(eq=False)
+class HeldColours:
+    """A map that stands still on held colours and comes back to `inner` away from them.
+
+    Attributes:
+        inner: the map.
+        centres: (k, 3) held Oklab colours.
+        reach: distance in Oklab over which the hold fades.
+        slack: share of the movement that held colours keep, 0 … 1.
+    """
+
+    inner: Map
+    centres: Colours = attrs.field(converter=read_only)
+    reach: float = 0.08
+    slack: float = 0.0
+
+    def __call__(self, colours: Colours) -> Colours:
+        """Carry (n, 3) Oklab colours over."""
+        colours = np.asarray(colours, dtype=np.float64)
+        carried = self.inner(colours)
+        free = np.ones(len(colours))
+        for start in range(0, len(colours), 8192):
+            part = slice(start, start + 8192)
+            squared = ((colours[part, None, :] - self.centres[None]) ** 2).sum(axis=2).min(axis=1)
+            free[part] = 1 - (1 - self.slack) * np.exp(-np.maximum(squared - 0.01**2, 0) / (2 * self.reach**2))
+        return colours + free[:, None] * (carried - colours)
+
+
+def hold_colours(inner: Map, colours: Colours, *, limit: float) -> Map:
+    """Hold (n, 3) Oklab `colours`: none of them moves more than `limit` ΔE00 on average of its neighbourhood."""
+    from hueferry.colour.difference import delta_e_2000
+    from hueferry.colour.spaces import oklab_to_lab
+
+    if not len(colours):
+        return inner
+    _, first = np.unique(np.floor(colours / 0.02), axis=0, return_index=True)
+    centres = colours[first[: min(len(first), 512)]] if len(first) <= 512 else colours[first[:: len(first) // 512 + 1]]
+    moved = float(delta_e_2000(oklab_to_lab(inner(centres)), oklab_to_lab(centres)).max())
+    return inner if moved <= limit else HeldColours(inner, centres, slack=min(1.0, limit / moved))
+
+
+@attrs.frozen(eq=False)
+class Part:
+    """The lightness of a map with the source's a, b, or the other way round."""
+
+    inner: Map
+    tone: bool
+
+    def __call__(self, colours: Colours) -> Colours:
+        """Carry (n, 3) Oklab colours over."""
+        carried, kept = np.array(self.inner(colours)), np.asarray(colours)
+        columns = slice(1, 3) if self.tone else slice(0, 1)
+        carried[:, columns] = kept[:, columns]
+        return carried
+
+
+def only_tone(inner: Map) -> Part:
+    """Correct lightness alone."""
+    return Part(inner, tone=True)
+
+
+def only_chroma(inner: Map) -> Part:
+    """Correct a, b alone."""
+    return Part(inner, tone=False)

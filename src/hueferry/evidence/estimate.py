@@ -1,0 +1,112 @@
+"""The camera map that pairs of colours and the prior support, and how sure it is."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import attrs
+import numpy as np
+from numpy.typing import NDArray
+
+from hueferry.arrays import Colours, read_only
+from hueferry.colour.difference import delta_e_2000
+from hueferry.colour.spaces import oklab_to_lab, oklab_to_linear_srgb
+from hueferry.evidence.camera import SIZE, CameraMap, Parameters, render, sensitivities
+from hueferry.evidence.prior import Prior
+
+HEAVY = 4.0
+"""Degrees of freedom of the Student likelihood: gross errors lose their say."""
+
+_LEAST_SCALE = 0.002
+"""Oklab; what 8-bit rounding and sharpness leave at best."""
+
+_SCALES = (0.06, 0.04, 0.025, 0.015, 0.01, 0.006, 0.004, *(_LEAST_SCALE,) * 8)
+"""Smallest scale in each step: from wide to narrow, so that a majority of one colour cannot shut the others out early."""
+
+
+@attrs.frozen(eq=False)
+class Estimate:
+    """A camera map with its posterior.
+
+    Attributes:
+        map: the most plausible member of the family.
+        covariance: (15, 15) of its parameters.
+        scale: robust deviation of the pairs from the map, in Oklab, a channel.
+    """
+
+    map: CameraMap
+    covariance: NDArray[np.float64] = attrs.field(converter=read_only)
+    scale: float
+
+
+def fit_camera(
+    source: Colours,
+    reference: Colours,
+    *,
+    weights: NDArray[np.float64],
+    prior: Prior,
+    effective: float,
+    start: Parameters | None = None,
+) -> Estimate:
+    """Find the most plausible camera map by iterated reweighting and Gauss-Newton steps (Fisher scoring).
+
+    Args:
+        source: (n, 3) Oklab.
+        reference: (n, 3) Oklab.
+        weights: (n,) trust, any scale.
+        prior: what is known before looking.
+        effective: how many independent pairs these n are worth; > 0.
+        start: (15,) first guess; None for the prior's mean.
+
+    References:
+        Lange, Little & Taylor (1989), Robust statistical modeling using the t distribution.
+    """
+    light = oklab_to_linear_srgb(source)
+    trust = weights * (effective / weights.sum())
+    parameters = np.array(prior.mean if start is None else start)
+    steps = 0.02 * prior.deviations
+    for blur in _SCALES:
+        rendered = render(parameters, light)
+        residual = reference - rendered
+        squared = (residual**2).sum(axis=1)
+        scale = max(_spread(squared, trust), blur)
+        say = trust * (HEAVY + 3) / (HEAVY + squared / scale**2)
+        slope = sensitivities(parameters, light, steps, rendered)
+        weighted = slope * (say / scale**2)[:, None, None]
+        precision = np.einsum("nci,ncj->ij", weighted, slope) + prior.precision
+        gradient = np.einsum("nci,nc->i", weighted, residual) - prior.precision @ (parameters - prior.mean)
+        step = np.linalg.solve(precision, gradient)
+        step *= min(1.0, 3.0 / max(float(np.abs(step / prior.deviations).max()), 1e-12))
+        parameters = parameters + step
+        if blur == _LEAST_SCALE and float(step @ precision @ step) < 1e-2:
+            break
+    return Estimate(CameraMap(parameters), np.linalg.inv(precision), scale)
+
+
+def _spread(squared: NDArray[np.float64], trust: NDArray[np.float64]) -> float:
+    """Weighted median of squared distances as a deviation a channel (a chi-square of 3 has median 2.366)."""
+    order = np.argsort(squared)
+    total = np.cumsum(trust[order])
+    return float(np.sqrt(squared[order][np.searchsorted(total, total[-1] / 2)] / 2.366))
+
+
+def expected_error(
+    map_: Callable[[Colours], Colours], parameters: Parameters, covariance: NDArray[np.float64], colours: Colours
+) -> float:
+    """Return the mean ΔE00 that the posterior still leaves between `map_` and the right map, on (n, 3) `colours`.
+
+    The posterior stands in for the unknown map by one deviation to both sides along each of its principal axes.
+    """
+    values, axes = np.linalg.eigh(covariance)
+    light, lab = oklab_to_linear_srgb(colours), oklab_to_lab(map_(colours))
+    variance = np.zeros(len(colours))
+    for value, axis in zip(values, axes.T, strict=True):
+        spread = np.sqrt(max(float(value), 0.0)) * axis
+        sides = [delta_e_2000(oklab_to_lab(render(parameters + sign * spread, light)), lab) for sign in (1, -1)]
+        variance += (sides[0] ** 2 + sides[1] ** 2) / 2
+    return float(np.sqrt(variance).mean())
+
+
+def unchanged() -> Parameters:
+    """Return the parameters of no change."""
+    return np.zeros(SIZE)
