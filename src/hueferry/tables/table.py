@@ -28,9 +28,7 @@ class Table:
     """
 
     lattice: Lattice = attrs.field(converter=_frozen_float32)
-    curves: NDArray[np.float32] | None = attrs.field(
-        default=None, converter=attrs.converters.optional(_frozen_float32)
-    )
+    curves: NDArray[np.float32] | None = attrs.field(default=None, converter=attrs.converters.optional(_frozen_float32))
 
     @lattice.validator
     def _check_lattice(self, _: object, value: Lattice) -> None:

@@ -1,0 +1,109 @@
+"""Any map as a table: its nodes, its input curves, and the size that its error asks for."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hueferry.arrays import Codes, Colours
+from hueferry.colour.spaces import oklab_to_xyz, xyz_to_oklab
+from hueferry.errors import InputError
+from hueferry.maps.protocol import Map
+from hueferry.picture import Encoding
+from hueferry.tables.clipped import hold_clipped
+from hueferry.tables.lookup import node_codes
+from hueferry.tables.table import Table
+
+CodeFunction = Callable[[Codes], Codes]
+"""(n, 3) codes to (n, 3) codes, not clipped; pure."""
+
+SIZES = (33, 65)
+"""Nodes along an axis: the default, and where the error of the default is too large."""
+
+_KNOTS = 4096
+"""Steps of an input curve. Nodes lie on knots, so that the identity stays exact and every cell has one slope."""
+
+_BLOCK = 1 << 15
+
+
+def sample_table(function: CodeFunction, *, size: int = 33, curves: NDArray[np.float32] | None = None) -> Table:
+    """Sample a function of codes at the nodes of a table.
+
+    Args:
+        function: (n, 3) codes to (n, 3) codes.
+        size: nodes along an axis, 2 … 129.
+        curves: (3, k) input curves as in `Table`, or None.
+
+    Raises:
+        InputError: the function gave values that are not finite, or the size is out of range.
+    """
+    if not 2 <= size <= 129:
+        raise InputError(f"a table has 2 … 129 nodes along an axis, not {size}")
+    red, green, blue = node_codes(size, curves)
+    nodes = np.stack(np.meshgrid(red, green, blue, indexing="ij"), axis=-1).reshape(-1, 3)
+    values = np.concatenate([function(nodes[start : start + _BLOCK]) for start in range(0, len(nodes), _BLOCK)])
+    return Table(values.reshape(size, size, size, 3), curves)
+
+
+def build_table(map_: Map, encoding: Encoding, *, size: int = 33, output: Encoding | None = None) -> Table:
+    """Make the table of a map of Oklab colours, for pictures in `encoding`.
+
+    Args:
+        map_: Oklab to Oklab.
+        encoding: what the table reads.
+        size: nodes along an axis.
+        output: what the table writes; None keeps `encoding`.
+    """
+    return sample_table(code_function(map_, encoding, output=output), size=size, curves=input_curves(encoding, size))
+
+
+def code_function(map_: Map, encoding: Encoding, *, output: Encoding | None = None) -> CodeFunction:
+    """Return what a table of `map_` approximates: codes → Oklab → map → gamut → codes, clipped pixels kept neutral."""
+    written = encoding if output is None else output
+
+    def through(codes: Codes) -> Codes:
+        colours = xyz_to_oklab(encoding.to_xyz(codes))
+        return written.from_xyz(oklab_to_xyz(_into_gamut(map_(colours), written, source=colours)))
+
+    return hold_clipped(through)
+
+
+def _into_gamut(colours: Colours, encoding: Encoding, *, source: Colours) -> Colours:
+    try:
+        from hueferry.colour.gamut import compress
+    except ModuleNotFoundError:
+        return colours
+    return compress(colours, encoding, source=source)
+
+
+def input_curves(encoding: Encoding, size: int) -> NDArray[np.float32] | None:
+    """Return curves that put nodes at even steps of lightness where codes are linear in light; None where they are not.
+
+    With even nodes in linear light the first cell alone would hold all shadows. Display encodings need no curve: in
+    them a finer first cell would also sharpen the infinite slope of Oklab's cube root at black, and with it the gain.
+    """
+    ramp = np.linspace(0.0, 1.0, _KNOTS + 1)
+    luminance = np.maximum.accumulate(encoding.to_xyz(np.repeat(ramp[:, None], 3, axis=1))[:, 1])
+    lightness = np.cbrt(np.clip(luminance, 0.0, None))
+    first_cell = lightness[_KNOTS // 32] / lightness[-1]
+    if first_cell < 0.25:  # 0.13 for sRGB, 0.31 for linear light
+        return None
+    return np.stack([_curve_through(_even_knots(lightness, size))] * 3)
+
+
+def _even_knots(lightness: NDArray[np.float64], size: int) -> NDArray[np.int64]:
+    """Choose strictly increasing knots at which `lightness` takes even steps."""
+    knots = np.searchsorted(lightness / lightness[-1], np.linspace(0.0, 1.0, size))
+    knots[0], knots[-1] = 0, len(lightness) - 1
+    for i in range(1, size):
+        knots[i] = max(knots[i], knots[i - 1] + 1)
+    for i in range(size - 2, -1, -1):
+        knots[i] = min(knots[i], knots[i + 1] - 1)
+    return np.asarray(knots, dtype=np.int64)
+
+
+def _curve_through(knots: NDArray[np.int64]) -> NDArray[np.float32]:
+    even = np.linspace(0.0, 1.0, len(knots))
+    return np.interp(np.arange(knots[-1] + 1), knots, even).astype(np.float32)
