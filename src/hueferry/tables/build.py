@@ -59,15 +59,24 @@ def build_table(map_: Map, encoding: Encoding, *, size: int = 33, output: Encodi
     return sample_table(code_function(map_, encoding, output=output), size=size, curves=input_curves(encoding, size))
 
 
-def code_function(map_: Map, encoding: Encoding, *, output: Encoding | None = None) -> CodeFunction:
-    """Return what a table of `map_` approximates: codes → Oklab → map → gamut → codes, clipped pixels kept neutral."""
+def code_function(
+    map_: Map, encoding: Encoding, *, output: Encoding | None = None, hold_ends: bool = True
+) -> CodeFunction:
+    """Return what a table of `map_` approximates: codes → Oklab → map → gamut → codes.
+
+    Args:
+        map_: Oklab to Oklab.
+        encoding: what goes in.
+        output: what comes out; None means `encoding`.
+        hold_ends: keep pixels that are clipped in all channels neutral (`hold_clipped`).
+    """
     written = encoding if output is None else output
 
     def through(codes: Codes) -> Codes:
         colours = xyz_to_oklab(encoding.to_xyz(codes))
         return written.from_xyz(oklab_to_xyz(_into_gamut(map_(colours), written, source=colours)))
 
-    return hold_clipped(through)
+    return hold_clipped(through) if hold_ends else through
 
 
 def _into_gamut(colours: Colours, encoding: Encoding, *, source: Colours) -> Colours:
@@ -75,7 +84,7 @@ def _into_gamut(colours: Colours, encoding: Encoding, *, source: Colours) -> Col
         from hueferry.colour.gamut import compress
     except ModuleNotFoundError:
         return colours
-    return compress(colours, encoding, source=source)
+    return np.asarray(compress(colours, encoding, source=source))
 
 
 def input_curves(encoding: Encoding, size: int) -> NDArray[np.float32] | None:

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from hueferry.arrays import Codes, Weights, read_only
 from hueferry.palettes.palette import Palette
 from hueferry.picture import Encoding
-from hueferry.tables.lookup import lattice_positions
+from hueferry.tables.lookup import lattice_positions, node_codes
 from hueferry.tables.table import Table
 
 Floats = NDArray[np.float64]
@@ -136,7 +136,9 @@ def curve_slopes(table: Table) -> tuple[Floats, Floats]:
             cell = np.minimum(first[axis] + reach, last[axis])
             np.minimum.at(least[axis], cell, slopes[axis])
             np.maximum.at(most[axis], cell, slopes[axis])
-    return least, most
+    chords = 1 / ((table.size - 1) * np.diff(node_codes(table.size, table.curves), axis=1))
+    straight = most - least <= 2.0**-22 * curves.shape[1]  # nothing but the rounding of float32 knots
+    return np.where(straight, chords, least), np.where(straight, chords, most)
 
 
 def _edges(lattice: NDArray[np.float32]) -> tuple[Floats, Floats, Floats]:
