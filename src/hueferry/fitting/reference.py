@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import attrs
 
@@ -10,28 +11,34 @@ from hueferry.errors import InputError
 from hueferry.palettes.palette import Palette
 from hueferry.picture import Picture
 
+if TYPE_CHECKING:
+    from hueferry.evidence.reduced import Reduced
+
 
 @attrs.frozen(eq=False)
 class Reference:
     """A reference: a picture, or a palette alone.
 
+    The full picture is not kept: what pairs are looked for in is its reduced form.
+
     Attributes:
         name: what people call it.
         palette: its colours.
-        picture: the picture itself, where there is one; pairs of the same surface can then be looked for.
+        witness: the reduced picture, where there is one.
     """
 
     name: str
     palette: Palette
-    picture: Picture | None = None
+    witness: Reduced | None = None
 
     @classmethod
     def of_picture(cls, picture: Picture, name: str | None = None) -> Reference:
         """Make a reference of a picture, counting all of its pixels."""
+        from hueferry.evidence.reduced import reduce_picture
         from hueferry.palettes.build import palette_of
 
         shown = name if name is not None else (picture.path.name if picture.path is not None else "reference")
-        return cls(shown, palette_of(picture), picture)
+        return cls(shown, palette_of(picture), reduce_picture(picture))
 
 
 def joint_palette(references: Sequence[Reference]) -> Palette:

@@ -1,0 +1,173 @@
+"""From a picture and its references to the certified table that brings it towards them."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from types import MappingProxyType
+from typing import Any
+
+import attrs
+
+from hueferry.arrays import Mask
+from hueferry.evidence.evidence import Basis, Evidence
+from hueferry.fitting.reference import Reference, joint_palette
+from hueferry.fitting.settings import Aim, Settings
+from hueferry.fitting.tabulate import Tabulated, carried, mean_move, tabulate
+from hueferry.fitting.view import view_of
+from hueferry.maps.method import Method
+from hueferry.maps.methods import fit_map
+from hueferry.maps.protocol import Map
+from hueferry.measure.cost import Cost, quick_cost
+from hueferry.palettes.build import palette_of
+from hueferry.palettes.palette import Palette
+from hueferry.picture import Picture
+from hueferry.tables.certificate import Certificate
+from hueferry.tables.table import Table
+
+DEFAULT_METHOD = Method.ENTROPIC
+"""What `auto` means under `adopt`: the best of the truth benchmark where the content is the same."""
+
+
+@attrs.frozen(eq=False)
+class Fit:
+    """What brings one picture towards its references, and what it rests on.
+
+    Attributes:
+        map: Oklab to Oklab, as it was wanted.
+        table: the lattice of the map for the picture's encoding, made safe; this is what is applied.
+        certificate: what was measured on the table.
+        evidence: what the correction rests on.
+        cost_before: transport cost from the picture's palette to the reference's, ΔE*ab (D50).
+        cost_after: the same for the palette that the table gives.
+        moved: mean ΔE00 by which the table moves the picture's colours.
+        view: what a report draws: palette groups, where colour went, tone and chroma curves; JSON values.
+        sentences: what was done and why, for people.
+    """
+
+    map: Map
+    table: Table
+    certificate: Certificate
+    evidence: Evidence
+    cost_before: Cost
+    cost_after: Cost
+    moved: float
+    view: Mapping[str, Any]
+    sentences: tuple[str, ...]
+
+    def apply(self, picture: Picture) -> Picture:
+        """Apply the table to a picture in the encoding of the one that was fitted; depth and metadata stay."""
+        from hueferry.applying.engine import apply_table
+
+        return apply_table(self.table, picture)
+
+    def as_dict(self) -> dict[str, Any]:
+        """Return every number as JSON values."""
+        return {
+            "cost_before": self.cost_before.as_dict(),
+            "cost_after": self.cost_after.as_dict(),
+            "moved": self.moved,
+            "certificate": self.certificate.as_dict(),
+            "evidence": self.evidence.as_dict(),
+            "view": dict(self.view),
+        }
+
+
+def fit_picture(
+    source: Picture,
+    references: Sequence[Reference],
+    settings: Settings,
+    *,
+    mask: Mask | None = None,
+    hold: Mask | None = None,
+) -> Fit:
+    """Find the table that brings `source` towards its references.
+
+    Args:
+        source: the picture to correct.
+        references: at least one.
+        settings: what is wanted.
+        mask: (height, width) of the source, true where pixels count.
+        hold: (height, width) of the source, true where colours must stay.
+
+    Raises:
+        InputError: no reference, or a mask of another size than the picture.
+        SolverError: a transport plan could not be vouched for.
+    """
+    palette = palette_of(source, mask=mask)
+    target = joint_palette(references)
+    wanted, evidence = _FITTERS[settings.aim](_Task(source, palette, references, target, settings, mask, hold))
+    result = tabulate(wanted, source.encoding, palette, settings, bits=source.bits)
+    after = carried(result.table, source.encoding, palette)
+    return Fit(
+        map=result.map,
+        table=result.table,
+        certificate=result.certificate,
+        evidence=evidence,
+        cost_before=quick_cost(palette, target),
+        cost_after=quick_cost(after, target),
+        moved=mean_move(palette, after),
+        view=view_of(result.table, source.encoding, palette, after, target),
+        sentences=_sentences(evidence, result, settings),
+    )
+
+
+def _sentences(evidence: Evidence, result: Tabulated, settings: Settings) -> tuple[str, ...]:
+    share = () if settings.strength == 1.0 else (f"Went {100 * settings.strength:.0f} % of the way.",)
+    return (evidence.decision, *share, *result.sentences)
+
+
+@attrs.frozen(eq=False)
+class _Task:
+    source: Picture
+    palette: Palette
+    references: Sequence[Reference]
+    target: Palette
+    settings: Settings
+    mask: Mask | None
+    hold: Mask | None
+
+
+def _fit_adopt(task: _Task) -> tuple[Map, Evidence]:
+    method = task.settings.method or DEFAULT_METHOD
+    map_ = fit_map(task.palette, task.target, method=method, seed=task.settings.seed)
+    map_ = _controlled(map_, task)
+    moved = mean_move(task.palette, attrs.evolve(task.palette, colours=map_(task.palette.colours)))
+    decision = f"Took on the reference's palette ({method.value}), moving colours by {moved:.1f} ΔE00 on average."
+    return map_, Evidence(basis=Basis.ADOPTED, decision=decision, palette_share=1.0, prior_share=0.0, moved=moved)
+
+
+def _controlled(map_: Map, task: _Task) -> Map:
+    from hueferry.evidence import controls
+
+    if task.settings.keep_neutrals:
+        map_ = controls.keep_neutrals_of(map_)
+    if task.settings.only is not None:
+        map_ = controls.PARTS[task.settings.only.value](map_)
+    if task.hold is not None:
+        held = palette_of(task.source, mask=task.hold).colours
+        map_ = controls.hold_colours(map_, held, limit=controls.HOLD_LIMIT)
+    return map_
+
+
+def _fit_agree(task: _Task) -> tuple[Map, Evidence]:
+    from hueferry.evidence.agree import agree
+
+    settings = task.settings
+    map_, evidence = agree(
+        task.source,
+        [reference.witness for reference in task.references],
+        keep_neutrals=settings.keep_neutrals,
+        only=None if settings.only is None else settings.only.value,
+        hold=task.hold,
+        mask=task.mask,
+        seed=settings.seed,
+    )
+    if settings.method is not None and evidence.basis is not Basis.NONE:
+        wanted = attrs.evolve(task.palette, colours=map_(task.palette.colours))
+        map_ = fit_map(task.palette, wanted, method=settings.method, seed=settings.seed)
+    return map_, evidence
+
+
+_FITTERS: Mapping[Aim, Callable[[_Task], tuple[Map, Evidence]]] = MappingProxyType(
+    {Aim.ADOPT: _fit_adopt, Aim.AGREE: _fit_agree}
+)

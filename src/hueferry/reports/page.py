@@ -1,0 +1,199 @@
+"""The report of a run: one self-contained page, rebuilt at any time from its record."""
+
+from __future__ import annotations
+
+import base64
+import hashlib
+from collections.abc import Mapping, Sequence
+from importlib.resources import files
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from hueferry.record.record import read_record
+from hueferry.reports import charts
+from hueferry.reports.pictures import PicturePair, picture_pair
+from hueferry.reports.words import (
+    CAUTIONS,
+    METHODS,
+    SOURCES,
+    evidence_facts,
+    plain_verdict,
+    said,
+    setting_facts,
+    summary,
+)
+
+NAME = "report.html"
+
+Json = Mapping[str, Any]
+
+
+def write_report(folder: Path) -> Path:
+    """Write the page of the run in `folder` and return its path.
+
+    Raises:
+        InputError: there is no record in the folder.
+    """
+    from hueferry.files.atomic import write_bytes
+
+    record = read_record(folder)
+    pairs = [picture_pair(folder, entry, count=len(record["entries"])) for entry in record["entries"]]
+    return write_bytes(folder / NAME, render_page(record, pairs).encode("utf-8"), overwrite=True)
+
+
+def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
+    """Return the page as HTML; every value of the record is escaped.
+
+    Args:
+        record: the JSON values of a record.
+        pairs: the pictures of each entry, or None where they are no longer at hand.
+    """
+    from jinja2 import Environment, select_autoescape
+
+    style, script = _asset("report.css"), _asset("report.js")
+    environment = Environment(autoescape=select_autoescape(default=True, default_for_string=True))
+    template = environment.from_string(_asset("report.html.j2"))
+    entries = record["entries"]
+    return template.render(
+        title=_title(record),
+        lead=summary(record),
+        cautions=CAUTIONS.get(record["command"], ()),
+        overview=_overview(entries),
+        failures=record["failures"],
+        pictures=[_picture(entry, pair) for entry, pair in zip(entries, pairs, strict=True)],
+        methods=METHODS[record["settings"]["aim"]],
+        sources=SOURCES[record["settings"]["aim"]],
+        settings=setting_facts(record["settings"]),
+        versions=sorted(record["versions"].items()),
+        files=_files(record),
+        version=record["versions"].get("hueferry", ""),
+        style=style,
+        script=script,
+        style_hash=_content_hash(style),
+        script_hash=_content_hash(script),
+    )
+
+
+def _asset(name: str) -> str:
+    return files("hueferry.reports").joinpath("templates", name).read_text(encoding="utf-8")
+
+
+def _content_hash(text: str) -> str:
+    return "sha256-" + base64.b64encode(hashlib.sha256(text.encode("utf-8")).digest()).decode("ascii")
+
+
+def _title(record: Json) -> str:
+    count = len(record["entries"])
+    return f"{count} picture{'' if count == 1 else 's'} brought together"
+
+
+def _overview(entries: Sequence[Json]) -> dict[str, Any]:
+    names = [name_of(entry) for entry in entries]
+    before = [entry["numbers"]["cost_before"]["w2"] for entry in entries]
+    after = [entry["numbers"]["cost_after"]["w2"] for entry in entries]
+    rows = [
+        {
+            "name": name,
+            "before": f"{one:.2f}",
+            "after": f"{two:.2f}",
+            "moved": f"{entry['numbers']['moved']:.2f}",
+            "basis": entry["numbers"]["evidence"]["basis"],
+            "verdict": plain_verdict(entry["numbers"]["certificate"]),
+        }
+        for name, one, two, entry in zip(names, before, after, entries, strict=True)
+    ]
+    chart = charts.costs(names, before, after, floor=None) if names else ""
+    return {"names": names, "chart": chart, "rows": rows}
+
+
+def name_of(entry: Json) -> str:
+    """Return what people call the picture of an entry: the last part of its path."""
+    return str(entry["source"]["path"]).rsplit("/", 1)[-1]
+
+
+def _picture(entry: Json, pair: PicturePair | None) -> dict[str, Any]:
+    numbers = entry["numbers"]
+    certificate = numbers["certificate"]
+    picture: dict[str, Any] = {
+        "name": name_of(entry),
+        "said": " ".join(entry["sentences"]),
+        "charts": _charts(numbers["view"]) if "view" in numbers else [],
+        "safe": certificate["safe"],
+        "verdict": plain_verdict(certificate),
+        "certificate": said(certificate),
+        "evidence": evidence_facts(numbers["evidence"]),
+    }
+    return picture | ({} if pair is None else pair.as_template_values())
+
+
+def _charts(view: Json) -> list[dict[str, Any]]:
+    before, after, reference = view["before"], view["after"], view["reference"]
+    reach = _reach([*before, *after, *reference])
+    plan = np.array(view["plan"], dtype=np.float64)
+    strips = "".join(
+        charts.swatches([one["colour"] for one in groups], [one["weight"] for one in groups], title)
+        for groups, title in ((before, "Palette before"), (after, "Palette after"), (reference, "Reference's palette"))
+    )
+    return [
+        {
+            "svg": strips,
+            "caption": "Palettes by weight: before, after, reference",
+            "columns": ("Palette", "Colour", "L*", "a*", "b*", "Share"),
+            "rows": _palette_rows({"before": before, "after": after, "reference": reference}),
+        },
+        _cloud("before", before, reach),
+        _cloud("after", after, reach),
+        _cloud("reference", reference, reach),
+        {
+            "svg": charts.flows(
+                plan, [one["colour"] for one in before], [one["colour"] for one in after], "Where each group went"
+            ),
+            "caption": "Where colour went: groups before (left), after (right)",
+            "columns": ("From", "To", "Share of the picture"),
+            "rows": [
+                (before[i]["colour"], after[j]["colour"], f"{100 * plan[i, j]:.1f} %")
+                for i, j in np.argwhere(plan > 0.002)
+            ],
+        },
+        _curve(view["tone"], "Tone: lightness of grays, L*", (0.0, 100.0), ("L* in", "L* out")),
+        _curve(view["chroma"], "Chroma: mean over hues at L* 60, C*ab", (0.0, 50.0), ("C* in", "C* out")),
+    ]
+
+
+def _reach(groups: Sequence[Json]) -> float:
+    return float(max(10.0, max(max(abs(one["lab"][1]), abs(one["lab"][2])) for one in groups) * 1.15))
+
+
+def _palette_rows(palettes: Mapping[str, Sequence[Json]]) -> list[tuple[str, ...]]:
+    return [
+        (name, one["colour"], *(f"{value:.1f}" for value in one["lab"]), f"{100 * one['weight']:.1f} %")
+        for name, groups in palettes.items()
+        for one in groups
+    ]
+
+
+def _cloud(name: str, groups: Sequence[Json], reach: float) -> dict[str, Any]:
+    lab = np.array([one["lab"] for one in groups])
+    colours, weights = [one["colour"] for one in groups], [one["weight"] for one in groups]
+    return {
+        "svg": charts.cloud(lab, colours, weights, f"Colours {name} in the a*b* plane", reach=reach),
+        "caption": f"a*b* plane, {name}; larger means more of the picture",
+        "columns": ("Colour", "L*", "a*", "b*", "Share"),
+        "rows": [row[1:] for row in _palette_rows({name: groups})],
+    }
+
+
+def _curve(values: Json, caption: str, span: tuple[float, float], labels: tuple[str, str]) -> dict[str, Any]:
+    return {
+        "svg": charts.curve(values["in"], values["out"], caption, span=span, labels=labels),
+        "caption": f"{caption}; dashed: no change",
+        "columns": labels,
+        "rows": [(f"{one:.1f}", f"{two:.1f}") for one, two in zip(values["in"][::2], values["out"][::2], strict=True)],
+    }
+
+
+def _files(record: Json) -> list[Json]:
+    outputs = [entry["output"] for entry in record["entries"] if entry["output"] is not None]
+    return [*record["references"], *(entry["source"] for entry in record["entries"]), *outputs]
