@@ -26,6 +26,9 @@ Cells = NDArray[np.bool_]
 ORDERS = tuple(permutations(range(3)))
 """The six tetrahedra of a cell, each by the order in which its channels are walked from the low to the high corner."""
 
+_SLAB = 4
+"""Planes of cells at a time: what is computed on the way stays in the cache."""
+
 
 @attrs.frozen(eq=False)
 class Occupied:
@@ -72,13 +75,25 @@ def determinants(lattice: NDArray[np.float32]) -> Floats:
 
     A value within float32 rounding of zero is given as 0: such a tetrahedron is flat, and reverses nothing.
     """
-    size = lattice.shape[0]
-    edges = _edges(lattice)
-    unit = float(size - 1)
-    found = np.empty((6, size - 1, size - 1, size - 1))
-    rounding = 2.0**-23 * max(1.0, float(np.abs(lattice).max())) * unit
+    unit = float(lattice.shape[0] - 1)
+    return determinants_within(lattice, unit)
+
+
+def determinants_within(part: NDArray[np.float32], unit: float) -> Floats:
+    """Return the determinants in a part of a lattice: (6, …) for (…, 3) nodes that lie 1 / `unit` apart."""
+    shape = tuple(length - 1 for length in part.shape[:3])
+    found = np.empty((6, *shape))
+    rounding = 2.0**-23 * max(1.0, float(np.abs(part).max())) * unit
+    for start in range(0, shape[0], _SLAB):
+        stop = min(start + _SLAB, shape[0])
+        _fill_determinants(part[start : stop + 1], unit, rounding, found[:, start:stop])
+    return found
+
+
+def _fill_determinants(part: NDArray[np.float32], unit: float, rounding: float, found: Floats) -> None:
+    edges = _edges(part, unit)
     for row, order in enumerate(ORDERS):
-        a, b, c = (edge * unit for edge in _walk(edges, order))
+        a, b, c = _walk(edges, order)
         sign = 1.0 if order in ((0, 1, 2), (1, 2, 0), (2, 0, 1)) else -1.0
         value = sign * _triple(a, b, c)
         doubtful = value < 1e-3
@@ -88,7 +103,6 @@ def determinants(lattice: NDArray[np.float32]) -> Floats:
             kept = value[doubtful]
             value[doubtful] = np.where(np.abs(kept) <= slack, 0.0, kept)
         found[row] = value
-    return found
 
 
 def jacobians(table: Table, cells: Cells) -> Floats:
@@ -141,8 +155,8 @@ def curve_slopes(table: Table) -> tuple[Floats, Floats]:
     return np.where(straight, chords, least), np.where(straight, chords, most)
 
 
-def _edges(lattice: NDArray[np.float32]) -> tuple[Floats, Floats, Floats]:
-    planes = np.ascontiguousarray(np.moveaxis(lattice, -1, 0), dtype=np.float64)
+def _edges(lattice: NDArray[np.float32], unit: float) -> tuple[Floats, Floats, Floats]:
+    planes = np.ascontiguousarray(np.moveaxis(lattice, -1, 0), dtype=np.float64) * unit
     return np.diff(planes, axis=1), np.diff(planes, axis=2), np.diff(planes, axis=3)
 
 

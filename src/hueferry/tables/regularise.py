@@ -11,13 +11,17 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.picture import Encoding
-from hueferry.tables.cells import Cells, Occupied, determinants, gains, widened
+from hueferry.tables.cells import Cells, Occupied, determinants_within, gains, widened
 from hueferry.tables.lookup import lattice_positions, look_up, node_codes
 from hueferry.tables.ramps import uneven_codes
 from hueferry.tables.table import Table
 
 Nodes = NDArray[np.float64]
 """(n, n, n, 3) displacements or codes at the nodes."""
+
+Box = tuple[slice, slice, slice]
+
+EVERYWHERE: Box = (slice(None), slice(None), slice(None))
 
 _ROUNDS = 10
 _WIDESPREAD = 0.25
@@ -70,13 +74,14 @@ class _Rules:
     output: Encoding
     max_gain: float
 
-    def offending(self, table: Table) -> Cells:
-        """Return the cells that fold, stretch too much where occupied, or make a ramp uneven."""
-        found = (determinants(table.lattice) < 0).any(axis=0)
-        cells = self.occupied.cells(table)
-        steep = np.zeros_like(found)
-        steep[cells] = (gains(table, cells)[0] > self.max_gain).any(axis=0)
-        found |= steep
+    def offending(self, table: Table, within: Box = EVERYWHERE) -> Cells:
+        """Return cells `within` a box that fold, stretch too much where occupied, or make a ramp uneven."""
+        found = np.zeros((table.size - 1,) * 3, dtype=bool)
+        nodes = tuple(slice(side.start, None if side.stop is None else side.stop + 1) for side in within)
+        found[within] = (determinants_within(table.lattice[nodes], table.size - 1.0) < 0).any(axis=0)
+        cells = np.zeros_like(found)
+        cells[within] = self.occupied.cells(table)[within]
+        found[cells] |= (gains(table, cells)[0] > self.max_gain).any(axis=0)
         uneven = uneven_codes(table, self.encoding, self.output)
         index = np.minimum(lattice_positions(table, uneven).astype(np.int64), table.size - 2)
         found[tuple(index.T)] = True
@@ -127,18 +132,29 @@ def _smoothed(table: Table, rules: _Rules) -> tuple[Table, int]:
     shift = table.lattice.astype(np.float64) - rest
     touched = np.zeros(table.lattice.shape[:3], dtype=bool)
     cells = rules.occupied.cells(table)
-    current, best = table, (table, 0)
+    bad = rules.offending(table)
+    if (bad & cells).sum() > _WIDESPREAD * cells.sum():
+        return table, 0
+    current = table
     for number in range(_ROUNDS):
-        bad = rules.offending(current)
-        if not bad.any():
-            return current, int(touched.sum())
-        if (bad & cells).sum() > _WIDESPREAD * cells.sum():
-            return best
         touched |= widened(_corners(bad), number // 2)
+        box = _box_around(touched)
         for _ in range(1 + number):
-            shift[touched] = _averaged(shift)[touched]
+            shift[box] = np.where(touched[box][..., None], _averaged(shift[box]), shift[box])
         current = Table(rest + shift, table.curves)
+        bad = rules.offending(current, box)  # every cell that offends lies in the box
+        if not bad.any():
+            break
     return current, int(touched.sum())
+
+
+def _box_around(nodes: NDArray[np.bool_]) -> Box:
+    """Return the nodes' bounding box with a margin of one where there is room: slices of nodes, and of their cells."""
+    sides = []
+    for axis in range(3):
+        found = np.flatnonzero(nodes.any(axis=tuple(other for other in range(3) if other != axis)))
+        sides.append(slice(max(int(found[0]) - 1, 0), min(int(found[-1]) + 2, nodes.shape[axis])))
+    return sides[0], sides[1], sides[2]
 
 
 def _corners(cells: Cells) -> NDArray[np.bool_]:
