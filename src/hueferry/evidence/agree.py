@@ -13,7 +13,7 @@ from hueferry.colour.difference import delta_e_2000
 from hueferry.colour.spaces import oklab_to_lab
 from hueferry.errors import InputError
 from hueferry.evidence.camera import SIZE, CameraMap
-from hueferry.evidence.controls import hold_colours, keep_neutrals_of, keep_white, only_chroma, only_tone
+from hueferry.evidence.controls import hold_colours, keep_neutrals_of, only_chroma, only_tone
 from hueferry.evidence.estimate import expected_error
 from hueferry.evidence.evidence import Basis, Evidence
 from hueferry.evidence.prior import Prior, no_change
@@ -68,7 +68,7 @@ def agree(
     if not len(sample):
         return _nothing("nothing of the picture counts: every pixel is masked, transparent or not finite", len(theirs))
     priors = [no_change(source_exposure=ours.exposure, reference_exposure=their.exposure) for their in theirs]
-    witnesses = [hear(ours, their, prior, seed=seed) for their, prior in zip(theirs, priors, strict=True)]
+    witnesses = [hear(ours, their, prior) for their, prior in zip(theirs, priors, strict=True)]
     if all(witness.basis is Basis.NONE for witness in witnesses):
         return _nothing(witnesses[0].reason, len(theirs))
     prior = priors[0] if len(theirs) == 1 else no_change()
@@ -84,7 +84,7 @@ def identity() -> Map:
 
 def _controlled(verdict: Verdict, ours: Reduced, *, keep_neutrals: bool, only: str | None, hold: Mask | None) -> Map:
     map_: Map = CameraMap(verdict.parameters)
-    map_ = keep_neutrals_of(map_) if keep_neutrals else keep_white(map_)
+    map_ = keep_neutrals_of(map_) if keep_neutrals else map_
     if only is not None:
         map_ = _ONLY[only](map_)
     if hold is not None:

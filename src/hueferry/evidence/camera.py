@@ -19,6 +19,8 @@ from hueferry.arrays import Colours, Linear, read_only
 from hueferry.colour.spaces import linear_srgb_to_oklab, oklab_to_linear_srgb
 
 Parameters = NDArray[np.float64]
+Columns = NDArray[np.float64]
+Plane = NDArray[np.float64]
 
 NAMES = (
     "gain_red", "gain_green", "gain_blue", "shoulder", "knee", "power", "bend", "lift",
@@ -60,57 +62,60 @@ class CameraMap:
 
 
 def render(parameters: Parameters, light: Linear) -> Colours:
-    """Carry (n, 3) linear sRGB light over to Oklab; `parameters` beyond their bounds count as at the bound."""
-    bounded = np.clip(parameters, -_BOUNDS, _BOUNDS)
-    lab = linear_srgb_to_oklab(_shoulder(light * np.exp(bounded[:3]), bounded[3], _KNEE * np.exp(bounded[4])))
-    lightness = lab[:, 0]
-    a, b = _chroma(bounded, lightness, lab[:, 1], lab[:, 2])
-    return np.stack([_tone(bounded, lightness), a, b], axis=1)
+    """Carry (n, 3) linear sRGB light over to Oklab; `parameters` beyond their bounds count as at the bound.
+
+    Args:
+        parameters: (15,), or (k, 15) for k maps at once.
+        light: (n, 3).
+
+    Returns:
+        (n, 3), or (k, n, 3).
+    """
+    several = np.atleast_2d(np.clip(parameters, -_BOUNDS, _BOUNDS))[:, :, None]
+    lab = linear_srgb_to_oklab(_shoulder(light * np.exp(several[:, None, :3, 0]), several[:, 3:4], several[:, 4:5]))
+    lightness = lab[..., 0]
+    a, b = _chroma(several, lightness, lab[..., 1], lab[..., 2])
+    carried = np.stack([_tone(several, lightness), a, b], axis=-1)
+    return carried if np.ndim(parameters) == 2 else carried[0]
 
 
-def _shoulder(light: Linear, strength: float, knee: float) -> Linear:
+def _shoulder(light: Linear, strength: Columns, knee: Columns) -> Linear:
     """Roll highlights off (strength > 0) or stretch them (< 0); increasing for every strength, identity at 0."""
-    over = np.maximum(light - knee, 0.0)
-    if strength >= 0:
-        return np.where(light > knee, knee + over / (1 + strength * over), light)
-    return light - strength * over * over
+    start = _KNEE * np.exp(knee)
+    over = np.maximum(light - start, 0.0)
+    down, up = np.maximum(strength, 0.0), np.minimum(strength, 0.0)
+    return np.asarray(np.minimum(light, start) + over / (1 + down * over) - up * over * over)
 
 
-def _tone(parameters: Parameters, lightness: NDArray[np.float64]) -> NDArray[np.float64]:
+def _tone(parameters: Columns, lightness: Plane) -> Plane:
     """Power, bend and lift of lightness: increasing, with the straight continuation beyond 0 … 1."""
-    power, bend, lift = np.exp(parameters[5]), parameters[6], parameters[7]
-    inside = np.clip(lightness, 0.0, 1.0)
-    raised = inside**power
+    power, bend, lift = np.exp(parameters[:, 5]), parameters[:, 6], parameters[:, 7]
+    raised = np.clip(lightness, 0.0, 1.0) ** power
     curved = raised + 4 * bend * raised * raised * (1 - raised)
-    lifted = lift + (1 - lift) * curved
     slope_above = (1 - lift) * (1 - 4 * bend) * power
-    return lifted + np.where(lightness > 1, (lightness - 1) * slope_above, np.minimum(lightness, 0.0))
+    beyond = np.maximum(lightness - 1, 0.0) * slope_above + np.minimum(lightness, 0.0)
+    return np.asarray(lift + (1 - lift) * curved + beyond)
 
 
-def _chroma(
-    parameters: Parameters, lightness: NDArray[np.float64], a: NDArray[np.float64], b: NDArray[np.float64]
-) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+def _chroma(parameters: Columns, lightness: Plane, a: Plane, b: Plane) -> tuple[Plane, Plane]:
     """Scale, turn, stretch and tint the a, b plane; the matrix is a positive factor × rotation × exp(symmetric)."""
     level = np.clip(lightness, 0.0, 1.0)
-    factor = np.exp(parameters[8] + parameters[9] * (level - 0.5))
-    stretch, shear = parameters[11], parameters[12]
+    factor = np.exp(parameters[:, 8] + parameters[:, 9] * (level - 0.5))
+    stretch, shear = parameters[:, 11], parameters[:, 12]
     size = np.hypot(stretch, shear)
-    even, odd = np.cosh(size), np.sinh(size) / size if size > 1e-12 else 1.0
+    even, odd = np.cosh(size), np.sinh(size) / np.maximum(size, 1e-12) + (size == 0)
     wide_a = (even + odd * stretch) * a + odd * shear * b
     wide_b = odd * shear * a + (even - odd * stretch) * b
-    cosine, sine = np.cos(parameters[10]), np.sin(parameters[10])
+    cosine, sine = np.cos(parameters[:, 10]), np.sin(parameters[:, 10])
     tint = 4 * level * (1 - level)
     return (
-        factor * (cosine * wide_a - sine * wide_b) + parameters[13] * tint,
-        factor * (sine * wide_a + cosine * wide_b) + parameters[14] * tint,
+        factor * (cosine * wide_a - sine * wide_b) + parameters[:, 13] * tint,
+        factor * (sine * wide_a + cosine * wide_b) + parameters[:, 14] * tint,
     )
 
 
-def sensitivities(parameters: Parameters, light: Linear, steps: Parameters, base: Colours) -> NDArray[np.float64]:
-    """Return the (n, 3, 15) derivative of `render`, equal to (n, 3) `base` here, by forward `steps` (15,)."""
-    columns = []
-    for index, step in enumerate(steps):
-        shift = np.zeros(SIZE)
-        shift[index] = step
-        columns.append((render(parameters + shift, light) - base) / step)
-    return np.stack(columns, axis=2)
+def sensitivities(parameters: Parameters, light: Linear, steps: Parameters) -> tuple[Colours, NDArray[np.float64]]:
+    """Return `render` (n, 3) and its (n, 3, 15) derivative to the parameters, by forward `steps` (15,)."""
+    rendered = render(np.vstack([parameters, parameters + np.diag(steps)]), light)
+    slopes = (rendered[1:] - rendered[0]) / steps[:, None, None]
+    return rendered[0], np.moveaxis(slopes, 0, 2)

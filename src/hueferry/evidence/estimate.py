@@ -66,12 +66,11 @@ def fit_camera(
     parameters = np.array(prior.mean if start is None else start)
     steps = 0.02 * prior.deviations
     for blur in _SCALES:
-        rendered = render(parameters, light)
+        rendered, slope = sensitivities(parameters, light, steps)
         residual = reference - rendered
         squared = (residual**2).sum(axis=1)
         scale = max(_spread(squared, trust), blur)
         say = trust * (HEAVY + 3) / (HEAVY + squared / scale**2)
-        slope = sensitivities(parameters, light, steps, rendered)
         weighted = slope * (say / scale**2)[:, None, None]
         precision = np.einsum("nci,ncj->ij", weighted, slope) + prior.precision
         gradient = np.einsum("nci,nc->i", weighted, residual) - prior.precision @ (parameters - prior.mean)

@@ -15,6 +15,7 @@ class Basis(StrEnum):
 
     PAIRS = "pairs"
     PALETTE = "palette"
+    ADOPTED = "adopted"
     NONE = "none"
 
 

@@ -16,8 +16,10 @@ from numpy.typing import NDArray
 from hueferry.arrays import Colours, Mask, Pixels
 from hueferry.colour.spaces import xyz_to_oklab
 from hueferry.errors import InputError
+from hueferry.evidence.blocks import Content, content_of
 from hueferry.evidence.exposure import exposure_value
 from hueferry.evidence.keypoints import Keypoints, find_keypoints
+from hueferry.evidence.scene import Scene, scene_of
 from hueferry.picture import Picture
 
 MAX_PIXELS = 400_000
@@ -53,6 +55,16 @@ class Reduced:
     def keypoints(self) -> Keypoints:
         """Where the picture can be recognised; found once."""
         return find_keypoints(self.gray)
+
+    @cached_property
+    def scene(self) -> Scene:
+        """The picture as patches, without what is clipped; found once."""
+        return scene_of(self.oklab, self.usable & ~self.clipped)
+
+    @cached_property
+    def content(self) -> Content:
+        """What content alone does within the picture; found once."""
+        return content_of(self.scene)
 
     @property
     def colours(self) -> Colours:

@@ -9,6 +9,7 @@ from hueferry.colour.spaces import oklab_to_lab
 from hueferry.evidence.camera import SIZE
 from hueferry.evidence.estimate import Estimate, fit_camera
 from hueferry.evidence.evidence import Basis
+from hueferry.evidence.likeness import hear_palettes
 from hueferry.evidence.pairs import Pairs, find_pairs
 from hueferry.evidence.prior import Prior
 from hueferry.evidence.reduced import Reduced
@@ -24,16 +25,14 @@ WORST_FIT = 0.6
 """Share of the difference that may be left on unseen pairs; more, and it is no change of light that differs."""
 
 
-def hear(source: Reduced, reference: Reduced, prior: Prior, *, seed: int = 0) -> Witness:
+def hear(source: Reduced, reference: Reduced, prior: Prior) -> Witness:
     """Hear what `reference` says about the change from `source` to it."""
     pairs = find_pairs(source, reference)
     if pairs is not None:
         witness = hear_pairs(pairs, prior)
         if witness.basis is Basis.PAIRS or witness.judged is not None:
             return witness
-    from hueferry.evidence.likeness import hear_palettes
-
-    return hear_palettes(source, reference, prior, seed=seed)
+    return hear_palettes(source, reference, prior)
 
 
 def hear_pairs(pairs: Pairs, prior: Prior) -> Witness:

@@ -1,0 +1,88 @@
+"""A picture as a few hundred patches: colour, texture, place.
+
+Texture is measured relative to lightness, so that a change of light leaves it nearly where it was: it says which
+patches may be the same stuff, and colour is left to say what the light did.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from math import sqrt
+
+import attrs
+import numpy as np
+from numpy.typing import NDArray
+
+from hueferry.arrays import Colours, Mask, Weights, read_only
+
+PATCHES = 340
+"""Patches of a picture, about."""
+
+FEWEST = 24
+"""Patches below which a picture says nothing."""
+
+
+@attrs.frozen(eq=False)
+class Scene:
+    """Patches of one picture.
+
+    Attributes:
+        colours: (n, 3) mean Oklab.
+        textures: (n, 2) logarithms of the coarse and fine deviation of lightness over the mean lightness.
+        places: (n, 2) row and column, 0 … 1.
+    """
+
+    colours: Colours = attrs.field(converter=read_only)
+    textures: NDArray[np.float64] = attrs.field(converter=read_only)
+    places: NDArray[np.float64] = attrs.field(converter=read_only)
+
+    def __len__(self) -> int:
+        return len(self.colours)
+
+    @property
+    def weights(self) -> Weights:
+        """(n,) equal shares."""
+        return np.full(len(self), 1 / max(len(self), 1))
+
+    def part(self, chosen: Mask) -> Scene:
+        """Return the patches where (n,) `chosen` is true."""
+        return Scene(self.colours[chosen], self.textures[chosen], self.places[chosen])
+
+    def halvings(self) -> Iterator[tuple[Scene, Scene]]:
+        """Yield the four ways to cut the picture in two: upright, level, and along both diagonals."""
+        row, column = self.places.T - 0.5
+        for side in (column, row, row + column, row - column):
+            yield self.part(side < 0), self.part(side >= 0)
+
+
+def scene_of(oklab: NDArray[np.float32], counted: Mask, *, patches: int = PATCHES) -> Scene:
+    """Cut (height, width, 3) `oklab` into about `patches` square patches; those that count by less than half are left out.
+
+    Args:
+        oklab: the reduced picture.
+        counted: (height, width), true where a pixel counts.
+        patches: how many are wanted.
+    """
+    import cv2
+
+    height, width = counted.shape
+    side = max(1.0, sqrt(height * width / patches))
+    size = max(1, round(width / side)), max(1, round(height / side))
+    weight = counted.astype(np.float32)
+    share = cv2.resize(weight, size, interpolation=cv2.INTER_AREA)
+
+    def average(plane: NDArray[np.float32]) -> NDArray[np.float64]:
+        total = cv2.resize(plane * weight, size, interpolation=cv2.INTER_AREA)
+        return np.asarray(total / np.maximum(share, 1e-6), dtype=np.float64)
+
+    lightness = oklab[:, :, 0]
+    fine = lightness - cv2.blur(lightness, (5, 5))
+    mean = np.stack([average(oklab[:, :, axis]) for axis in range(3)], axis=2)
+    coarse = np.sqrt(np.maximum(average(lightness * lightness) - mean[:, :, 0] ** 2, 0))
+    level = np.maximum(mean[:, :, 0], 0) + 0.1
+    textures = [np.log((coarse + 0.004) / level), np.log((np.sqrt(average(fine * fine)) + 0.002) / level)]
+    rows, columns = np.meshgrid(
+        (np.arange(size[1]) + 0.5) / size[1], (np.arange(size[0]) + 0.5) / size[0], indexing="ij"
+    )
+    whole = share > 0.5
+    return Scene(mean[whole], np.stack(textures, axis=2)[whole], np.stack([rows, columns], axis=2)[whole])
