@@ -57,7 +57,7 @@ def test_the_engine_reads_a_table_as_its_definition_does(dtype: type, bits: int,
 
 
 @pytest.mark.parametrize(("dtype", "bits"), KINDS[:5])
-@pytest.mark.parametrize("size", [2, 33, 65])
+@pytest.mark.parametrize("size", [2, 33, 65, 129])
 def test_no_change_is_bit_exact_on_every_integer_code(dtype: type, bits: int, size: int) -> None:
     ramp = np.arange(2**bits).astype(dtype)
     pixels = np.stack([ramp, ramp[::-1], np.roll(ramp, 77), ramp], axis=-1)[None]

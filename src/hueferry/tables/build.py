@@ -25,6 +25,9 @@ SIZES = (33, 65)
 _KNOTS = 4096
 """Steps of an input curve. Nodes lie on knots, so that the identity stays exact and every cell has one slope."""
 
+_LINEAR_FROM = 0.25
+"""Lightness (0 … 1) of code 1/32 above which codes count as linear in light: 0.13 for sRGB, 0.31 for linear light."""
+
 _BLOCK = 1 << 15
 
 
@@ -87,32 +90,36 @@ def _into_gamut(colours: Colours, encoding: Encoding, *, source: Colours) -> Col
     return np.asarray(compress(colours, encoding, source=source))
 
 
-def input_curves(encoding: Encoding, size: int) -> NDArray[np.float32] | None:
-    """Return curves that put nodes at even steps of lightness where codes are linear in light; None where they are not.
+def input_curves(encoding: Encoding, size: int) -> NDArray[np.float32]:
+    """Return input curves that spend more nodes where maps of Oklab colours bend most, near black.
 
-    With even nodes in linear light the first cell alone would hold all shadows. Display encodings need no curve: in
-    them a finer first cell would also sharpen the infinite slope of Oklab's cube root at black, and with it the gain.
+    Where codes are linear in light, nodes stand at even steps of lightness: with even ones the first cell alone would
+    hold all shadows. Display codes are nearly even in lightness already, and Oklab's cube root still bends sharply
+    at black: their cells grow from half to one and a half of the even width. Over 16 changes of camera and light on
+    four photographs that halved the 99.9th percentile of the table error at 33 nodes, for nothing.
     """
     ramp = np.linspace(0.0, 1.0, _KNOTS + 1)
     luminance = np.maximum.accumulate(encoding.to_xyz(np.repeat(ramp[:, None], 3, axis=1))[:, 1])
     lightness = np.cbrt(np.clip(luminance, 0.0, None))
-    first_cell = lightness[_KNOTS // 32] / lightness[-1]
-    if first_cell < 0.25:  # 0.13 for sRGB, 0.31 for linear light
-        return None
-    return np.stack([_curve_through(_even_knots(lightness, size))] * 3)
+    lightness /= lightness[-1]
+    even = np.linspace(0.0, 1.0, size)
+    if lightness[_KNOTS // 32] > _LINEAR_FROM:
+        places = np.searchsorted(lightness, even)
+    else:
+        places = np.rint(_KNOTS * even * (1 + even) / 2).astype(np.int64)
+    return np.stack([_curve_through(_apart(places))] * 3)
 
 
-def _even_knots(lightness: NDArray[np.float64], size: int) -> NDArray[np.int64]:
-    """Choose strictly increasing knots at which `lightness` takes even steps."""
-    knots = np.searchsorted(lightness / lightness[-1], np.linspace(0.0, 1.0, size))
-    knots[0], knots[-1] = 0, len(lightness) - 1
-    for i in range(1, size):
+def _apart(knots: NDArray[np.int64]) -> NDArray[np.int64]:
+    """Return knots from first to last that increase everywhere, moved no further than that takes."""
+    knots[0], knots[-1] = 0, _KNOTS
+    for i in range(1, len(knots)):
         knots[i] = max(knots[i], knots[i - 1] + 1)
-    for i in range(size - 2, -1, -1):
+    for i in range(len(knots) - 2, -1, -1):
         knots[i] = min(knots[i], knots[i + 1] - 1)
-    return np.asarray(knots, dtype=np.int64)
+    return knots
 
 
 def _curve_through(knots: NDArray[np.int64]) -> NDArray[np.float32]:
     even = np.linspace(0.0, 1.0, len(knots))
-    return np.interp(np.arange(knots[-1] + 1), knots, even).astype(np.float32)
+    return np.interp(np.arange(_KNOTS + 1), knots, even).astype(np.float32)
