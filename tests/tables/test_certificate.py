@@ -32,8 +32,8 @@ def occupied(codes: np.ndarray) -> Occupied:
 def test_an_affine_table_has_the_determinant_and_singular_values_of_its_matrix(seed: int) -> None:
     matrix = np.eye(3) + np.random.default_rng(seed).uniform(-0.5, 0.5, (3, 3))
     # Powers of two keep the lattice exact in float32, so the closed form is met to rounding.
-    matrix = np.round(matrix * 1024) / 1024
-    table = Table(nodes(5) @ matrix.T)
+    matrix = np.round(matrix * 1024) / 4096
+    table = Table((nodes(5) - 0.5) @ matrix.T + 0.5)
 
     largest, smallest = gains(table, EVERYWHERE)
 
@@ -88,14 +88,25 @@ def test_naming_the_channels_in_another_order_changes_no_figure(axes: list[int])
 
 
 def test_gain_behind_an_input_curve_is_that_of_the_composition() -> None:
-    """Linear light with its own input curve: doubling codes has gain 2 in every cell, whatever the nodes' places."""
-    table = sample_table(lambda codes: 2 * codes, size=9, curves=input_curves(Light(), 9))
+    """Linear light with its own input curve: halving codes has gain ½ in every cell, whatever the nodes' places."""
+    table = sample_table(lambda codes: codes / 2, size=9, curves=input_curves(Light(), 9))
     cells = np.ones((8, 8, 8), dtype=bool)
 
     largest, smallest = gains(table, cells)
 
-    assert largest == pytest.approx(2.0, abs=2e-4)
-    assert smallest == pytest.approx(2.0, abs=2e-4)
+    assert largest == pytest.approx(0.5, abs=1e-5)
+    assert smallest == pytest.approx(0.5, abs=1e-5)
+
+
+def test_a_channel_that_is_clipped_away_does_not_count_as_a_gain() -> None:
+    table = Table(nodes(5) * [1.0, 1.0, 6.0] - [0.0, 0.0, 3.0])
+
+    largest, smallest = gains(table, EVERYWHERE)
+
+    largest = largest.reshape(6, 4, 4, 4)
+    assert largest[..., 0] == pytest.approx(1.0)  # blue stays below 0 up to code 1/4 …
+    assert largest[..., 2] == pytest.approx(6.0)  # … and is inside from 1/2 to 2/3
+    assert smallest == pytest.approx(1.0)
 
 
 def test_a_curve_that_bends_within_a_cell_gives_bounds_that_hold() -> None:

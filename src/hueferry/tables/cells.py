@@ -122,15 +122,33 @@ def jacobians(table: Table, cells: Cells) -> Floats:
 
 
 def gains(table: Table, cells: Cells) -> tuple[Floats, Floats]:
-    """Return the largest and the smallest singular value of the Jacobian, (6, m) each, in the m `cells` (C order)."""
+    """Return the largest and the smallest singular value of the Jacobian, (6, m) each, in the m `cells` (C order).
+
+    A channel that lies beyond 0 … 1 in a whole tetrahedron is clipped after interpolation, so it counts as constant
+    for the largest; it counts as it is for the smallest.
+    """
     lattice = jacobians(table, cells)
-    if table.curves is None:
-        return _singular(lattice)
+    shown = np.where(clipped_channels(table, cells)[..., None], 0.0, lattice)
     least, most = curve_slopes(table)
     index = np.argwhere(cells)
     steep = np.stack([most[axis, index[:, axis]] for axis in range(3)], axis=1)
     gentle = np.stack([least[axis, index[:, axis]] for axis in range(3)], axis=1)
-    return _singular(lattice * steep[:, None, :])[0], _singular(lattice * gentle[:, None, :])[1]
+    return _singular(shown * steep[:, None, :])[0], _singular(lattice * gentle[:, None, :])[1]
+
+
+def clipped_channels(table: Table, cells: Cells) -> NDArray[np.bool_]:
+    """Return (6, m, 3), true where a channel lies below 0 or above 1 at all four corners of a tetrahedron."""
+    base = np.argwhere(cells)
+    low, high = table.lattice < 0, table.lattice > 1
+    found = np.empty((6, len(base), 3), dtype=bool)
+    for row, order in enumerate(ORDERS):
+        node = base.copy()
+        below, above = low[tuple(node.T)], high[tuple(node.T)]
+        for axis in order:
+            node[:, axis] += 1
+            below, above = below & low[tuple(node.T)], above & high[tuple(node.T)]
+        found[row] = below | above
+    return found
 
 
 def curve_slopes(table: Table) -> tuple[Floats, Floats]:
