@@ -8,11 +8,11 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Codes
 from hueferry.errors import InputError
+from hueferry.palettes.cells import Cells
 
 Counts = NDArray[np.int64]
 
-CELL_BITS = 7
-"""Each channel is cut into 2**7 cells: two codes wide at 8 bits, 512 wide at 16."""
+_APART = ("masked", "white", "black", "not_finite", "beyond")
 
 
 def whole(array: object) -> Counts:
@@ -30,10 +30,10 @@ class Histogram:
     many have each code. Being integers they add up to the same numbers in any order, window size and thread.
 
     Attributes:
-        cells: (m,) numbers of the occupied cells, ascending: (red << 14) | (green << 7) | blue.
+        layout: how a channel is cut into cells.
+        cells: (m,) numbers of the occupied cells, ascending: (red · side + green) · side + blue.
         counts: (m,) pixels in each, >= 1.
-        marginals: (3, levels) pixels with each code, by channel; levels is 2**bits, and 65,536 for float pictures.
-        bits: significant bits a channel; 16 for float pictures, whose 0 … 1 is counted in 65,535 steps.
+        marginals: (3, levels) pixels with each code, by channel; float pictures count 0 … 1 in 65,535 steps.
         masked: pixels left out by a mask or by an alpha of zero.
         white: pixels at the top code in every channel, counted here alone.
         black: pixels at code zero in every channel, counted here alone.
@@ -41,10 +41,10 @@ class Histogram:
         beyond: pixels with a channel outside the code range; counted at the range's edge.
     """
 
+    layout: Cells
     cells: Counts = attrs.field(converter=whole)
     counts: Counts = attrs.field(converter=whole)
     marginals: Counts = attrs.field(converter=whole)
-    bits: int
     masked: int = 0
     white: int = 0
     black: int = 0
@@ -61,34 +61,28 @@ class Histogram:
 
         In each channel a cell stands at the mean of the picture's own codes within its bounds, taken from the
         marginals. The weighted mean over all cells is therefore the mean of all pixels exactly, and what is lost
-        is at most the scatter inside one cell: below one code in 255.
+        is the scatter inside one cell, which is two codes wide at 8 bits.
         """
-        centres = self._channel_means()
-        axes = np.unravel_index(self.cells, (1 << CELL_BITS,) * 3)
-        return np.stack([centres[channel][axes[channel]] for channel in range(3)], axis=1)
-
-    def _channel_means(self) -> NDArray[np.float64]:
-        levels = self.marginals.shape[1]
-        by_cell = self.marginals.reshape(3, 1 << CELL_BITS, -1)
-        code = np.arange(levels, dtype=np.int64).reshape(1 << CELL_BITS, -1)
-        held = by_cell.sum(axis=2)
-        return np.asarray((by_cell * code).sum(axis=2) / np.maximum(held, 1) / (levels - 1))
+        starts = self.layout.starts
+        held = np.add.reduceat(self.marginals, starts, axis=1)
+        total = np.add.reduceat(self.marginals * np.arange(self.layout.levels), starts, axis=1)
+        means = total / np.maximum(held, 1) / (self.layout.levels - 1)
+        axes = self.layout.axes(self.cells)
+        return np.stack([means[channel][axes[channel]] for channel in range(3)], axis=1)
 
     def merge(self, other: Histogram) -> Histogram:
         """Add the pixels of another picture or window; exact, commutative and associative.
 
         Raises:
-            InputError: the two were counted at different depths.
+            InputError: the two were counted in different cells.
         """
-        if self.bits != other.bits:
+        if self.layout != other.layout:
             raise InputError(
-                f"counts at {self.bits} and {other.bits} bits do not add up; reduce each to a palette instead"
+                f"counts at {self.layout.bits} bits ({self.layout.spacing.value}) and {other.layout.bits} bits "
+                f"({other.layout.spacing.value}) do not add up; reduce each to a palette instead"
             )
         cells, place = np.unique(np.concatenate([self.cells, other.cells]), return_inverse=True)
         counts = np.zeros(len(cells), np.int64)
         np.add.at(counts, place, np.concatenate([self.counts, other.counts]))
-        apart = {
-            name: getattr(self, name) + getattr(other, name)
-            for name in ("masked", "white", "black", "not_finite", "beyond")
-        }
-        return Histogram(cells, counts, self.marginals + other.marginals, self.bits, **apart)
+        apart = {name: getattr(self, name) + getattr(other, name) for name in _APART}
+        return Histogram(self.layout, cells, counts, self.marginals + other.marginals, **apart)
