@@ -8,7 +8,7 @@ from pathlib import Path
 
 import attrs
 
-from truth.cases import MAKERS, make_cases
+from truth.cases import CAMERAS, MAKERS, make_cases
 from truth.methods import METHODS
 from truth.pictures import HELD, TUNED
 from truth.run import as_text, run
@@ -25,6 +25,7 @@ def _arguments() -> argparse.Namespace:
     parser.add_argument("--groups", default=",".join(MAKERS))
     parser.add_argument("--methods", default=",".join(METHODS))
     parser.add_argument("--long-side", type=int, default=512, help="pixels; 0 for full size")
+    parser.add_argument("--camera", choices=sorted(CAMERAS), default="own", help="whose rendering the grades are of")
     parser.add_argument("--pixels", type=int, default=20_000, help="pixels compared a case; 0 for all")
     parser.add_argument("--json", type=Path, help="write every score here")
     parser.add_argument("--show", action="store_true", help="print every case")
@@ -44,7 +45,9 @@ def main() -> None:
     groups, methods = options.groups.split(","), options.methods.split(",")
     seeds = range(options.first_seed, options.first_seed + options.seeds)
     scores: list[Score] = []
-    cases = make_cases(_names(options.pictures), groups=groups, seeds=seeds, long_side=options.long_side)
+    cases = make_cases(
+        _names(options.pictures), groups=groups, seeds=seeds, long_side=options.long_side, camera=options.camera
+    )
     for score in run(cases, methods, most=options.pixels):
         scores.append(score)
         if options.show and score.method != "none":

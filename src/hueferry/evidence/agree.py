@@ -18,6 +18,7 @@ from hueferry.evidence.estimate import expected_error
 from hueferry.evidence.evidence import Basis, Evidence
 from hueferry.evidence.prior import Prior, no_change
 from hueferry.evidence.reduced import Reduced, reduce_picture
+from hueferry.evidence.refine import refine
 from hueferry.evidence.testimony import hear
 from hueferry.evidence.witness import Verdict, Witness, combine
 from hueferry.maps.protocol import Map
@@ -73,7 +74,7 @@ def agree(
         return _nothing(witnesses[0].reason, len(theirs))
     prior = priors[0] if len(theirs) == 1 else no_change()
     verdict = combine(witnesses, prior, sample)
-    map_ = _controlled(verdict, ours, keep_neutrals=keep_neutrals, only=only, hold=hold)
+    map_ = _controlled(_refined(verdict, witnesses, sample), ours, keep_neutrals=keep_neutrals, only=only, hold=hold)
     return map_, _evidence(map_, verdict, witnesses, sample, _stops(ours, theirs))
 
 
@@ -82,8 +83,13 @@ def identity() -> Map:
     return CameraMap(np.zeros(SIZE))
 
 
-def _controlled(verdict: Verdict, ours: Reduced, *, keep_neutrals: bool, only: str | None, hold: Mask | None) -> Map:
-    map_: Map = CameraMap(verdict.parameters)
+def _refined(verdict: Verdict, witnesses: Sequence[Witness], sample: Colours) -> Map:
+    map_ = CameraMap(verdict.parameters)
+    found = [(w.correction, share) for w, share in zip(witnesses, verdict.influence, strict=True) if w.correction]
+    return refine(map_, [one for one, _ in found], [share for _, share in found], sample) if found else map_
+
+
+def _controlled(map_: Map, ours: Reduced, *, keep_neutrals: bool, only: str | None, hold: Mask | None) -> Map:
     map_ = keep_neutrals_of(map_) if keep_neutrals else map_
     if only is not None:
         map_ = _ONLY[only](map_)

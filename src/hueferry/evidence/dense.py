@@ -29,6 +29,7 @@ class DenseColours:
     reference: Colours
     weights: NDArray[np.float64]
     blocks: NDArray[np.int64]
+    blown: NDArray[np.bool_]
     coverage: float
     homography: NDArray[np.float64]
 
@@ -46,7 +47,8 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
     ours, theirs = _same_sharpness(source.oklab, reference.oklab, homography)
     flags = cv2.INTER_LINEAR | cv2.WARP_INVERSE_MAP
     warped = cv2.warpPerspective(theirs, homography, size, flags=flags, borderMode=cv2.BORDER_REPLICATE)
-    good = (reference.usable & ~reference.clipped).astype(np.float32)
+    good = (reference.usable & (~reference.clipped | reference.blown)).astype(np.float32)
+    blown = cv2.warpPerspective(reference.blown.astype(np.float32), homography, size, flags=flags) > 0.5
     seen = cv2.warpPerspective(np.ones_like(good), homography, size, flags=flags) > 0.99
     valid = cv2.warpPerspective(good, homography, size, flags=flags) > 0.99
     valid &= source.usable
@@ -59,12 +61,15 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
     picked = _spread_over_colours(ours, valid, roughness)
     rows, columns = np.divmod(picked, size[0])
     blocks = (rows * _BLOCKS // size[1]) * _BLOCKS + columns * _BLOCKS // size[0]
-    weights = 1 / (0.01**2 + roughness.ravel()[picked] ** 2) * np.where(source.clipped.ravel()[picked], 0.3, 1.0)
+    weights = (
+        1 / (0.01**2 + roughness.ravel()[picked] ** 2) * np.where((source.clipped | blown).ravel()[picked], 0.3, 1.0)
+    )
     return DenseColours(
         source=ours.reshape(-1, 3)[picked].astype(np.float64),
         reference=warped.reshape(-1, 3)[picked].astype(np.float64),
         weights=weights / weights.mean(),
         blocks=blocks,
+        blown=blown.ravel()[picked],
         coverage=float(seen.mean()),
         homography=homography,
     )

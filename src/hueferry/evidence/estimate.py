@@ -17,7 +17,7 @@ from hueferry.evidence.prior import Prior
 HEAVY = 4.0
 """Degrees of freedom of the Student likelihood: gross errors lose their say."""
 
-_LEAST_SCALE = 0.002
+_LEAST_SCALE = 0.006
 """Oklab; what 8-bit rounding and sharpness leave at best."""
 
 _SCALES = (0.06, 0.04, 0.025, 0.015, 0.01, 0.006, 0.004, *(_LEAST_SCALE,) * 8)
@@ -46,6 +46,7 @@ def fit_camera(
     weights: NDArray[np.float64],
     prior: Prior,
     effective: float,
+    blown: NDArray[np.bool_] | None = None,
     start: Parameters | None = None,
 ) -> Estimate:
     """Find the most plausible camera map by iterated reweighting and Gauss-Newton steps (Fisher scoring).
@@ -56,6 +57,7 @@ def fit_camera(
         weights: (n,) trust, any scale.
         prior: what is known before looking.
         effective: how many independent pairs these n are worth; > 0.
+        blown: (n,) where the reference is clipped white; None for nowhere.
         start: (15,) first guess; None for the prior's mean.
 
     References:
@@ -67,7 +69,7 @@ def fit_camera(
     steps = 0.02 * prior.deviations
     for blur in _SCALES:
         rendered, slope = sensitivities(parameters, light, steps)
-        residual = reference - rendered
+        residual = lacking(reference - rendered, blown)
         squared = (residual**2).sum(axis=1)
         scale = max(_spread(squared, trust), blur)
         say = trust * (HEAVY + 3) / (HEAVY + squared / scale**2)
@@ -80,6 +82,15 @@ def fit_camera(
         if blur == _LEAST_SCALE and float(step @ precision @ step) < 1e-2:
             break
     return Estimate(CameraMap(parameters), np.linalg.inv(precision), scale)
+
+
+def lacking(residual: Colours, blown: NDArray[np.bool_] | None) -> Colours:
+    """Keep of (n, 3) `residual`, where the reference is clipped white, only the lightness that is still missing."""
+    if blown is None or not blown.any():
+        return residual
+    missing = np.zeros_like(residual)
+    missing[:, 0] = np.maximum(residual[:, 0], 0)
+    return np.where(blown[:, None], missing, residual)
 
 
 def _spread(squared: NDArray[np.float64], trust: NDArray[np.float64]) -> float:

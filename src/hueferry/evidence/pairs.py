@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, read_only
+from hueferry.evidence.estimate import lacking
 from hueferry.evidence.keypoints import Keypoints, match
 from hueferry.evidence.reduced import Reduced
 
@@ -38,6 +39,7 @@ class Pairs:
         reference: (n, 3) Oklab.
         weights: (n,) how far each is to be trusted, mean 1.
         blocks: (n,) which of the source's 4 × 4 blocks it lies in, 0 … 15.
+        blown: (n,) where the reference is clipped white: at least that bright, and of unknown colour.
         coverage: share of the source picture that the reference shows, 0 … 1.
         inliers: keypoints that the homography explains.
         matches: keypoints that were matched.
@@ -49,11 +51,27 @@ class Pairs:
     reference: Colours = attrs.field(converter=read_only)
     weights: NDArray[np.float64] = attrs.field(converter=read_only)
     blocks: NDArray[np.int64]
+    blown: NDArray[np.bool_]
     coverage: float
     inliers: int
     matches: int
     homography: Homography = attrs.field(converter=read_only)
     chance: float
+
+    def residual(self, carried: Colours) -> Colours:
+        """Return (n, 3) what `carried` source colours lack of the reference; see `lacking`."""
+        return lacking(self.reference - carried, self.blown)
+
+    def part(self, chosen: NDArray[np.bool_]) -> Pairs:
+        """Return the pairs where (n,) `chosen` is true."""
+        return attrs.evolve(
+            self,
+            source=self.source[chosen],
+            reference=self.reference[chosen],
+            weights=self.weights[chosen],
+            blocks=self.blocks[chosen],
+            blown=self.blown[chosen],
+        )
 
     def __len__(self) -> int:
         return len(self.source)
@@ -73,6 +91,7 @@ def find_pairs(source: Reduced, reference: Reduced) -> Pairs | None:
         return None
     return Pairs(
         source=dense.source, reference=dense.reference, weights=dense.weights, blocks=dense.blocks,
+        blown=dense.blown,
         coverage=dense.coverage, inliers=int(inside.sum()), matches=len(here), homography=dense.homography,
         chance=chance,
     )  # fmt: skip

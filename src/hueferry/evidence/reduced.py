@@ -39,6 +39,7 @@ class Reduced:
             searched on, so that a change of light leaves them where they are.
         usable: (height, width), true where a pixel counts: inside the mask, opaque, finite.
         clipped: (height, width), true where a channel stands at either end of its range.
+        blown: (height, width), true where all channels stand at the upper end: at least that bright, colour unknown.
         shape: (rows, columns) of the picture at full size.
         exposure: exposure value in stops at ISO 100 (log2 of f-number² ÷ time, less log2 of ISO ÷ 100), or None
             where the file does not say.
@@ -48,6 +49,7 @@ class Reduced:
     gray: NDArray[np.uint8]
     usable: Mask
     clipped: Mask
+    blown: Mask
     shape: tuple[int, int]
     exposure: float | None = None
 
@@ -106,8 +108,9 @@ def reduce_picture(picture: Picture, *, mask: Mask | None = None, max_pixels: in
     codes = np.where(usable[:, :, None], codes, 0.0)
     oklab = xyz_to_oklab(picture.encoding.to_xyz(codes.reshape(-1, 3))).reshape(*size, 3).astype(np.float32)
     clipped = (codes.max(axis=2) > 1 - CLIPPED) | (codes.min(axis=2) < CLIPPED)
+    blown = codes.min(axis=2) > 1 - CLIPPED
     gray = even_out(oklab[:, :, 0])
-    return Reduced(oklab, gray, usable, clipped, picture.shape, exposure_value(picture.metadata.exif))
+    return Reduced(oklab, gray, usable, clipped, blown, picture.shape, exposure_value(picture.metadata.exif))
 
 
 def even_out(lightness: NDArray[np.float32], *, reach: int = 24) -> NDArray[np.uint8]:

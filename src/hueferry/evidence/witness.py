@@ -10,10 +10,11 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, read_only
 from hueferry.colour.spaces import oklab_to_linear_srgb
-from hueferry.evidence.camera import Parameters, render
+from hueferry.evidence.camera import SIZE, Parameters, render
 from hueferry.evidence.evidence import Basis
 from hueferry.evidence.pairs import Pairs
 from hueferry.evidence.prior import Prior
+from hueferry.evidence.refine import Correction
 
 Precision = NDArray[np.float64]
 
@@ -35,14 +36,16 @@ class Witness:
         reason: why it says nothing or little, as a clause.
         pairs: the pairs, where there are any.
         judged: mean ΔE00 before and after on pairs that the judged fit had not seen.
+        correction: what the pairs say beyond the camera-like family, where they judge it better.
     """
 
     basis: Basis
-    parameters: Parameters = attrs.field(converter=read_only)
-    precision: Precision = attrs.field(converter=read_only)
+    parameters: Parameters = attrs.field(factory=lambda: np.zeros(SIZE), converter=read_only)
+    precision: Precision = attrs.field(factory=lambda: np.zeros((SIZE, SIZE)), converter=read_only)
     reason: str = ""
     pairs: Pairs | None = None
     judged: tuple[float, float] | None = None
+    correction: Correction | None = None
 
 
 @attrs.frozen(eq=False)
