@@ -29,7 +29,8 @@ class DenseColours:
     reference: Colours
     weights: NDArray[np.float64]
     blocks: NDArray[np.int64]
-    blown: NDArray[np.bool_]
+    low: NDArray[np.bool_]
+    high: NDArray[np.bool_]
     coverage: float
     homography: NDArray[np.float64]
 
@@ -47,8 +48,10 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
     ours, theirs = _same_sharpness(source.oklab, reference.oklab, homography)
     flags = cv2.INTER_LINEAR | cv2.WARP_INVERSE_MAP
     warped = cv2.warpPerspective(theirs, homography, size, flags=flags, borderMode=cv2.BORDER_REPLICATE)
-    good = (reference.usable & (~reference.clipped | reference.blown)).astype(np.float32)
-    blown = cv2.warpPerspective(reference.blown.astype(np.float32), homography, size, flags=flags) > 0.5
+    good = reference.usable.astype(np.float32)
+    low, high = (
+        cv2.warpPerspective(_nearby(ends), homography, size, flags=flags) for ends in (reference.low, reference.high)
+    )
     seen = cv2.warpPerspective(np.ones_like(good), homography, size, flags=flags) > 0.99
     valid = cv2.warpPerspective(good, homography, size, flags=flags) > 0.99
     valid &= source.usable
@@ -61,15 +64,14 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
     picked = _spread_over_colours(ours, valid, roughness)
     rows, columns = np.divmod(picked, size[0])
     blocks = (rows * _BLOCKS // size[1]) * _BLOCKS + columns * _BLOCKS // size[0]
-    weights = (
-        1 / (0.01**2 + roughness.ravel()[picked] ** 2) * np.where((source.clipped | blown).ravel()[picked], 0.3, 1.0)
-    )
+    weights = 1 / (0.01**2 + roughness.ravel()[picked] ** 2) * np.where(source.clipped.ravel()[picked], 0.3, 1.0)
     return DenseColours(
         source=ours.reshape(-1, 3)[picked].astype(np.float64),
         reference=warped.reshape(-1, 3)[picked].astype(np.float64),
         weights=weights / weights.mean(),
         blocks=blocks,
-        blown=blown.ravel()[picked],
+        low=low.reshape(-1, 3)[picked] > 0.5,
+        high=high.reshape(-1, 3)[picked] > 0.5,
         coverage=float(seen.mean()),
         homography=homography,
     )
@@ -105,6 +107,13 @@ def _same_sharpness(
     elif scale < 1 / 1.15:
         ours = cv2.GaussianBlur(ours, (0, 0), 0.5 / scale)
     return ours, theirs
+
+
+def _nearby(ends: NDArray[np.bool_]) -> NDArray[np.float32]:
+    """Spread (height, width, 3) flags over the 5 × 5 pixels that a local colour is the mean of."""
+    import cv2
+
+    return np.asarray(cv2.dilate(ends.astype(np.float32), np.ones((5, 5), np.uint8)))
 
 
 def _local(oklab: NDArray[np.float32]) -> tuple[NDArray[np.float32], NDArray[np.float32]]:

@@ -10,9 +10,11 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, read_only
 from hueferry.colour.difference import delta_e_2000
-from hueferry.colour.spaces import oklab_to_lab, oklab_to_linear_srgb
+from hueferry.colour.spaces import linear_srgb_to_oklab, oklab_to_lab, oklab_to_linear_srgb
 from hueferry.evidence.camera import SIZE, CameraMap, Parameters, render, sensitivities
 from hueferry.evidence.prior import Prior
+
+Ends = NDArray[np.bool_]
 
 HEAVY = 4.0
 """Degrees of freedom of the Student likelihood: gross errors lose their say."""
@@ -46,7 +48,7 @@ def fit_camera(
     weights: NDArray[np.float64],
     prior: Prior,
     effective: float,
-    blown: NDArray[np.bool_] | None = None,
+    ends: tuple[Ends, Ends] | None = None,
     start: Parameters | None = None,
 ) -> Estimate:
     """Find the most plausible camera map by iterated reweighting and Gauss-Newton steps (Fisher scoring).
@@ -57,7 +59,7 @@ def fit_camera(
         weights: (n,) trust, any scale.
         prior: what is known before looking.
         effective: how many independent pairs these n are worth; > 0.
-        blown: (n,) where the reference is clipped white; None for nowhere.
+        ends: (n, 3) where a channel of the reference is clipped at its lower, and at its upper end; None for nowhere.
         start: (15,) first guess; None for the prior's mean.
 
     References:
@@ -69,7 +71,7 @@ def fit_camera(
     steps = 0.02 * prior.deviations
     for blur in _SCALES:
         rendered, slope = sensitivities(parameters, light, steps)
-        residual = lacking(reference - rendered, blown)
+        residual = reference - rendered if ends is None else lacking(rendered, reference, low=ends[0], high=ends[1])
         squared = (residual**2).sum(axis=1)
         scale = max(_spread(squared, trust), blur)
         say = trust * (HEAVY + 3) / (HEAVY + squared / scale**2)
@@ -84,13 +86,18 @@ def fit_camera(
     return Estimate(CameraMap(parameters), np.linalg.inv(precision), scale)
 
 
-def lacking(residual: Colours, blown: NDArray[np.bool_] | None) -> Colours:
-    """Keep of (n, 3) `residual`, where the reference is clipped white, only the lightness that is still missing."""
-    if blown is None or not blown.any():
-        return residual
-    missing = np.zeros_like(residual)
-    missing[:, 0] = np.maximum(residual[:, 0], 0)
-    return np.where(blown[:, None], missing, residual)
+def lacking(carried: Colours, reference: Colours, *, low: Ends, high: Ends) -> Colours:
+    """Return (n, 3) what `carried` colours lack of `reference`, whose clipped channels are bounds and not values.
+
+    A channel clipped at its upper end is met by anything above, one clipped at its lower end by anything below.
+    """
+    residual = reference - carried
+    rows = (low | high).any(axis=1)
+    if rows.any():
+        light, ours = oklab_to_linear_srgb(reference[rows]), oklab_to_linear_srgb(carried[rows])
+        light = np.where(high[rows], np.maximum(light, ours), np.where(low[rows], np.minimum(light, ours), light))
+        residual[rows] = linear_srgb_to_oklab(light) - carried[rows]
+    return residual
 
 
 def _spread(squared: NDArray[np.float64], trust: NDArray[np.float64]) -> float:

@@ -39,7 +39,8 @@ class Pairs:
         reference: (n, 3) Oklab.
         weights: (n,) how far each is to be trusted, mean 1.
         blocks: (n,) which of the source's 4 × 4 blocks it lies in, 0 … 15.
-        blown: (n,) where the reference is clipped white: at least that bright, and of unknown colour.
+        low: (n, 3) where a channel of the reference is clipped at its lower end.
+        high: (n, 3) the same at its upper end.
         coverage: share of the source picture that the reference shows, 0 … 1.
         inliers: keypoints that the homography explains.
         matches: keypoints that were matched.
@@ -51,7 +52,8 @@ class Pairs:
     reference: Colours = attrs.field(converter=read_only)
     weights: NDArray[np.float64] = attrs.field(converter=read_only)
     blocks: NDArray[np.int64]
-    blown: NDArray[np.bool_]
+    low: NDArray[np.bool_]
+    high: NDArray[np.bool_]
     coverage: float
     inliers: int
     matches: int
@@ -60,7 +62,7 @@ class Pairs:
 
     def residual(self, carried: Colours) -> Colours:
         """Return (n, 3) what `carried` source colours lack of the reference; see `lacking`."""
-        return lacking(self.reference - carried, self.blown)
+        return lacking(carried, self.reference, low=self.low, high=self.high)
 
     def part(self, chosen: NDArray[np.bool_]) -> Pairs:
         """Return the pairs where (n,) `chosen` is true."""
@@ -70,7 +72,8 @@ class Pairs:
             reference=self.reference[chosen],
             weights=self.weights[chosen],
             blocks=self.blocks[chosen],
-            blown=self.blown[chosen],
+            low=self.low[chosen],
+            high=self.high[chosen],
         )
 
     def __len__(self) -> int:
@@ -91,7 +94,8 @@ def find_pairs(source: Reduced, reference: Reduced) -> Pairs | None:
         return None
     return Pairs(
         source=dense.source, reference=dense.reference, weights=dense.weights, blocks=dense.blocks,
-        blown=dense.blown,
+        low=dense.low,
+        high=dense.high,
         coverage=dense.coverage, inliers=int(inside.sum()), matches=len(here), homography=dense.homography,
         chance=chance,
     )  # fmt: skip

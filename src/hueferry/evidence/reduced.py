@@ -38,8 +38,8 @@ class Reduced:
         gray: (height, width) uint8, lightness with its local mean and contrast evened out: what keypoints are
             searched on, so that a change of light leaves them where they are.
         usable: (height, width), true where a pixel counts: inside the mask, opaque, finite.
-        clipped: (height, width), true where a channel stands at either end of its range.
-        blown: (height, width), true where all channels stand at the upper end: at least that bright, colour unknown.
+        low: (height, width, 3), true where a channel stands at the lower end of its range: it may have been less.
+        high: (height, width, 3), true where a channel stands at the upper end: it may have been more.
         shape: (rows, columns) of the picture at full size.
         exposure: exposure value in stops at ISO 100 (log2 of f-number² ÷ time, less log2 of ISO ÷ 100), or None
             where the file does not say.
@@ -48,10 +48,15 @@ class Reduced:
     oklab: NDArray[np.float32]
     gray: NDArray[np.uint8]
     usable: Mask
-    clipped: Mask
-    blown: Mask
+    low: NDArray[np.bool_]
+    high: NDArray[np.bool_]
     shape: tuple[int, int]
     exposure: float | None = None
+
+    @property
+    def clipped(self) -> Mask:
+        """(height, width), true where any channel stands at either end of its range."""
+        return np.asarray((self.low | self.high).any(axis=2))
 
     @cached_property
     def keypoints(self) -> Keypoints:
@@ -107,10 +112,15 @@ def reduce_picture(picture: Picture, *, mask: Mask | None = None, max_pixels: in
     usable = np.isfinite(codes).all(axis=2) & _counted(picture, mask, size)
     codes = np.where(usable[:, :, None], codes, 0.0)
     oklab = xyz_to_oklab(picture.encoding.to_xyz(codes.reshape(-1, 3))).reshape(*size, 3).astype(np.float32)
-    clipped = (codes.max(axis=2) > 1 - CLIPPED) | (codes.min(axis=2) < CLIPPED)
-    blown = codes.min(axis=2) > 1 - CLIPPED
-    gray = even_out(oklab[:, :, 0])
-    return Reduced(oklab, gray, usable, clipped, blown, picture.shape, exposure_value(picture.metadata.exif))
+    return Reduced(
+        oklab=oklab,
+        gray=even_out(oklab[:, :, 0]),
+        usable=usable,
+        low=codes < CLIPPED,
+        high=codes > 1 - CLIPPED,
+        shape=picture.shape,
+        exposure=exposure_value(picture.metadata.exif),
+    )
 
 
 def even_out(lightness: NDArray[np.float32], *, reach: int = 24) -> NDArray[np.uint8]:

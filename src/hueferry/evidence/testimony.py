@@ -65,7 +65,7 @@ def _fit(pairs: Pairs, prior: Prior, *, start: Estimate | None = None) -> Estima
         weights=pairs.weights,
         prior=prior,
         effective=min(PER_BLOCK * len(np.unique(pairs.blocks)), float(len(pairs))),
-        blown=pairs.blown,
+        ends=(pairs.low, pairs.high),
         start=None if start is None else start.map.parameters,
     )
 
@@ -95,7 +95,7 @@ def _judge(pairs: Pairs, prior: Prior, full: Estimate) -> tuple[float, dict[floa
 
 
 def _differences(pairs: Pairs, carried: Colours) -> Errors:
-    """Return (n,) ΔE00 between what was carried over and the reference, where that one is not clipped white."""
+    """Return (n,) ΔE00 between what was carried over and the reference, whose clipped channels are bounds."""
     return delta_e_2000(oklab_to_lab(carried), oklab_to_lab(carried + pairs.residual(carried)))
 
 
