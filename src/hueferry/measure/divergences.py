@@ -75,7 +75,7 @@ def overlap(p: Weights, q: Weights) -> float:
 def bhattacharyya(p: Weights, q: Weights) -> float:
     """Return the Bhattacharyya distance −ln Σ √(p q) in nats (Bhattacharyya 1943); infinite for disjoint histograms."""
     shared = overlap(p, q)
-    return float("inf") if shared <= 0 else max(-float(np.log(min(shared, 1.0))), 0.0)
+    return float("inf") if shared <= 0 else abs(float(np.log(min(shared, 1.0))))
 
 
 def fisher_rao(p: Weights, q: Weights) -> float:

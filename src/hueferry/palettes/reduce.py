@@ -62,6 +62,24 @@ def reduce(histogram: Histogram, encoding: Encoding, *, size: int = 1024) -> Pal
     return Palette(colours, shares, spread, histogram.pixels)
 
 
+def thin(palette: Palette, size: int) -> Palette:
+    """Reduce a palette further, to at most `size` colours; the spreads add as variances do.
+
+    Raises:
+        InputError: `size` is not positive.
+    """
+    if size < 1:
+        raise InputError(f"a palette of {size} colours holds nothing; ask for at least 1")
+    if len(palette) <= size:
+        return palette
+    kept = palette.weights > 0
+    colours, weights = palette.colours[kept], palette.weights[kept]
+    labels = _Split.start(colours, weights, size).finish()
+    means, shares = _average(colours, weights, labels)
+    moved = float(weights @ ((colours - means[labels]) ** 2).sum(axis=1) / weights.sum())
+    return Palette(means, shares, float(np.sqrt(palette.spread**2 + moved)), palette.pixels)
+
+
 def _clipped_palette(histogram: Histogram, encoding: Encoding) -> Palette:
     counts = np.array([histogram.black, histogram.white], dtype=np.int64)
     if not counts.any():
