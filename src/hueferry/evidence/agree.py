@@ -28,7 +28,7 @@ HOLD_LIMIT = 1.0
 """ΔE00 that held colours may move."""
 
 _ONLY = MappingProxyType({"tone": only_tone, "chroma": only_chroma})
-_SAMPLE = 1500
+_SAMPLE = 500
 
 
 def agree(
@@ -70,10 +70,12 @@ def agree(
         return _nothing("nothing of the picture counts: every pixel is masked, transparent or not finite", len(theirs))
     priors = [no_change(source_exposure=ours.exposure, reference_exposure=their.exposure) for their in theirs]
     witnesses = [hear(ours, their, prior) for their, prior in zip(theirs, priors, strict=True)]
-    if all(witness.basis is Basis.NONE for witness in witnesses):
-        return _nothing(witnesses[0].reason, len(theirs))
     prior = priors[0] if len(theirs) == 1 else no_change()
+    if all(witness.basis is Basis.NONE for witness in witnesses):
+        return _nothing(witnesses[0].reason, len(theirs), witnesses=witnesses, error=_left(witnesses, prior, sample))
     verdict = combine(witnesses, prior, sample)
+    if only is None and (ours.is_gray or all(their.is_gray for their in theirs)):
+        only = "tone"
     map_ = _controlled(_refined(verdict, witnesses, sample), ours, keep_neutrals=keep_neutrals, only=only, hold=hold)
     return map_, _evidence(map_, verdict, witnesses, sample, _stops(ours, theirs))
 
@@ -98,9 +100,30 @@ def _controlled(map_: Map, ours: Reduced, *, keep_neutrals: bool, only: str | No
     return map_
 
 
-def _nothing(reason: str, references: int) -> tuple[Map, Evidence]:
-    decision = f"Nothing was changed: {reason}."
-    return identity(), Evidence(basis=Basis.NONE, decision=decision, influence=(0.0,) * references)
+def _nothing(
+    reason: str, references: int, *, witnesses: Sequence[Witness] = (), error: float = 0.0
+) -> tuple[Map, Evidence]:
+    judged = next((witness.judged for witness in witnesses if witness.judged is not None), (None, None))
+    found = [witness.pairs for witness in witnesses if witness.pairs is not None]
+    return identity(), Evidence(
+        basis=Basis.NONE,
+        decision=f"Nothing was changed: {reason}.",
+        pairs=sum(len(pairs) for pairs in found),
+        coverage=max((pairs.coverage for pairs in found), default=0.0),
+        inliers=sum(pairs.inliers for pairs in found),
+        expected_error=error,
+        influence=(0.0,) * references,
+        judged_before=judged[0],
+        judged_after=judged[1],
+    )
+
+
+def _left(witnesses: Sequence[Witness], prior: Prior, sample: Colours) -> float:
+    """Return mean ΔE00 that stays unknown when nothing is changed: what pairs showed, or else the prior's spread."""
+    judged = [witness.judged[0] for witness in witnesses if witness.judged is not None]
+    if judged:
+        return min(judged)
+    return expected_error(identity(), prior.mean, np.linalg.inv(prior.precision), sample)
 
 
 def _sample(colours: Colours, seed: int) -> Colours:

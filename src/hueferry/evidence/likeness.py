@@ -11,8 +11,10 @@ from math import exp
 
 import numpy as np
 
+from hueferry.colour.difference import delta_e_2000
+from hueferry.colour.spaces import oklab_to_lab
 from hueferry.evidence.blocks import content_covariance, whitener
-from hueferry.evidence.camera import SIZE
+from hueferry.evidence.camera import SIZE, CameraMap
 from hueferry.evidence.evidence import Basis
 from hueferry.evidence.prior import Prior
 from hueferry.evidence.reduced import Reduced
@@ -31,6 +33,9 @@ LEAST_TRUST = 0.3
 
 DOUBT = 0.35
 """Share of the squared content error that a change must exceed to be acted on; it is taken off what is found."""
+
+LEAST_MOVE = 0.5
+"""Mean ΔE00 of a change below which it is not worth making on palettes alone."""
 
 STRANGERS = "the pictures share no surface and not even the same stuff, so content explains what separates them"
 
@@ -58,6 +63,10 @@ def hear_palettes(source: Reduced, reference: Reduced, prior: Prior) -> Witness:
     precision = whiten.T @ np.linalg.inv(CAUTION * covariance) @ whiten
     mean = np.linalg.solve(np.eye(SIZE) + CAUTION * covariance, change)
     parameters = prior.mean + trust * beyond * np.linalg.solve(whiten, mean)
+    colours = source.scene.colours
+    moved = delta_e_2000(oklab_to_lab(CameraMap(parameters)(colours)), oklab_to_lab(colours))
+    if float(moved.mean()) < LEAST_MOVE:
+        return silent("the palettes already agree as nearly as palettes can tell")
     return Witness(basis=Basis.PALETTE, parameters=parameters, precision=trust * beyond * precision)
 
 

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, read_only
 from hueferry.evidence.estimate import lacking
-from hueferry.evidence.keypoints import Keypoints, match
+from hueferry.evidence.keypoints import match
 from hueferry.evidence.reduced import Reduced
 
 Points = NDArray[np.float64]

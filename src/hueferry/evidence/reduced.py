@@ -58,6 +58,11 @@ class Reduced:
         """(height, width), true where any channel stands at either end of its range."""
         return np.asarray((self.low | self.high).any(axis=2))
 
+    @property
+    def is_gray(self) -> bool:
+        """Whether nothing in the picture has a colour worth the name (Oklab chroma 0.01, about ΔE00 1)."""
+        return bool(np.abs(self.oklab[self.usable][:, 1:]).max(initial=0.0) < 0.01)
+
     @cached_property
     def keypoints(self) -> Keypoints:
         """Where the picture can be recognised; found once."""
