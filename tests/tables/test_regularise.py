@@ -63,16 +63,16 @@ def test_a_stretch_beyond_the_cap_everywhere_is_drawn_back_to_just_the_cap() -> 
     found, how = make_safe(table, occupied=middle, encoding=Display(), max_gain=2.0)
 
     largest = gains(found, middle.cells(found))[0].max()
-    assert 1.9 < largest <= 2.0
-    assert how.affine_kept < 1.0
-    assert any("affine part" in sentence for sentence in how.sentences())
+    assert 1.85 < largest <= 2.0
+    assert how.rounds > 0
+    assert "limited the slope" in how.sentences()[0]
 
 
-@settings(max_examples=15, deadline=None)
+@settings(max_examples=10, deadline=None)
 @given(seed=st.integers(0, 2**32 - 1), noise=st.floats(0.0, 0.5), max_gain=st.floats(1.05, 4.0))
 def test_any_table_at_all_comes_out_safe(seed: int, noise: float, max_gain: float) -> None:
     rng = np.random.default_rng(seed)
-    table = Table(nodes(9) @ rng.normal(0, 1, (3, 3)) + rng.normal(0, noise, (9, 9, 9, 3)))
+    table = Table(nodes(7) @ rng.normal(0, 1, (3, 3)) + rng.normal(0, noise, (7, 7, 7, 3)))
 
     found, _ = make_safe(table, occupied=scattered(seed), encoding=Display(), max_gain=max_gain)
 
@@ -131,3 +131,21 @@ def test_ramps_of_no_change_rise_by_even_steps() -> None:
     for ramp in read_ramps(build_table(lambda c: c, Display()), Display(), Display()):
         assert ramp.falls == 0
         assert ramp.step < 1.5
+
+
+def test_limiting_keeps_the_slope_where_nothing_offends_and_the_mean_of_the_colours() -> None:
+    def steep_in_the_dark(codes: np.ndarray) -> np.ndarray:
+        return np.where(codes < 0.25, 4 * codes, 1.0 + (codes - 0.25)) * 0.5
+
+    table = sample_table(steep_in_the_dark, size=17)
+    occupied = scattered(3, 0.02, 0.98)
+
+    found, how = make_safe(table, occupied=occupied, encoding=Display(), max_gain=1.5)
+
+    assert how.rounds > 0
+    assert how.kept == 1.0
+    bright = np.s_[9:, 9:, 9:]
+    slope = np.diff(found.lattice[bright][..., 0], axis=0) * 16
+    assert slope == pytest.approx(0.5, abs=0.05)
+    drift = occupied.weights @ (look_up(found, occupied.codes) - look_up(table, occupied.codes))
+    assert drift == pytest.approx([0, 0, 0], abs=1e-6)

@@ -113,6 +113,7 @@ def certify(
     encoding: Encoding,
     max_gain: float = 4.0,
     output: Encoding | None = None,
+    error: TableError | None = None,
     function: CodeFunction | None = None,
 ) -> Certificate:
     """Measure a table.
@@ -123,7 +124,8 @@ def certify(
         encoding: what the table reads.
         max_gain: the gain cap.
         output: what the table writes; None means `encoding`.
-        function: what the table approximates (`code_function`), for the table error.
+        error: the table error, where it is known already.
+        function: what the table approximates (`code_function`), for the table error where it is not.
     """
     written = encoding if output is None else output
     cells = occupied.cells(table)
@@ -141,7 +143,7 @@ def certify(
         newly_clipped=newly_clipped(table, occupied),
         neutral_drift=neutral_drift(table, written),
         ramps=read_ramps(table, encoding, written),
-        error=None if function is None else table_error(table, function, occupied, encoding=written),
+        error=error if function is None else table_error(table, function, occupied, encoding=written),
     )
 
 

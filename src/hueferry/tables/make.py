@@ -6,7 +6,7 @@ import attrs
 
 from hueferry.maps.protocol import Map
 from hueferry.picture import Encoding
-from hueferry.tables.build import SIZES, CodeFunction, code_function, input_curves, sample_table
+from hueferry.tables.build import SIZES, code_function, input_curves, sample_table
 from hueferry.tables.cells import Occupied
 from hueferry.tables.certificate import Certificate, TableError, certify, table_error
 from hueferry.tables.regularise import Regularisation, make_safe
@@ -62,25 +62,14 @@ def make_table(
     """
     function = code_function(map_, encoding, output=output, hold_ends=hold_ends)
     written = encoding if output is None else output
-    table = _fitting(function, encoding, written, occupied, size)
-    safe, how = make_safe(table, occupied=occupied, encoding=encoding, max_gain=max_gain, output=output)
-    certificate = certify(
-        safe, occupied=occupied, encoding=encoding, max_gain=max_gain, output=output, function=function
-    )
+    for nodes in SIZES if size is None else (size,):
+        table = sample_table(function, size=nodes, curves=input_curves(encoding, nodes))
+        safe, how = make_safe(table, occupied=occupied, encoding=encoding, max_gain=max_gain, output=output)
+        error = table_error(safe, function, occupied, encoding=written)
+        if how.needed or _accepted(error):  # more nodes bring no map back that had to be changed
+            break
+    certificate = certify(safe, occupied=occupied, encoding=encoding, max_gain=max_gain, output=output, error=error)
     return MadeTable(safe, certificate, how)
-
-
-def _fitting(
-    function: CodeFunction, encoding: Encoding, written: Encoding, occupied: Occupied, size: int | None
-) -> Table:
-    """Sample at the wanted size, or at the smallest whose error is accepted."""
-    if size is not None:
-        return sample_table(function, size=size, curves=input_curves(encoding, size))
-    small, large = SIZES
-    table = sample_table(function, size=small, curves=input_curves(encoding, small))
-    if _accepted(table_error(table, function, occupied, encoding=written)):
-        return table
-    return sample_table(function, size=large, curves=input_curves(encoding, large))
 
 
 def _accepted(error: TableError) -> bool:

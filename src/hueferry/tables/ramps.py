@@ -35,7 +35,7 @@ class Ramp:
     Attributes:
         name: "gray", "skin" or "sky".
         falls: steps at which lightness falls.
-        step: largest step of lightness over the median step; at most 1e6.
+        step: largest step of lightness over the median step of those that are not clipped away; at most 1e6.
     """
 
     name: str
@@ -77,5 +77,6 @@ def _codes(low: tuple[float, ...], high: tuple[float, ...], encoding: Encoding) 
 def _steps(codes: Codes, table: Table, output: Encoding) -> tuple[NDArray[np.float64], float]:
     lightness = xyz_to_lab(output.to_xyz(np.clip(look_up(table, codes), 0.0, 1.0)))[:, 0]
     steps = np.diff(lightness)
-    # A ramp that comes out flat has nothing but rounding in its steps.
-    return steps, max(float(np.median(steps)), _ROUNDING)
+    # Steps that are clipped away say nothing of the others; where all are, nothing but rounding is left.
+    rising = steps[np.abs(steps) > _ROUNDING]
+    return steps, max(float(np.median(rising)), _ROUNDING) if rising.size else _ROUNDING

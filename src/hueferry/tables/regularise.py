@@ -1,7 +1,8 @@
 """A table made safe: no fold, no gain beyond the cap, no uneven ramp; changed as little and as locally as that allows.
 
-Displacements are smoothed around the offending nodes first, in a growing neighbourhood. What that does not cure is
-drawn towards the affine part of the table, and at last towards no change at all, which is always safe.
+A few offending nodes are smoothed where they are. Where a map stretches too much over whole regions, its gradients
+are limited there. What neither cures is drawn towards the affine part of the table, and at last towards no change at
+all, which is always safe.
 """
 
 from __future__ import annotations
@@ -11,21 +12,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.picture import Encoding
-from hueferry.tables.cells import Cells, Occupied, determinants_within, gains, widened
-from hueferry.tables.lookup import lattice_positions, look_up, node_codes
-from hueferry.tables.ramps import uneven_codes
+from hueferry.tables.cells import Occupied
+from hueferry.tables.gradients import mend
+from hueferry.tables.lookup import look_up
+from hueferry.tables.rules import Rules
+from hueferry.tables.smoothing import no_change, smooth
 from hueferry.tables.table import Table
 
-Nodes = NDArray[np.float64]
-"""(n, n, n, 3) displacements or codes at the nodes."""
-
-Box = tuple[slice, slice, slice]
-
-EVERYWHERE: Box = (slice(None), slice(None), slice(None))
-
-_ROUNDS = 10
-_WIDESPREAD = 0.25
-"""Share of occupied cells beyond which a fault is the map's own and smoothing would only move it about."""
+_LIMITING_ROUNDS = 15
+_SHARES = (1.0, 0.5, 0.25)
+"""Shares of the table beyond its affine part from which gradients are limited, until one succeeds."""
 
 _HALVINGS = 7
 _TARGET = 0.995
@@ -38,12 +34,14 @@ class Regularisation:
 
     Attributes:
         smoothed: nodes whose displacement was smoothed.
+        rounds: rounds in which gradients were limited; 0 if they were not.
         kept: share of the table kept in the blend towards its affine part; 1 means no blend.
-        affine_kept: share of the affine part kept in the blend towards no change; 1 means no blend.
+        affine_kept: share of the affine part kept in its own blend towards no change; 1 means no blend.
         moved: mean shift of the occupied colours, in codes of 0 … 1.
     """
 
     smoothed: int = 0
+    rounds: int = 0
     kept: float = 1.0
     affine_kept: float = 1.0
     moved: float = 0.0
@@ -51,44 +49,20 @@ class Regularisation:
     @property
     def needed(self) -> bool:
         """Whether anything was changed."""
-        return self.smoothed > 0 or self.kept < 1.0
+        return self.smoothed > 0 or self.rounds > 0 or self.kept < 1.0
 
     def sentences(self) -> tuple[str, ...]:
         """Say what was done in plain words; nothing if nothing was."""
         said = []
         if self.smoothed:
             said.append(f"smoothed {self.smoothed} nodes of the table to take out folds or steep places")
+        if self.rounds:
+            said.append("limited the slope of the table where it folded or stretched too much")
         if self.kept < 1.0:
-            said.append(f"kept {100 * self.kept:.0f} % of what the map does beyond its affine part, for the gain cap")
-        if self.affine_kept < 1.0:
-            said.append(f"kept {100 * self.affine_kept:.0f} % of the affine part of the map, for the gain cap")
+            said.append(f"kept {100 * self.kept:.0f} % of what the table does beyond its affine part")
+        if self.kept < 1.0 and self.affine_kept < 1.0:
+            said.append(f"kept {100 * self.affine_kept:.0f} % of its affine part, for the gain cap")
         return tuple(said)
-
-
-@attrs.frozen(eq=False, kw_only=True)
-class _Rules:
-    """What a safe table must obey."""
-
-    occupied: Occupied
-    encoding: Encoding
-    output: Encoding
-    max_gain: float
-
-    def offending(self, table: Table, within: Box = EVERYWHERE) -> Cells:
-        """Return cells `within` a box that fold, stretch too much where occupied, or make a ramp uneven."""
-        found = np.zeros((table.size - 1,) * 3, dtype=bool)
-        nodes = tuple(slice(side.start, None if side.stop is None else side.stop + 1) for side in within)
-        found[within] = (determinants_within(table.lattice[nodes], table.size - 1.0) < 0).any(axis=0)
-        cells = np.zeros_like(found)
-        cells[within] = self.occupied.cells(table)[within]
-        found[cells] |= (gains(table, cells)[0] > self.max_gain).any(axis=0)
-        uneven = uneven_codes(table, self.encoding, self.output)
-        index = np.minimum(lattice_positions(table, uneven).astype(np.int64), table.size - 2)
-        found[tuple(index.T)] = True
-        return np.asarray(found)
-
-    def obeyed(self, table: Table) -> bool:
-        return not self.offending(table).any()
 
 
 def make_safe(
@@ -111,81 +85,60 @@ def make_safe(
         output: what the table writes; None means `encoding`. No change is safe only where the two are the same.
     """
     written = encoding if output is None else output
-    rules = _Rules(occupied=occupied, encoding=encoding, output=written, max_gain=max_gain)
+    rules = Rules(occupied=occupied, encoding=encoding, output=written, max_gain=max_gain)
     if rules.obeyed(table):
         return table, Regularisation()
     strict = attrs.evolve(rules, max_gain=1 + (max_gain - 1) * _TARGET)
-    smooth, touched = _smoothed(table, strict)
-    shared = 1.0
-    affine_kept = 1.0
-    result = smooth
-    if not strict.obeyed(smooth):
-        affine, affine_kept = _safe_affine(smooth, strict)
-        result, shared = _blend(affine, smooth, strict)
+    result, smoothed = smooth(table, strict)
+    how = Regularisation(smoothed=smoothed)
+    if smoothed == 0 or not strict.obeyed(result):
+        result, how = _by_limits(table, strict)
     moved = np.abs(look_up(result, occupied.codes) - look_up(table, occupied.codes)).max(axis=1)
-    return result, Regularisation(touched, shared, affine_kept, float(occupied.weights @ moved))
+    return result, attrs.evolve(how, moved=float(occupied.weights @ moved))
 
 
-def _smoothed(table: Table, rules: _Rules) -> tuple[Table, int]:
-    """Smooth displacements around offending nodes until none offends or the rounds are over."""
-    rest = _no_change(table)
-    shift = table.lattice.astype(np.float64) - rest
-    touched = np.zeros(table.lattice.shape[:3], dtype=bool)
-    cells = rules.occupied.cells(table)
-    bad = rules.offending(table)
-    if (bad & cells).sum() > _WIDESPREAD * cells.sum():
-        return table, 0
+def _by_limits(table: Table, rules: Rules) -> tuple[Table, Regularisation]:
+    affine, affine_kept = _safe_affine(table, rules)
+    rounds = 0
+    for share in _SHARES:
+        limited, needed = _limited(_mixed(affine, table, share), affine, rules)
+        rounds += needed
+        if needed < _LIMITING_ROUNDS:
+            return limited, Regularisation(rounds=rounds, kept=share, affine_kept=affine_kept)
+    result, kept = _blend(affine, limited, rules)
+    return result, Regularisation(rounds=rounds, kept=kept * share, affine_kept=affine_kept)
+
+
+def _limited(table: Table, affine: Table, rules: Rules) -> tuple[Table, int]:
+    """Limit gradients until nothing offends or the rounds are over; the mean of the occupied colours is kept."""
+    occupied, calm = rules.occupied, _slope(affine)
+    wanted = look_up(table, occupied.codes)
     current = table
-    for number in range(_ROUNDS):
-        touched |= widened(_corners(bad), number // 2)
-        box = _box_around(touched)
-        for _ in range(1 + number):
-            shift[box] = np.where(touched[box][..., None], _averaged(shift[box]), shift[box])
-        current = Table(rest + shift, table.curves)
-        bad = rules.offending(current, box)  # every cell that offends lies in the box
-        if not bad.any():
-            break
-    return current, int(touched.sum())
+    for done in range(_LIMITING_ROUNDS):
+        offences = rules.offences(current)
+        if not offences.any:
+            return current, done
+        current = mend(current, offences, max_gain=rules.max_gain, calm=calm)
+        drift = occupied.weights @ (wanted - look_up(current, occupied.codes))
+        current = Table(current.lattice + drift, table.curves)
+    return current, _LIMITING_ROUNDS
 
 
-def _box_around(nodes: NDArray[np.bool_]) -> Box:
-    """Return the nodes' bounding box with a margin of one where there is room: slices of nodes, and of their cells."""
-    sides = []
-    for axis in range(3):
-        found = np.flatnonzero(nodes.any(axis=tuple(other for other in range(3) if other != axis)))
-        sides.append(slice(max(int(found[0]) - 1, 0), min(int(found[-1]) + 2, nodes.shape[axis])))
-    return sides[0], sides[1], sides[2]
+def _slope(affine: Table) -> NDArray[np.float64]:
+    """Return the (3, 3) Jacobian of a table that is affine."""
+    lattice = affine.lattice.astype(np.float64)
+    ends = [lattice[-1, 0, 0], lattice[0, -1, 0], lattice[0, 0, -1]]
+    return np.stack([end - lattice[0, 0, 0] for end in ends], axis=1)
 
 
-def _corners(cells: Cells) -> NDArray[np.bool_]:
-    nodes = np.zeros(tuple(n + 1 for n in cells.shape), dtype=bool)
-    for corner in np.ndindex(2, 2, 2):
-        nodes[tuple(slice(c, c + n) for c, n in zip(corner, cells.shape, strict=True))] |= cells
-    return nodes
-
-
-def _averaged(shift: Nodes) -> Nodes:
-    """Average every node with its neighbours, with weights 1 2 1 along each axis and edges repeated."""
-    for axis in range(3):
-        padded = np.concatenate([shift.take([0], axis), shift, shift.take([-1], axis)], axis)
-        line = np.moveaxis(padded, axis, 0)
-        shift = np.moveaxis((line[:-2] + 2 * line[1:-1] + line[2:]) / 4, 0, axis)
-    return shift
-
-
-def _no_change(table: Table) -> Nodes:
-    red, green, blue = node_codes(table.size, table.curves)
-    return np.stack(np.meshgrid(red, green, blue, indexing="ij"), axis=-1)
-
-
-def _safe_affine(table: Table, rules: _Rules) -> tuple[Table, float]:
+def _safe_affine(table: Table, rules: Rules) -> tuple[Table, float]:
     """Fit the affine part on the occupied colours, and draw it towards no change until it is safe by itself."""
     codes, weights = rules.occupied.codes, rules.occupied.weights
-    rest = _no_change(table)
+    rest = no_change(table)
     columns = np.concatenate([codes, np.ones((len(codes), 1))], axis=1)
     scale = np.sqrt(weights)[:, None]
     # A ridge towards no change decides the directions in which the colours do not vary.
-    ridge = 1e-2 * np.eye(4)[:, :] * np.array([1.0, 1.0, 1.0, 1e-3])
+    ridge = np.diag([1e-2, 1e-2, 1e-2, 1e-5])
     shift = look_up(table, codes) - codes
     solved = np.linalg.lstsq(
         np.concatenate([columns * scale, ridge]), np.concatenate([shift * scale, np.zeros((4, 3))]), rcond=None
@@ -194,17 +147,22 @@ def _safe_affine(table: Table, rules: _Rules) -> tuple[Table, float]:
     return _blend(Table(rest, table.curves), affine, rules)
 
 
-def _blend(safe: Table, wanted: Table, rules: _Rules) -> tuple[Table, float]:
+def _blend(safe: Table, wanted: Table, rules: Rules) -> tuple[Table, float]:
     """Go from a safe table towards another as far as the rules allow, to 1 part in 128."""
     if rules.obeyed(wanted):
         return wanted, 1.0
     kept, best, low, high = 0.0, safe, 0.0, 1.0
     for _ in range(_HALVINGS):
         middle = (low + high) / 2
-        lattice = (1 - middle) * safe.lattice.astype(np.float64) + middle * wanted.lattice
-        candidate = Table(lattice, wanted.curves)
+        candidate = _mixed(safe, wanted, middle)
         if rules.obeyed(candidate):
             low, kept, best = middle, middle, candidate
         else:
             high = middle
     return best, kept
+
+
+def _mixed(first: Table, second: Table, share: float) -> Table:
+    if share == 1.0:
+        return second
+    return Table((1 - share) * first.lattice.astype(np.float64) + share * second.lattice, second.curves)
