@@ -39,7 +39,7 @@ SAMPLES_MAY_USE = {"errors", "arrays", "picture", "colour", "files", "samples"}
 HOMES = {
     "ot": {"transport"},
     "tifffile": {"files", "slides"},
-    "imagecodecs": {"files", "slides"},
+    "imagecodecs": {"files", "slides", "colour"},
     "PIL": {"files", "colour", "samples"},
     "PyOpenColorIO": {"tables", "applying"},
     "cv2": {"evidence", "palettes", "files"},
