@@ -11,8 +11,6 @@ from numpy.typing import NDArray
 
 from hueferry.picture import Encoding
 
-_INNER = 127  # between code 0 and the top code; at 8 bits each of these cells is two codes wide
-
 
 class Spacing(enum.Enum):
     """How the cells of a channel are spread over its codes."""
@@ -36,10 +34,12 @@ class Cells:
     Attributes:
         bits: significant bits a channel.
         spacing: how the cells are spread.
+        inner: cells between code 0 and the top code, where there are codes enough; 127 are two codes wide at 8 bits.
     """
 
     bits: int = attrs.field(validator=attrs.validators.in_(range(1, 17)))
     spacing: Spacing = Spacing.EVEN
+    inner: int = attrs.field(default=127, validator=attrs.validators.in_(range(1, 255)))
 
     @property
     def levels(self) -> int:
@@ -50,7 +50,7 @@ class Cells:
     def starts(self) -> NDArray[np.int64]:
         """(n,) first code of each cell, ascending; n <= 256."""
         top, power = self.levels - 1, _POWER[self.spacing]
-        bounds = [1 - (-(step**power) * (top - 1) // _INNER**power) for step in range(_INNER + 1)]
+        bounds = [1 - (-(step**power) * (top - 1) // self.inner**power) for step in range(self.inner + 1)]
         return np.unique(np.array([0, *bounds, top], dtype=np.int64))
 
     @property

@@ -51,18 +51,23 @@ def count(
     return first.frozen()
 
 
-def count_pixels(pixels: Pixels, bits: int, *, mask: Mask | None = None, spacing: Spacing = Spacing.EVEN) -> Histogram:
+def count_pixels(pixels: Pixels, bits: int, *, mask: Mask | None = None, layout: Cells | None = None) -> Histogram:
     """Count the pixels of one window of fewer than 2**24.
 
     Args:
         pixels: (height, width, channels) uint8, uint16 or float32, as in `arrays.Pixels`.
         bits: significant bits a channel; of no meaning for float.
         mask: (height, width), true where a pixel counts.
-        spacing: how the code range is cut into cells; histograms to be merged need the same.
+        layout: how the code range is cut into cells; None cuts it evenly. Histograms to be merged need the same.
     """
-    tally = Tally.empty(_layout(pixels, bits, spacing))
+    tally = Tally.empty(layout or layout_for(pixels, bits))
     tally.add(pixels, None if mask is None else np.asarray(mask, dtype=bool))
     return tally.frozen()
+
+
+def layout_for(pixels: Pixels, bits: int, spacing: Spacing = Spacing.EVEN, *, inner: int = 127) -> Cells:
+    """Return the cells for pixels of a dtype: float is counted in 65,535 steps."""
+    return Cells(_FLOAT_BITS if pixels.dtype == np.float32 else bits, spacing, inner)
 
 
 def _balanced_rows(source: PictureSource, threads: int) -> int:
@@ -73,15 +78,11 @@ def _balanced_rows(source: PictureSource, threads: int) -> int:
     return max(1, -(-height // (strips_each * threads)))
 
 
-def _layout(pixels: Pixels, bits: int, spacing: Spacing) -> Cells:
-    return Cells(_FLOAT_BITS if pixels.dtype == np.float32 else bits, spacing)
-
-
 def _tally(source: PictureSource, windows: list[Window], mask: Mask | None, spacing: Spacing) -> Tally:
     tally: Tally | None = None
     for window in windows:
         pixels = source.read(window)
-        tally = tally or Tally.empty(_layout(pixels, source.bits, spacing))
+        tally = tally or Tally.empty(layout_for(pixels, source.bits, spacing))
         rows = slice(window.top, window.top + window.height)
         counted = None if mask is None else np.asarray(mask[rows], dtype=bool)
         tally.add(pixels, counted)

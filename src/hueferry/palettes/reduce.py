@@ -54,7 +54,7 @@ def reduce(histogram: Histogram, encoding: Encoding, *, size: int = 1024) -> Pal
     held = np.bincount(joined, weights).astype(np.float64)
     centres = np.stack([np.bincount(joined, weights * codes[:, c]) / held for c in range(3)], axis=1)
     blocks = xyz_to_oklab(encoding.to_xyz(centres))
-    labels = _Split.start(blocks, held, size).finish()
+    labels = group(blocks, held, size)
     colours, shares = _average(blocks, held, labels)
     standing = labels[joined]
     sample = _systematic_sample(weights)
@@ -74,10 +74,15 @@ def thin(palette: Palette, size: int) -> Palette:
         return palette
     kept = palette.weights > 0
     colours, weights = palette.colours[kept], palette.weights[kept]
-    labels = _Split.start(colours, weights, size).finish()
+    labels = group(colours, weights, size)
     means, shares = _average(colours, weights, labels)
     moved = float(weights @ ((colours - means[labels]) ** 2).sum(axis=1) / weights.sum())
     return Palette(means, shares, float(np.sqrt(palette.spread**2 + moved)), palette.pixels)
+
+
+def group(colours: Colours, weights: Weights, size: int) -> Labels:
+    """Label (n,) weighted colours by at most `size` groups of little scatter; every group has a member."""
+    return _Split.start(colours, weights, size).finish()
 
 
 def _clipped_palette(histogram: Histogram, encoding: Encoding) -> Palette:

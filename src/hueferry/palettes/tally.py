@@ -136,7 +136,12 @@ def _cell_numbers(codes: Pixels, layout: Cells) -> tuple[NDArray[np.uint8], list
     """Return 8-bit numbers and the range of them that `layout.side` equal steps cut into the cells."""
     if layout == _TWO_CODES_WIDE:
         return codes, [-1.0, 257.0]  # one code before 0 and one after 255 make the first and last cell as wide
-    return np.asarray(layout.of_code()[codes], dtype=np.uint8), [0.0, float(layout.side)]
+    span = [0.0, float(layout.side)]
+    if codes.dtype == np.uint8 and layout.levels == _BYTE:
+        import cv2
+
+        return np.asarray(cv2.LUT(codes, layout.of_code()), dtype=np.uint8), span
+    return np.asarray(layout.of_code()[codes], dtype=np.uint8), span
 
 
 def _marginal(codes: Pixels, channel: int, mask: NDArray[np.uint8] | None, levels: int) -> NDArray[np.int64]:
