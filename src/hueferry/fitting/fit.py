@@ -9,9 +9,13 @@ from typing import Any
 import attrs
 
 from hueferry.arrays import Mask
+from hueferry.errors import InputError
+from hueferry.evidence.agree import HOLD_LIMIT, agree
+from hueferry.evidence.controls import hold_colours, keep_neutrals_of, only_chroma, only_tone
 from hueferry.evidence.evidence import Basis, Evidence
+from hueferry.evidence.reduced import Reduced
 from hueferry.fitting.reference import Reference, joint_palette
-from hueferry.fitting.settings import Aim, Settings
+from hueferry.fitting.settings import Aim, Only, Settings
 from hueferry.fitting.tabulate import Tabulated, carried, mean_move, tabulate
 from hueferry.fitting.view import view_of
 from hueferry.maps.method import Method
@@ -26,6 +30,8 @@ from hueferry.tables.table import Table
 
 DEFAULT_METHOD = Method.ENTROPIC
 """What `auto` means under `adopt`: the best of the truth benchmark where the content is the same."""
+
+_PARTS: Mapping[Only, Callable[[Map], Map]] = MappingProxyType({Only.TONE: only_tone, Only.CHROMA: only_chroma})
 
 
 @attrs.frozen(eq=False)
@@ -137,25 +143,21 @@ def _fit_adopt(task: _Task) -> tuple[Map, Evidence]:
 
 
 def _controlled(map_: Map, task: _Task) -> Map:
-    from hueferry.evidence import controls
-
     if task.settings.keep_neutrals:
-        map_ = controls.keep_neutrals_of(map_)
+        map_ = keep_neutrals_of(map_)
     if task.settings.only is not None:
-        map_ = controls.PARTS[task.settings.only.value](map_)
+        map_ = _PARTS[task.settings.only](map_)
     if task.hold is not None:
         held = palette_of(task.source, mask=task.hold).colours
-        map_ = controls.hold_colours(map_, held, limit=controls.HOLD_LIMIT)
+        map_ = hold_colours(map_, held, limit=HOLD_LIMIT)
     return map_
 
 
 def _fit_agree(task: _Task) -> tuple[Map, Evidence]:
-    from hueferry.evidence.agree import agree
-
     settings = task.settings
     map_, evidence = agree(
         task.source,
-        [reference.witness for reference in task.references],
+        _witnesses(task.references),
         keep_neutrals=settings.keep_neutrals,
         only=None if settings.only is None else settings.only.value,
         hold=task.hold,
@@ -166,6 +168,13 @@ def _fit_agree(task: _Task) -> tuple[Map, Evidence]:
         wanted = attrs.evolve(task.palette, colours=map_(task.palette.colours))
         map_ = fit_map(task.palette, wanted, method=settings.method, seed=settings.seed)
     return map_, evidence
+
+
+def _witnesses(references: Sequence[Reference]) -> list[Reduced]:
+    seen = [reference.witness for reference in references if reference.witness is not None]
+    if len(seen) < len(references):
+        raise InputError("a palette alone cannot tell light from content; give a picture, or use the aim adopt")
+    return seen
 
 
 _FITTERS: Mapping[Aim, Callable[[_Task], tuple[Map, Evidence]]] = MappingProxyType(
