@@ -65,7 +65,7 @@ def test_a_stretch_beyond_the_cap_everywhere_is_drawn_back_to_just_the_cap() -> 
     largest = gains(found, middle.cells(found))[0].max()
     assert 1.85 < largest <= 2.0
     assert how.rounds > 0
-    assert "limited the slope" in how.sentences()[0]
+    assert "limited its slope" in how.sentences()[0]
 
 
 @settings(max_examples=10, deadline=None)
@@ -144,8 +144,8 @@ def test_limiting_keeps_the_slope_where_nothing_offends_and_the_mean_of_the_colo
 
     assert how.rounds > 0
     assert how.kept == 1.0
-    bright = np.s_[9:, 9:, 9:]
+    bright = np.s_[10:, 10:, 10:]
     slope = np.diff(found.lattice[bright][..., 0], axis=0) * 16
-    assert slope == pytest.approx(0.5, abs=0.05)
+    assert np.quantile(np.abs(slope - 0.5), [0.5, 0.95]) == pytest.approx([0.0, 0.0], abs=0.02)
     drift = occupied.weights @ (look_up(found, occupied.codes) - look_up(table, occupied.codes))
     assert drift == pytest.approx([0, 0, 0], abs=1e-6)

@@ -11,7 +11,7 @@ from hueferry.arrays import Codes
 _STEEPEST = 0.75
 """How much the way back to neutral may add to the gain of the map."""
 
-_NARROWEST, _WIDEST = 1 / 16, 1 / 4
+_NARROWEST, _WIDEST = 1 / 16, 1 / 8
 """Reach of the way back, in codes of 0 … 1."""
 
 

@@ -7,7 +7,7 @@ follow until nothing offends.
 
 References:
     Fattal, Lischinski & Werman (2002), Gradient domain high dynamic range compression, for limiting gradients and
-    integrating them; Strang (1999), The discrete cosine transform, for the eigenbasis with free ends.
+    integrating them.
 """
 
 from __future__ import annotations
@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.tables.cells import ORDERS, Floats, clipped_channels, curve_slopes, jacobians
+from hueferry.tables.lattice_equations import integrate
 from hueferry.tables.rules import Offences
 from hueferry.tables.table import Table
 
@@ -55,7 +56,7 @@ def mend(table: Table, offences: Offences, *, max_gain: float, calm: Floats) -> 
     uneven = offences.uneven[cells]
     wanted[:, uneven] = _FOLLOW * wanted[:, uneven] + (1 - _FOLLOW) * calm
     corrections = _BEYOND * (wanted / slopes - lattice) / (table.size - 1)
-    moved = _integrated(_edge_corrections(corrections, index, table.size))
+    moved = integrate(_edge_corrections(corrections, index, table.size))
     return Table(table.lattice + moved, table.curves)
 
 
@@ -94,35 +95,3 @@ def _edge_corrections(corrections: Floats, index: NDArray[np.int64], size: int) 
         (total / np.maximum(count, 1)[:, None]).reshape(*shape, 3)
         for total, count, shape in zip(sums, counts, shapes, strict=True)
     ]
-
-
-def _integrated(edges: list[Floats]) -> Floats:
-    """Return the (n, n, n, 3) shifts, of mean zero, whose differences are nearest to those wanted along the edges."""
-    size = edges[0].shape[1]
-    divergence = np.zeros((size, size, size, 3))
-    for axis, edge in enumerate(edges):
-        line, steps = np.moveaxis(divergence, axis, 0), np.moveaxis(edge, axis, 0)
-        line[1:] += steps
-        line[:-1] -= steps
-    basis, values = _cosines(size)
-    total = values[:, None, None] + values[None, :, None] + values[None, None, :]
-    total[0, 0, 0] = 1.0
-    spectrum = _transformed(divergence, basis.T) / total[..., None]
-    spectrum[0, 0, 0] = 0.0
-    return _transformed(spectrum, basis)
-
-
-def _cosines(size: int) -> tuple[Floats, Floats]:
-    """Eigenvectors, as columns, and eigenvalues of the second difference along a line of nodes with free ends."""
-    wave = np.arange(size)
-    basis = np.cos(np.pi * wave[None, :] * (wave[:, None] + 0.5) / size)
-    basis /= np.linalg.norm(basis, axis=0)
-    return basis, 2 - 2 * np.cos(np.pi * wave / size)
-
-
-def _transformed(field: Floats, matrix: Floats) -> Floats:
-    for _ in range(3):
-        # Each pass transforms the first axis and puts it behind the other two.
-        size = field.shape[0]
-        field = (matrix @ field.reshape(size, -1)).reshape(size, size, size, 3).transpose(1, 2, 0, 3)
-    return np.ascontiguousarray(field)

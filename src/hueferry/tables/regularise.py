@@ -1,8 +1,8 @@
 """A table made safe: no fold, no gain beyond the cap, no uneven ramp; changed as little and as locally as that allows.
 
-A few offending nodes are smoothed where they are. Where a map stretches too much over whole regions, its gradients
-are limited there. What neither cures is drawn towards the affine part of the table, and at last towards no change at
-all, which is always safe.
+A few offending nodes are smoothed where they are. Else what the table does beyond its affine part is made stiffer, most
+of all away from the occupied colours, and gradients that stretch too much are limited. What neither cures is drawn
+towards the affine part, and that towards no change at all, which is always safe.
 """
 
 from __future__ import annotations
@@ -14,14 +14,18 @@ from numpy.typing import NDArray
 from hueferry.picture import Encoding
 from hueferry.tables.cells import Occupied
 from hueferry.tables.gradients import mend
+from hueferry.tables.lattice_equations import smooth_through
 from hueferry.tables.lookup import look_up
 from hueferry.tables.rules import Rules
-from hueferry.tables.smoothing import no_change, smooth
+from hueferry.tables.smoothing import corners, no_change, smooth
 from hueferry.tables.table import Table
 
-_LIMITING_ROUNDS = 15
-_SHARES = (1.0, 0.5, 0.25)
-"""Shares of the table beyond its affine part from which gradients are limited, until one succeeds."""
+_LIMITING_ROUNDS = 8
+_STIFFNESSES = (0.1, 1.0, 10.0, 100.0, 1000.0)
+"""How much smoothness counts against nearness to the table where it is occupied, from least to most."""
+
+_UNSEEN, _BESIDE = 1e-3, 0.1
+"""Weights of nodes far from and beside the occupied cells, whose own nodes have weight 1."""
 
 _HALVINGS = 7
 _TARGET = 0.995
@@ -34,7 +38,8 @@ class Regularisation:
 
     Attributes:
         smoothed: nodes whose displacement was smoothed.
-        rounds: rounds in which gradients were limited; 0 if they were not.
+        rounds: rounds of smoothing and of limiting gradients; 0 if there were none.
+        stiffness: how much smoothness counted in the end, against nearness to the table.
         kept: share of the table kept in the blend towards its affine part; 1 means no blend.
         affine_kept: share of the affine part kept in its own blend towards no change; 1 means no blend.
         moved: mean shift of the occupied colours, in codes of 0 … 1.
@@ -42,6 +47,7 @@ class Regularisation:
 
     smoothed: int = 0
     rounds: int = 0
+    stiffness: float = 0.0
     kept: float = 1.0
     affine_kept: float = 1.0
     moved: float = 0.0
@@ -57,7 +63,7 @@ class Regularisation:
         if self.smoothed:
             said.append(f"smoothed {self.smoothed} nodes of the table to take out folds or steep places")
         if self.rounds:
-            said.append("limited the slope of the table where it folded or stretched too much")
+            said.append("smoothed the table and limited its slope where it folded or stretched too much")
         if self.kept < 1.0:
             said.append(f"kept {100 * self.kept:.0f} % of what the table does beyond its affine part")
         if self.kept < 1.0 and self.affine_kept < 1.0:
@@ -99,14 +105,25 @@ def make_safe(
 
 def _by_limits(table: Table, rules: Rules) -> tuple[Table, Regularisation]:
     affine, affine_kept = _safe_affine(table, rules)
+    weights = _node_weights(table, rules)
     rounds = 0
-    for share in _SHARES:
-        limited, needed = _limited(_mixed(affine, table, share), affine, rules)
-        rounds += needed
-        if needed < _LIMITING_ROUNDS:
-            return limited, Regularisation(rounds=rounds, kept=share, affine_kept=affine_kept)
+    for stiffness in _STIFFNESSES:
+        beyond = table.lattice.astype(np.float64) - affine.lattice
+        softened = affine.lattice + smooth_through(beyond, weights, stiffness=stiffness)
+        limited, needed = _limited(Table(softened, table.curves), affine, rules)
+        limited, smoothed = smooth(limited, rules)
+        rounds += 1 + needed
+        if rules.obeyed(limited):
+            return limited, Regularisation(smoothed, rounds, stiffness, affine_kept=affine_kept)
     result, kept = _blend(affine, limited, rules)
-    return result, Regularisation(rounds=rounds, kept=kept * share, affine_kept=affine_kept)
+    return result, Regularisation(rounds=rounds, stiffness=stiffness, kept=kept, affine_kept=affine_kept)
+
+
+def _node_weights(table: Table, rules: Rules) -> NDArray[np.float64]:
+    weights = np.full(table.lattice.shape[:3], _UNSEEN)
+    weights[corners(rules.occupied.cells(table, margin=1))] = _BESIDE
+    weights[corners(rules.occupied.cells(table, margin=0))] = 1.0
+    return weights
 
 
 def _limited(table: Table, affine: Table, rules: Rules) -> tuple[Table, int]:

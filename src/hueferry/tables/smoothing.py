@@ -22,9 +22,11 @@ def smooth(table: Table, rules: Rules) -> tuple[Table, int]:
     """Smooth around a few offending nodes until nothing offends or the rounds are over.
 
     Returns:
-        The table, and how many nodes were smoothed; the table as it was and 0 where offences are not few.
+        The table, and how many nodes were smoothed; the table as it was and 0 where offences are none or not few.
     """
     bad = rules.offences(table).cells
+    if not bad.any():
+        return table, 0
     cells = rules.occupied.cells(table)
     if (bad & cells).sum() > _FEW * cells.sum() or bad.sum() > _FEW * bad.size:
         return table, 0
@@ -33,7 +35,7 @@ def smooth(table: Table, rules: Rules) -> tuple[Table, int]:
     touched = np.zeros(table.lattice.shape[:3], dtype=bool)
     current = table
     for number in range(_ROUNDS):
-        touched |= widened(_corners(bad), number // 2)
+        touched |= widened(corners(bad), number // 2)
         box = _box_around(touched)
         for _ in range(1 + number):
             shift[box] = np.where(touched[box][..., None], _averaged(shift[box]), shift[box])
@@ -59,7 +61,8 @@ def _box_around(nodes: NDArray[np.bool_]) -> Box:
     return sides[0], sides[1], sides[2]
 
 
-def _corners(cells: Cells) -> NDArray[np.bool_]:
+def corners(cells: Cells) -> NDArray[np.bool_]:
+    """Return the (n, n, n) nodes at the corners of cells."""
     nodes = np.zeros(tuple(n + 1 for n in cells.shape), dtype=bool)
     for corner in np.ndindex(2, 2, 2):
         nodes[tuple(slice(c, c + n) for c, n in zip(corner, cells.shape, strict=True))] |= cells
