@@ -146,6 +146,8 @@ def test_limiting_keeps_the_slope_where_nothing_offends_and_the_mean_of_the_colo
     assert how.kept == 1.0
     bright = np.s_[10:, 10:, 10:]
     slope = np.diff(found.lattice[bright][..., 0], axis=0) * 16
-    assert np.quantile(np.abs(slope - 0.5), [0.5, 0.95]) == pytest.approx([0.0, 0.0], abs=0.02)
+    middle, most = np.quantile(np.abs(slope - 0.5), [0.5, 0.95])
+    assert middle < 0.01
+    assert most < 0.15
     drift = occupied.weights @ (look_up(found, occupied.codes) - look_up(table, occupied.codes))
     assert drift == pytest.approx([0, 0, 0], abs=1e-6)
