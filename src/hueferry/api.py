@@ -5,9 +5,11 @@ from __future__ import annotations
 import os
 from collections.abc import Sequence
 from enum import StrEnum
+from itertools import combinations
 from pathlib import Path
 from typing import Any, TypeAlias, TypedDict, TypeVar, Unpack, cast
 
+import attrs
 import numpy as np
 from numpy.typing import NDArray
 
@@ -22,6 +24,8 @@ from hueferry.picture import Picture
 from hueferry.record.record import Record
 from hueferry.series.match import MatchOrder, OnDone
 from hueferry.tables.table import Table
+
+SAMPLE_FOLDER = Path("sample_images")
 
 PathLike: TypeAlias = str | os.PathLike[str]
 PictureLike: TypeAlias = PathLike | Picture
@@ -192,3 +196,59 @@ def match_files(order: MatchOrder, *, on_done: OnDone | None = None) -> Record:
     if run.thumbnails:
         write_contact_sheet(run.thumbnails, order.out)
     return run.record
+
+
+def cost_table(paths: Sequence[Path]) -> dict[str, Any]:
+    """Compare pictures each with each: every figure of every pair, units, noise, and a map of three or more.
+
+    Returns:
+        JSON values: `schema`, `pairs`, `units`, and `comparison` for three pictures or more.
+
+    Raises:
+        InputError: fewer than two pictures, or one that cannot be read.
+    """
+    from hueferry.measure.cost import SCHEMA, UNITS, measure
+    from hueferry.measure.matrix import compare
+    from hueferry.measure.noise import judge, noise_floor
+    from hueferry.palettes.build import palette_of
+
+    pictures = [read(path) for path in paths]
+    names = distinct_names(paths)
+    palettes = [palette_of(picture) for picture in pictures]
+    floors = [noise_floor(picture) for picture in pictures]
+    pairs = []
+    for i, j in combinations(range(len(paths)), 2):
+        figures = measure(palettes[i], palettes[j])
+        judgement = judge(figures.sliced_w2, floors[i], floors[j])
+        noise = {"sampling": judgement.sampling, "within": judgement.within}
+        pairs.append({"a": names[i], "b": names[j], **figures.as_dict(), "noise": noise, "verdict": judgement.sentence})
+    table: dict[str, Any] = {"schema": SCHEMA, "pairs": pairs, "units": dict(UNITS)}
+    if len(paths) > 2:
+        table["comparison"] = compare(palettes, names).as_dict()
+    return table
+
+
+def distinct_names(paths: Sequence[Path]) -> list[str]:
+    """Return short names for files: the last part of each path, or the whole path where that is not enough."""
+    short = [path.name for path in paths]
+    return [name if short.count(name) == 1 else path.as_posix() for name, path in zip(short, paths, strict=True)]
+
+
+@attrs.frozen
+class Samples:
+    """The sample series: the hero frame and the frames to bring to it."""
+
+    hero: Path
+    frames: tuple[Path, ...]
+
+
+def demo_samples(out: Path) -> Samples:
+    """Find the sample pictures in `sample_images/`, or render them into `out` where there is no such folder."""
+    folder = SAMPLE_FOLDER
+    if not (folder / "hero.jpg").is_file():
+        from hueferry.samples.photographs import render_samples
+
+        folder = out / SAMPLE_FOLDER
+        if not (folder / "hero.jpg").is_file():
+            render_samples(folder)
+    return Samples(folder / "hero.jpg", tuple(sorted(folder.glob("bench-*"))))

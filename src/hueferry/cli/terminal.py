@@ -42,14 +42,16 @@ def show_lines(lines: Sequence[str]) -> None:
         sys.stdout.write(plain(line) + "\n")
 
 
-def show_table(title: str, columns: Sequence[str], rows: Sequence[Sequence[str]], *, note: str = "") -> None:
-    """Print a table to stdout: the first column left, the others right; at most 80 columns wide if not a terminal.
+def show_table(
+    title: str, columns: Sequence[str], rows: Sequence[Sequence[str]], *, left: Sequence[int] = (0,)
+) -> None:
+    """Print a table to stdout, at most 80 columns wide if that is not a terminal.
 
     Args:
         title: what the table shows, with its unit.
         columns: headings.
         rows: cells, as many in each row as there are headings.
-        note: a sentence below.
+        left: numbers of the columns that are flush left; the others are flush right.
     """
     from rich import box
     from rich.console import Console
@@ -60,10 +62,8 @@ def show_table(title: str, columns: Sequence[str], rows: Sequence[Sequence[str]]
     table = Table(title=Text(title), title_justify="left", box=box.SIMPLE_HEAD, pad_edge=False)
     for index, column in enumerate(columns):
         table.add_column(
-            Text(column), justify="left" if index == 0 else "right", overflow="fold" if index == 0 else "ellipsis"
+            Text(column), justify="left" if index in left else "right", overflow="fold" if index in left else "ellipsis"
         )
     for row in rows:
         table.add_row(*(Text(plain(cell)) for cell in row))
     console.print(table)
-    if note:
-        console.print(Text(plain(note)))
