@@ -25,7 +25,7 @@ from hueferry.evidence.witness import Witness
 CAUTION = 3.0
 """What the content covariance counts for: halves of one picture have more in common than two pictures of one scene."""
 
-STRANGE, SHARP = 0.9, 0.02
+STRANGE, SHARP = 0.92, 0.02
 """Likeness, as a share of that of halves, at which two pictures are as likely strangers as one scene; and its slope."""
 
 LEAST_TRUST = 0.3

@@ -18,6 +18,12 @@ from hueferry.arrays import Colours, Mask, Weights, read_only
 PATCHES = 340
 """Patches of a picture, about."""
 
+FLATNESS = 0.03
+"""Oklab; local deviation at which a pixel counts half in the mean of its patch: edges belong to no stuff."""
+
+GRAIN = 0.01
+"""Deviation over lightness that rounding and grain bring by themselves; below it textures are all one."""
+
 FEWEST = 24
 """Patches below which a picture says nothing."""
 
@@ -68,21 +74,31 @@ def scene_of(oklab: NDArray[np.float32], counted: Mask, *, patches: int = PATCHE
     height, width = counted.shape
     side = max(1.0, sqrt(height * width / patches))
     size = max(1, round(width / side)), max(1, round(height / side))
-    weight = counted.astype(np.float32)
-    share = cv2.resize(weight, size, interpolation=cv2.INTER_AREA)
+    share = cv2.resize(counted.astype(np.float32), size, interpolation=cv2.INTER_AREA)
+    weight = counted / (FLATNESS**2 + _variance(oklab))
+    total_weight = cv2.resize(weight, size, interpolation=cv2.INTER_AREA)
 
     def average(plane: NDArray[np.float32]) -> NDArray[np.float64]:
         total = cv2.resize(plane * weight, size, interpolation=cv2.INTER_AREA)
-        return np.asarray(total / np.maximum(share, 1e-6), dtype=np.float64)
+        return np.asarray(total / np.maximum(total_weight, 1e-6), dtype=np.float64)
 
     lightness = oklab[:, :, 0]
     fine = lightness - cv2.blur(lightness, (5, 5))
     mean = np.stack([average(oklab[:, :, axis]) for axis in range(3)], axis=2)
     coarse = np.sqrt(np.maximum(average(lightness * lightness) - mean[:, :, 0] ** 2, 0))
     level = np.maximum(mean[:, :, 0], 0) + 0.1
-    textures = [np.log((coarse + 0.004) / level), np.log((np.sqrt(average(fine * fine)) + 0.002) / level)]
+    fine_deviation = np.sqrt(average(fine * fine))
+    textures = [np.log(coarse / level + 2 * GRAIN), np.log(fine_deviation / level + GRAIN)]
     rows, columns = np.meshgrid(
         (np.arange(size[1]) + 0.5) / size[1], (np.arange(size[0]) + 0.5) / size[0], indexing="ij"
     )
     whole = share > 0.5
     return Scene(mean[whole], np.stack(textures, axis=2)[whole], np.stack([rows, columns], axis=2)[whole])
+
+
+def _variance(oklab: NDArray[np.float32]) -> NDArray[np.float32]:
+    """Return (height, width) the variance over 5 × 5 pixels, all channels together."""
+    import cv2
+
+    mean = cv2.blur(oklab, (5, 5))
+    return np.asarray(np.maximum((cv2.blur(oklab * oklab, (5, 5)) - mean * mean).sum(axis=2), 0))
