@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
+from concurrent.futures import Future, ThreadPoolExecutor
 from types import MappingProxyType
 from typing import Any
 
@@ -99,9 +100,13 @@ def fit_picture(
         InputError: no reference, or a mask of another size than the picture.
         SolverError: a transport plan could not be vouched for.
     """
-    palette = palette_of(source, mask=mask)
-    target = joint_palette(references)
-    wanted, evidence = _FITTERS[settings.aim](_Task(source, palette, references, target, settings, mask, hold))
+    # All pixels are counted while evidence is gathered: neither needs the other, and there is more than one core.
+    with ThreadPoolExecutor(1) as pool:
+        counting = pool.submit(palette_of, source, mask=mask)
+        target = joint_palette(references)
+        task = _Task(source, counting, references, target, settings, mask, hold)
+        wanted, evidence = _FITTERS[settings.aim](task)
+        palette = task.palette
     result = tabulate(wanted, source.encoding, palette, settings, bits=source.bits)
     after = carried(result.table, source.encoding, palette)
     return Fit(
@@ -125,12 +130,16 @@ def _sentences(evidence: Evidence, result: Tabulated, settings: Settings) -> tup
 @attrs.frozen(eq=False)
 class _Task:
     source: Picture
-    palette: Palette
+    counting: Future[Palette]
     references: Sequence[Reference]
     target: Palette
     settings: Settings
     mask: Mask | None
     hold: Mask | None
+
+    @property
+    def palette(self) -> Palette:
+        return self.counting.result()
 
 
 def _fit_adopt(task: _Task) -> tuple[Map, Evidence]:
