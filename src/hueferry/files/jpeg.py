@@ -151,8 +151,11 @@ def jpeg_bytes(pixels: NDArray[np.uint8], *, quality: int = 96, sampling: str = 
     """Encode (h, w, 1 or 3) 8-bit pixels, without metadata."""
     import imagecodecs
 
-    plain = np.ascontiguousarray(pixels[:, :, 0] if pixels.shape[2] == 1 else pixels)
-    return bytes(imagecodecs.jpeg8_encode(plain, level=quality, subsampling=None if plain.ndim == 2 else sampling))
+    from hueferry.files.jpeg_parts import encode_in_parts
+
+    if pixels.shape[2] == 3:
+        return encode_in_parts(pixels, quality=quality, sampling=sampling)
+    return bytes(imagecodecs.jpeg8_encode(np.ascontiguousarray(pixels[:, :, 0]), level=quality))
 
 
 def write_jpeg(pixels: Pixels, metadata: Metadata, profile: bytes | None, *, quality: int | None) -> bytes:
