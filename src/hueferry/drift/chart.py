@@ -251,13 +251,17 @@ def _monthly_rate(readings: Sequence[Reading], along: Series) -> float | None:
 def _sentence(readings: Sequence[Reading], drift: Drift) -> str:
     parts = []
     for (label, less, more), shift in zip(CHANNELS.values(), drift.shifts, strict=True):
-        if abs(shift) >= 0.3 * drift.total:
-            parts.append((abs(shift), f"{more if shift > 0 else less} ({label} {shift:+.1f})"))
+        if abs(shift) >= 0.25 * drift.total:
+            parts.append((abs(shift), f"{more if shift > 0 else less} ({label} {_signed(shift)})"))
     direction = " and ".join(words for _, words in sorted(parts, reverse=True))
     growth = "" if drift.rate is None else f", growing by about {drift.rate:.1f} a month"
     return (
         f"Since {_day(readings[drift.since].when)} it has become {direction}: {drift.total:.1f} ΔE*ab in all{growth}."
     )
+
+
+def _signed(value: float) -> str:
+    return f"{value:+.1f}".replace("-", "−")
 
 
 def _day(when: object) -> str:

@@ -41,8 +41,8 @@ def some_beyond(z: Series, *, needed: int, of: int, sigmas: float) -> Marks:
     """Mark readings that complete `needed` of `of` readings beyond `sigmas` on one side, themselves among them."""
     marks = np.zeros(len(z), dtype=bool)
     for side in (z > sigmas, z < -sigmas):
-        sums = np.convolve(side, np.ones(of, dtype=int))[: len(z)]
-        marks |= side & (sums >= needed)
+        total = np.concatenate([np.zeros(of, dtype=int), np.cumsum(side)])
+        marks |= side & (total[of:] - total[:-of] >= needed)
     return marks
 
 
