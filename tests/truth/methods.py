@@ -38,7 +38,7 @@ def picture_of(pixels: Pixels8) -> Picture:
     return Picture(pixels, ENCODING)
 
 
-def _none(source: Pixels8, reference: Pixels8) -> tuple[None, str]:
+def _none(_: Pixels8, __: Pixels8) -> tuple[None, str]:
     return None, ""
 
 

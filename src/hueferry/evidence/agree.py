@@ -123,7 +123,7 @@ def _left(witnesses: Sequence[Witness], prior: Prior, sample: Colours) -> float:
     judged = [witness.judged[0] for witness in witnesses if witness.judged is not None]
     if judged:
         return min(judged)
-    return expected_error(identity(), prior.mean, np.linalg.inv(prior.precision), sample)
+    return expected_error(identity(), prior.mean, np.asarray(np.linalg.inv(prior.precision)), sample)
 
 
 def _sample(colours: Colours, seed: int) -> Colours:

@@ -44,10 +44,10 @@ class CameraMap:
     """A member of the family.
 
     Attributes:
-        parameters: (15,) in the order of `NAMES`: natural logarithms of the gains; strength of the shoulder; logarithm of
-            its knee over 0.6; logarithm of the lightness power; bend and lift of the tone curve in Oklab L; logarithm of the chroma factor at
-            L = 0.5 and its slope with L; hue turn in radians; stretch and shear of the a, b plane; split tone at
-            middle lightness in Oklab a, b.
+        parameters: (15,) in the order of `NAMES`: natural logarithms of the gains; strength of the shoulder and
+            logarithm of its knee over 0.6; logarithm of the lightness power, bend and lift of the tone curve in
+            Oklab L; logarithm of the chroma factor at L = 0.5 and its slope with L; hue turn in radians; stretch
+            and shear of the a, b plane; split tone at middle lightness in Oklab a, b.
     """
 
     parameters: Parameters = attrs.field(converter=read_only)

@@ -1,4 +1,4 @@
-"""Controls on the map of `agree`: neutrals, clipped white, held colours."""
+"""Controls on the map of `agree`: neutrals, tone or chroma alone, held colours."""
 
 from __future__ import annotations
 
@@ -10,10 +10,6 @@ from hueferry.arrays import Colours, read_only
 from hueferry.maps.protocol import Map
 
 _LEVELS = np.linspace(0.0, 1.25, 501)
-
-WHITE_FROM = 0.965
-"""Oklab lightness (code 246 of 255) from which neutrals run back to no colour, so that clipped white stays white."""
-
 
 @attrs.frozen(eq=False)
 class NeutralAxis:
@@ -45,12 +41,6 @@ class NeutralAxis:
 def keep_neutrals_of(inner: Map) -> NeutralAxis:
     """Leave every neutral without colour."""
     return _with_neutrals(inner, np.ones_like(_LEVELS))
-
-
-def keep_white(inner: Map) -> NeutralAxis:
-    """Leave clipped white without colour: what was clipped holds no colour that a correction could know."""
-    rise = np.clip((_LEVELS - WHITE_FROM) / (1 - WHITE_FROM), 0.0, 1.0)
-    return _with_neutrals(inner, rise)
 
 
 def _with_neutrals(inner: Map, keep: NDArray[np.float64]) -> NeutralAxis:

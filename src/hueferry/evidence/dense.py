@@ -47,7 +47,9 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
     size = source.gray.shape[1], source.gray.shape[0]
     ours, theirs = _same_sharpness(source.oklab, reference.oklab, homography)
     flags = cv2.INTER_LINEAR | cv2.WARP_INVERSE_MAP
-    warped = cv2.warpPerspective(theirs, homography, size, flags=flags, borderMode=cv2.BORDER_REPLICATE)
+    warped = np.asarray(
+        cv2.warpPerspective(theirs, homography, size, flags=flags, borderMode=cv2.BORDER_REPLICATE), dtype=np.float32
+    )
     good = reference.usable.astype(np.float32)
     low, high = (
         cv2.warpPerspective(_nearby(ends), homography, size, flags=flags) for ends in (reference.low, reference.high)
@@ -103,9 +105,9 @@ def _same_sharpness(
     centre = np.array([ours.shape[1] / 2, ours.shape[0] / 2, 1.0])
     scale = float(np.sqrt(np.abs(np.linalg.det(homography) / (homography[2] @ centre) ** 3)))
     if scale > 1.15:
-        theirs = cv2.GaussianBlur(theirs, (0, 0), 0.5 * scale)
+        theirs = np.asarray(cv2.GaussianBlur(theirs, (0, 0), 0.5 * scale), dtype=np.float32)
     elif scale < 1 / 1.15:
-        ours = cv2.GaussianBlur(ours, (0, 0), 0.5 / scale)
+        ours = np.asarray(cv2.GaussianBlur(ours, (0, 0), 0.5 / scale), dtype=np.float32)
     return ours, theirs
 
 
@@ -120,7 +122,7 @@ def _local(oklab: NDArray[np.float32]) -> tuple[NDArray[np.float32], NDArray[np.
     """Return the mean over 5 × 5 pixels and the root mean square deviation from it."""
     import cv2
 
-    mean = cv2.blur(oklab, (5, 5))
+    mean = np.asarray(cv2.blur(oklab, (5, 5)), dtype=np.float32)
     variance = (cv2.blur(oklab * oklab, (5, 5)) - mean * mean).sum(axis=2)
     return mean, np.sqrt(np.maximum(variance, 0))
 

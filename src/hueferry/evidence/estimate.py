@@ -23,7 +23,7 @@ _LEAST_SCALE = 0.006
 """Oklab; what 8-bit rounding and sharpness leave at best."""
 
 _SCALES = (0.06, 0.04, 0.025, 0.015, 0.01, 0.006, 0.004, *(_LEAST_SCALE,) * 8)
-"""Smallest scale in each step: from wide to narrow, so that a majority of one colour cannot shut the others out early."""
+"""Smallest scale in each step: from wide to narrow, so that a majority of one colour cannot shut the others out."""
 
 
 @attrs.frozen(eq=False)

@@ -6,6 +6,8 @@ import attrs
 import numpy as np
 from numpy.typing import NDArray
 
+from hueferry.arrays import Mask
+
 MOST = 1500
 """Keypoints a picture at most, the strongest first."""
 
@@ -29,13 +31,14 @@ class Keypoints:
         return len(self.points)
 
 
-def find_keypoints(gray: NDArray[np.uint8]) -> Keypoints:
-    """Find up to `MOST` scale-invariant keypoints (Lowe 2004) of a (height, width) picture."""
+def find_keypoints(gray: NDArray[np.uint8], counted: Mask) -> Keypoints:
+    """Find up to `MOST` scale-invariant keypoints (Lowe 2004) of a (height, width) picture, where `counted` is true."""
     import cv2
 
     if min(gray.shape) < 16:
         return Keypoints(np.empty((0, 2)), np.empty((0, 128), dtype=np.float32))
-    found, descriptors = cv2.SIFT_create(nfeatures=MOST, contrastThreshold=0.03).detectAndCompute(gray, None)
+    detector = cv2.SIFT_create(nfeatures=MOST, contrastThreshold=0.03)  # type: ignore[attr-defined]
+    found, descriptors = detector.detectAndCompute(gray, counted.astype(np.uint8))
     if descriptors is None or not len(found):
         return Keypoints(np.empty((0, 2)), np.empty((0, 128), dtype=np.float32))
     shares = descriptors[:MOST] / np.maximum(descriptors[:MOST].sum(axis=1, keepdims=True), 1e-9)

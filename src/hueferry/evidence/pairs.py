@@ -7,6 +7,7 @@ could, and only then are colours read, densely, where both pictures are flat.
 from __future__ import annotations
 
 from math import lgamma, log, pi
+from typing import Any
 
 import attrs
 import numpy as np
@@ -119,8 +120,11 @@ def find_homography(
 
     if len(here) < FEWEST:
         return None
-    homography, _ = cv2.findHomography(here, there, cv2.USAC_MAGSAC, REACH, maxIters=3000, confidence=0.999)
-    if homography is None or not np.isfinite(homography).all() or not _is_sane(homography, here):
+    found: Any = cv2.findHomography(here, there, cv2.USAC_MAGSAC, REACH, maxIters=3000, confidence=0.999)[0]
+    if found is None:
+        return None
+    homography = np.asarray(found, dtype=np.float64)
+    if not np.isfinite(homography).all() or not _is_sane(homography, here):
         return None
     inside = np.linalg.norm(_carry(homography, here) - there, axis=1) < REACH
     distinct = min(_distinct(here[inside]), _distinct(there[inside]))

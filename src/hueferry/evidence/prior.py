@@ -21,8 +21,8 @@ METADATA_STOPS = 0.25
 
 SPREAD: Mapping[str, float] = MappingProxyType(
     {
-        "gain_red": 0.12, "gain_green": 0.12, "gain_blue": 0.12, "shoulder": 0.7, "knee": 0.2, "power": 0.12, "bend": 0.02,
-        "lift": 0.01, "chroma": 0.2, "chroma_slope": 0.15, "turn": 0.08, "stretch": 0.03, "shear": 0.03,
+        "gain_red": 0.12, "gain_green": 0.12, "gain_blue": 0.12, "shoulder": 0.7, "knee": 0.2, "power": 0.12,
+        "bend": 0.02, "lift": 0.01, "chroma": 0.2, "chroma_slope": 0.15, "turn": 0.08, "stretch": 0.03, "shear": 0.03,
         "tone_a": 0.004, "tone_b": 0.004,
     }
 )  # fmt: skip

@@ -23,7 +23,7 @@ from hueferry.evidence.scene import Scene, scene_of
 from hueferry.picture import Picture
 
 MAX_PIXELS = 400_000
-"""Pixels of the reduced form at most: keypoints of a photograph are as sure as on more, and found in a tenth of a second."""
+"""Pixels of the reduced form at most: keypoints are as sure as on more, and found in a tenth of a second."""
 
 CLIPPED = 1.5 / 255
 """Codes closer than this to either end of the range may have been clipped."""
@@ -66,7 +66,7 @@ class Reduced:
     @cached_property
     def keypoints(self) -> Keypoints:
         """Where the picture can be recognised; found once."""
-        return find_keypoints(self.gray)
+        return find_keypoints(self.gray, self.usable)
 
     @cached_property
     def scene(self) -> Scene:

@@ -62,7 +62,7 @@ class Scene:
 
 
 def scene_of(oklab: NDArray[np.float32], counted: Mask, *, patches: int = PATCHES) -> Scene:
-    """Cut (height, width, 3) `oklab` into about `patches` square patches; those that count by less than half are left out.
+    """Cut (height, width, 3) `oklab` into about `patches` square patches, and keep those that count by half or more.
 
     Args:
         oklab: the reduced picture.
