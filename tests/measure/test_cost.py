@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 import json
+import math
 
 import attrs
 import numpy as np
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from scipy.spatial import cKDTree
 from skimage import data
 
@@ -80,6 +83,25 @@ def test_flat_pictures_are_measured_without_warning() -> None:
 
     assert (cost.w1, cost.w2, cost.gaussian_w2, cost.sinkhorn_divergence) == pytest.approx([5] * 4, abs=1e-6)
     assert (cost.normal_kl, cost.normal_hellinger) == (np.inf, 1.0)
+
+
+@settings(max_examples=120, deadline=None)
+@given(seed=st.integers(0, 10_000), sizes=st.tuples(st.integers(1, 6), st.integers(1, 6)), kind=st.integers(0, 4))
+def test_odd_palettes_are_measured_without_nan_or_warning(seed: int, sizes: tuple[int, int], kind: int) -> None:
+    """Points, lines, grays, duplicates, zero weights: every figure is a number or named as infinite."""
+    rng = np.random.default_rng(seed)
+    odd = []
+    for size in sizes:
+        lab = rng.integers(0, 4, (size, 3)) * np.array([30.0, 10, 10]) * (rng.random(3) > 0.15 * kind)
+        weights = rng.random(size) * (rng.random(size) > 0.1 * kind) + np.eye(size)[0] * 1e-6
+        odd.append(palette(lab, weights / weights.sum()))
+
+    for cost in (measure(*odd), quick_cost(*odd)):
+        told = cost.as_dict()
+        infinite = told.pop("infinite")
+        assert all((value is None) == (name in infinite) for name, value in told.items())
+        assert not any(math.isnan(value) for value in told.values() if value is not None)
+        assert json.loads(json.dumps(told, allow_nan=False))
 
 
 def test_quick_figures_are_near_the_full_ones_on_photographs() -> None:

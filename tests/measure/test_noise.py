@@ -74,3 +74,20 @@ def test_a_difference_between_the_floors_is_more_than_chance_only() -> None:
     verdict = judge(2.0, floor, floor)
 
     assert (verdict.more_than_sampling, verdict.more_than_within) == (True, False)
+
+
+@pytest.mark.parametrize(
+    "pixels", [np.full((1, 1, 3), 90), np.full((7, 9, 3), 90), np.zeros((7, 9, 3)), np.eye(3)[None] * 200]
+)
+def test_pictures_of_almost_nothing_have_a_floor(pixels) -> None:
+    floor = noise_floor(Picture(pixels.astype(np.uint8), Coded()), resamples=5)
+
+    assert all(np.isfinite(value) for value in (floor.sampling, floor.split_half, floor.within))
+    assert not judge(0.0, floor, floor).more_than_sampling
+
+
+def test_ten_gigapixels_are_halved_as_well() -> None:
+    counts = np.full((16, 24), 25_000_000, dtype=np.int64)
+    colours = np.random.default_rng(1).normal([0.6, 0, 0], 0.05, (24, 3))
+
+    assert floor_of_blocks(Blocks(colours, counts), resamples=3).sampling < 0.01

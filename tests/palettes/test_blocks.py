@@ -52,6 +52,16 @@ def test_a_tiny_picture_has_as_many_blocks_as_pixels() -> None:
     assert len(blocks.counts) == 6
 
 
-def test_a_picture_of_clipped_pixels_has_no_blocks() -> None:
+def test_a_picture_of_clipped_pixels_is_black_and_white() -> None:
+    pixels = np.zeros((9, 9, 3), np.uint8)
+    pixels[4:] = 255
+
+    blocks = count_blocks(Picture(pixels, Coded()), side=3)
+
+    assert blocks.counts.sum(axis=0).tolist() == [36, 45]
+    assert blocks.colours[:, 0] == pytest.approx([0, 1], abs=1e-6)
+
+
+def test_an_empty_mask_leaves_no_blocks() -> None:
     with pytest.raises(InputError, match="no pixel was counted"):
-        count_blocks(Picture(np.zeros((9, 9, 3), np.uint8), Coded()))
+        count_blocks(CAT, mask=np.zeros(CAT.shape, bool))

@@ -110,7 +110,7 @@ def judge(difference: float, first: NoiseFloor, second: NoiseFloor) -> Judgement
 
 def _halve_pixels(counts: Counts, rng: np.random.Generator) -> tuple[Counts, Counts]:
     total = counts.sum(axis=0)
-    half = rng.multivariate_hypergeometric(total, int(total.sum()) // 2, method="marginals")
+    half = rng.binomial(total, 0.5)  # each pixel goes to one half or the other; exact at any number of pixels
     return half, total - half
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from itertools import pairwise
 
 import attrs
@@ -42,7 +43,7 @@ def count_blocks(source: PictureSource, *, mask: Mask | None = None, side: int =
         size: largest number of colours.
 
     Raises:
-        InputError: no pixel was counted that is not clipped in every channel.
+        InputError: no pixel was counted.
     """
     windows = _grid(source.shape, side)
     histograms = [_count_window(source, window, mask) for window in windows]
@@ -50,7 +51,7 @@ def count_blocks(source: PictureSource, *, mask: Mask | None = None, side: int =
     for histogram in histograms[1:]:
         joint = joint.merge(histogram)
     if joint.pixels == 0:
-        raise InputError("no pixel was counted; give a mask that leaves some that are not clipped")
+        return _clipped_blocks(source, histograms)
     colours = xyz_to_oklab(source.encoding.to_xyz(joint.codes()))
     shares = joint.counts / joint.pixels
     labels = group(colours, shares, size)
@@ -59,6 +60,14 @@ def count_blocks(source: PictureSource, *, mask: Mask | None = None, side: int =
     means = np.stack([np.bincount(labels, shares * colours[:, c], groups) / held for c in range(3)], axis=1)
     counts = [_by_group(histogram, joint, labels, groups) for histogram in histograms if histogram.pixels]
     return Blocks(means, np.stack(counts))
+
+
+def _clipped_blocks(source: PictureSource, histograms: Sequence[Histogram]) -> Blocks:
+    """Return blocks of black and white alone, as a palette of nothing but clipped pixels is made."""
+    counts = np.array([[part.black, part.white] for part in histograms if part.black + part.white])
+    if not counts.size:
+        raise InputError("no pixel was counted; give a mask that leaves some, or a picture with finite pixels")
+    return Blocks(xyz_to_oklab(source.encoding.to_xyz(np.array([[0.0] * 3, [1.0] * 3]))), counts)
 
 
 def _grid(shape: tuple[int, int], side: int) -> list[Window]:
