@@ -23,6 +23,7 @@ from hueferry.picture import Encoding
 _HEADER = 128
 _MOST_TAGS = 200
 _LARGEST = 64 << 20
+_ROUNDS = 12
 _PARAMETERS = (1, 3, 4, 5, 7)
 """Numbers of a parametric curve, by its type 0 … 4 (ICC.1:2022, clause 10.18)."""
 
@@ -86,10 +87,10 @@ class TabulatedEncoding:
 
     def from_xyz(self, xyz: Xyz) -> Codes:
         """Turn (n, 3) XYZ (D50) into codes: the profile's own inverse, refined until it undoes `to_xyz`."""
-        codes = np.clip(self._transform(xyz, _xyz_profile(), self.profile, ("xyz", "rgb")), 0.0, 1.0)
         wanted = xyz_to_oklab(xyz)
+        codes = self._first_guess(xyz, wanted)
         error = _distance(self._oklab(codes), wanted)
-        for _ in range(4):
+        for _ in range(_ROUNDS):
             better = np.clip(codes + self._newton(codes, wanted), 0.0, 1.0)
             new_error = _distance(self._oklab(better), wanted)
             gained = new_error < error
@@ -97,6 +98,15 @@ class TabulatedEncoding:
             if not gained.any():
                 break
         return codes
+
+    def _first_guess(self, xyz: Xyz, wanted: NDArray[np.float64]) -> Codes:
+        try:
+            return np.clip(self._transform(xyz, _xyz_profile(), self.profile, ("xyz", "rgb")), 0.0, 1.0)
+        except InputError:  # no table for the way back: the nearest of a grid of codes has to do
+            grid = np.stack(np.meshgrid(*[np.linspace(0, 1, 9)] * 3, indexing="ij"), axis=-1).reshape(-1, 3)
+            known = self._oklab(grid)
+            nearest = [np.argmin(((known - one) ** 2).sum(axis=1)) for one in wanted]
+            return np.asarray(grid[np.array(nearest)])
 
     def _newton(self, codes: Codes, wanted: NDArray[np.float64]) -> NDArray[np.float64]:
         step = 1e-3

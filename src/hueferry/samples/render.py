@@ -15,13 +15,12 @@ from hueferry.samples.shapes import FAR, Line, Rays, dot
 WINDOW_X = -2.6
 WINDOW_Y = (0.55, 2.35)
 WINDOW_Z = (0.35, 2.35)
-WINDOW_CELLS = 4
-"""The window is sampled on a grid of so many cells a side; every pixel takes its own points in some of them."""
+WINDOW_CELLS = 2
+"""The window is sampled on a grid of so many cells a side; every ray takes a point of its own in each."""
 
 DOOR_Z, DOOR_X, DOOR_Y = 4.2, (-0.9, 0.5), (0.9, 2.3)
 """A bright doorway behind the camera, seen only as a sheen in the glaze."""
 
-LIGHT_SAMPLES = 4
 _STRIP = 120_000
 
 
@@ -135,9 +134,8 @@ def _by_window(here: Rays, seen: Rays, smooth: Rays, surface: Surface, rng: np.r
     """Diffuse light of the window through its visible part, and its mirror image in the glaze."""
     start = here + smooth * np.float32(2e-3)
     total = np.zeros(len(here), np.float32)
-    cells = rng.permutation(WINDOW_CELLS**2)[:LIGHT_SAMPLES]
-    for cell in cells:
-        target = _on_window(len(here), int(cell), rng)
+    for cell in range(WINDOW_CELLS**2):
+        target = _on_window(len(here), cell, rng)
         to = target - start
         distance = np.sqrt(dot(to, to))
         to /= distance[:, None]
@@ -148,7 +146,7 @@ def _by_window(here: Rays, seen: Rays, smooth: Rays, surface: Surface, rng: np.r
         visible[lit] = _visible(start[lit], to[lit], distance[lit])
         total += facing * leaving * visible / distance**2
     area = (WINDOW_Y[1] - WINDOW_Y[0]) * (WINDOW_Z[1] - WINDOW_Z[0])
-    diffuse = surface.albedo * (total * np.float32(area / np.pi / LIGHT_SAMPLES * 9))[:, None]
+    diffuse = surface.albedo * (total * np.float32(area / np.pi / WINDOW_CELLS**2 * 9))[:, None]
     return diffuse + _mirrored_window(start, seen, surface)[:, None]
 
 
