@@ -145,6 +145,21 @@ def test_estimated_limits_alarm_as_rarely_as_known_ones() -> None:
     assert float(np.mean(distance > 3 * deviation)) > 0.01
 
 
+def test_estimated_limits_of_averages_allow_for_the_error_of_the_centre() -> None:
+    """By simulation: an average of 12 new readings against 12 old ones is beyond about as rarely as at three deviations.
+
+    Its variance is 1/12, and the centre's error has the same: limits without the latter would be too narrow by √2.
+    """
+    rng = np.random.default_rng(0)
+    series = rng.normal(size=(40_000, 24))
+    deviation = np.abs(np.diff(series[:, :12], axis=1)).mean(axis=1) / m.range_constants(2).d2
+    distance = np.abs(series[:, 12:].mean(axis=1) - series[:, :12].mean(axis=1))
+
+    share = float(np.mean(distance > deviation * m.Level(0.0, 1.0, 12).width(1 / 12)))
+
+    assert 0.0013 < share < 0.0050
+
+
 @pytest.mark.parametrize("call", [lambda: m.range_constants(1), lambda: m.estimate_level(np.array([1.0]))])
 def test_one_reading_has_no_limits(call) -> None:
     with pytest.raises(InputError, match=r"at least 2|two readings"):
