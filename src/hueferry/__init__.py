@@ -14,7 +14,7 @@ The verbs are loaded when they are first used, so importing the package costs ne
 from __future__ import annotations
 
 from importlib import import_module
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from hueferry.api import apply, cost, fit, match, palette, read, report, write
@@ -64,8 +64,9 @@ __all__ = [
 ]
 
 
-def __getattr__(name: str) -> Any:
+def __getattr__(name: str) -> object:
     """Load a verb or a type when it is first asked for."""
     if name not in _HOMES:
         raise AttributeError(f"module 'hueferry' has no attribute {name!r}")
-    return getattr(import_module(_HOMES[name]), name)
+    value: object = getattr(import_module(_HOMES[name]), name)
+    return value

@@ -195,7 +195,19 @@ def match_files(order: MatchOrder, *, on_done: OnDone | None = None) -> Record:
     run = match_pictures(order, on_done=on_done)
     if run.thumbnails:
         write_contact_sheet(run.thumbnails, order.out)
+        report(order.out)
     return run.record
+
+
+def report(folder: PathLike) -> Path:
+    """Rebuild the report page of a run from its record, and return its path.
+
+    Raises:
+        InputError: there is no record in the folder.
+    """
+    from hueferry.reports.page import write_report
+
+    return write_report(Path(folder))
 
 
 def cost_table(paths: Sequence[Path]) -> dict[str, Any]:

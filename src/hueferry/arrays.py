@@ -8,7 +8,7 @@ from __future__ import annotations
 from typing import Any, TypeAlias
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 Colours: TypeAlias = NDArray[np.float64]
 """(n, 3) colours in a working space: Oklab L, a, b for pictures (L 0 … 1), optical density for slides."""
@@ -35,13 +35,16 @@ Mask: TypeAlias = NDArray[np.bool_]
 """(height, width), true where a pixel counts."""
 
 Pixels: TypeAlias = NDArray[Any]
-"""(height, width, channels) in native depth: uint8, uint16 or float32; channels 1 gray, 2 gray + alpha, 3 RGB, 4 RGBA."""
+"""(height, width, channels) in native depth: uint8, uint16 or float32.
+
+Channels: 1 gray, 2 gray and alpha, 3 RGB, 4 RGBA.
+"""
 
 Lattice: TypeAlias = NDArray[np.float32]
 """(n, n, n, 3) output codes at the nodes of a table, indexed [red, green, blue]."""
 
 
-def read_only(array: Any) -> NDArray[np.float64]:
+def read_only(array: ArrayLike) -> NDArray[np.float64]:
     """Make a private float64 copy that nobody can write to."""
     copy = np.array(array, dtype=np.float64, copy=True, order="C")
     copy.flags.writeable = False

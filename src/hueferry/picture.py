@@ -56,6 +56,10 @@ def strips(shape: tuple[int, int], rows: int) -> Iterator[Window]:
         yield Window(top, 0, min(rows, height - top), width)
 
 
+def _frozen(mapping: Mapping[str, object]) -> Mapping[str, object]:
+    return MappingProxyType(dict(mapping))
+
+
 @attrs.frozen
 class Metadata:
     """What a file says besides its pixels, byte for byte.
@@ -75,7 +79,7 @@ class Metadata:
     xmp: bytes = b""
     iptc: bytes = b""
     orientation: int = 1
-    container: Mapping[str, object] = attrs.field(factory=dict, converter=lambda d: MappingProxyType(dict(d)))
+    container: Mapping[str, object] = attrs.field(factory=dict, converter=_frozen)
 
 
 def _native(array: Pixels) -> Pixels:
@@ -125,7 +129,7 @@ class Picture:
     @property
     def is_gray(self) -> bool:
         """Whether there is one colour channel only."""
-        return self.pixels.shape[2] <= 2
+        return int(self.pixels.shape[2]) <= 2
 
     @property
     def top_code(self) -> float:

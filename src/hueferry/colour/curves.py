@@ -54,7 +54,7 @@ class Parametric:
         magnitude = np.abs(np.asarray(codes, dtype=np.float64))
         power = np.maximum(self.a * magnitude + self.b, 0.0) ** self.gamma + self.e
         linear = np.where(magnitude >= self.d, power, self.c * magnitude + self.f)
-        return np.copysign(linear, codes)
+        return np.asarray(np.copysign(linear, codes))
 
     def encode(self, linear: NDArray[Any]) -> Values:
         """Turn linear light into codes; light between the two pieces of a curve with a jump goes to the joint."""
@@ -64,11 +64,15 @@ class Parametric:
             joint = (self.a * self.d + self.b) ** self.gamma + self.e
             below = (magnitude - self.f) / self.c if self.c > 0 else np.zeros_like(magnitude)
             codes = np.where(magnitude >= joint, codes, np.clip(below, 0.0, self.d))
-        return np.copysign(np.maximum(codes, 0.0), linear)
+        return np.asarray(np.copysign(np.maximum(codes, 0.0), linear))
 
 
 SRGB_CURVE = Parametric(2.4, 1 / 1.055, 0.055 / 1.055, 1 / 12.92, 0.04045)
 """IEC 61966-2-1."""
+
+
+def _risen(samples: Values) -> Values:
+    return np.asarray(np.maximum.accumulate(np.asarray(samples, dtype=np.float64)))
 
 
 @attrs.frozen(eq=False)
@@ -79,7 +83,7 @@ class Sampled:
         samples: (k,) linear light, k >= 2; made to rise, so that it can be inverted.
     """
 
-    samples: Values = attrs.field(converter=lambda values: np.maximum.accumulate(np.asarray(values, dtype=np.float64)))
+    samples: Values = attrs.field(converter=_risen)
 
     def __attrs_post_init__(self) -> None:
         if self.samples.ndim != 1 or len(self.samples) < 2 or not np.isfinite(self.samples).all():
@@ -93,7 +97,7 @@ class Sampled:
         steps = np.linspace(0.0, 1.0, len(self.samples))
         linear = np.interp(magnitude, steps, self.samples)
         linear = linear + np.maximum(magnitude - 1.0, 0.0) * self._last_slope()
-        return np.copysign(linear, codes)
+        return np.asarray(np.copysign(linear, codes))
 
     def encode(self, linear: NDArray[Any]) -> Values:
         """Turn linear light into codes; on a flat piece, the first code."""
@@ -102,7 +106,7 @@ class Sampled:
         steps = np.linspace(0.0, 1.0, len(self.samples))[rising]
         codes = np.interp(magnitude, self.samples[rising], steps)
         codes = codes + np.maximum(magnitude - self.samples[-1], 0.0) / self._last_slope()
-        return np.copysign(codes, linear)
+        return np.asarray(np.copysign(codes, linear))
 
     def _last_slope(self) -> float:
         rising = np.flatnonzero(np.diff(self.samples) > 0)[-1]

@@ -46,7 +46,7 @@ def compress(colours: Colours, encoding: Encoding, *, source: Colours | None = N
         chroma at its sharpest corners. Colours that are no nearer to the edge than their source, or than the knee,
         come back as they are.
     """
-    edge = _edge_of(encoding)
+    edge = _edge_of(_ByIdentity(encoding))
     lightness_knee, knee = np.full(len(colours), LIGHTNESS_KNEE), np.full(len(colours), KNEE)
     if source is not None:
         lightness_knee = np.maximum(lightness_knee, source[:, 0] / edge.white)
@@ -82,9 +82,20 @@ class _Edge:
         return np.asarray(np.hypot(colours[:, 1], colours[:, 2]) / np.maximum(low * (1 - u) + high * u, _EDGE))
 
 
+@attrs.frozen(eq=True, hash=False)
+class _ByIdentity:
+    """An encoding as the key of a cache: two are the same if they are one object."""
+
+    encoding: Encoding = attrs.field(eq=id)
+
+    def __hash__(self) -> int:
+        return id(self.encoding)
+
+
 @lru_cache(maxsize=16)
-def _edge_of(encoding: Encoding) -> _Edge:
+def _edge_of(key: _ByIdentity) -> _Edge:
     """Find the edge of an encoding's gamut by bisection along chroma; once for each encoding."""
+    encoding = key.encoding
     white = float(xyz_to_oklab(encoding.to_xyz(np.ones((1, 3))))[0, 0])
     lightness = np.linspace(0.0, white, _LEVELS)
     hue = np.linspace(0.0, 2 * np.pi, _HUES, endpoint=False)

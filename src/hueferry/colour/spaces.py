@@ -55,9 +55,9 @@ _CONES_TO_OKLAB: Matrix = np.array(
         [0.0259040371, 0.7827717662, -0.8086757660],
     ]
 )
-_OKLAB_TO_CONES: Matrix = np.linalg.inv(_CONES_TO_OKLAB)
-_CONES_TO_SRGB: Matrix = np.linalg.inv(_SRGB_TO_CONES)
-_XYZ_D50_TO_SRGB: Matrix = np.linalg.inv(SRGB_TO_XYZ_D50)
+_OKLAB_TO_CONES: Matrix = np.asarray(np.linalg.inv(_CONES_TO_OKLAB), dtype=np.float64)
+_CONES_TO_SRGB: Matrix = np.asarray(np.linalg.inv(_SRGB_TO_CONES), dtype=np.float64)
+_XYZ_D50_TO_SRGB: Matrix = np.asarray(np.linalg.inv(SRGB_TO_XYZ_D50), dtype=np.float64)
 
 
 def linear_srgb_to_oklab(linear: Linear) -> Colours:

@@ -106,9 +106,9 @@ def write_tiff(pixels: Pixels, metadata: Metadata, profile: bytes | None) -> byt
     import tifffile
 
     facts = metadata.container if metadata.format == "tiff" else {}
-    compression = facts.get("compression", "zlib") or None
+    compression: Any = facts.get("compression", "zlib") or None
     compression = "zlib" if compression == "jpeg" else compression
-    extra = [(_XMP, _BYTE, len(metadata.xmp), metadata.xmp, True)] if metadata.xmp else []
+    extra: list[Any] = [(_XMP, _BYTE, len(metadata.xmp), metadata.xmp, True)] if metadata.xmp else []
     extra += [(_IPTC, _UNDEFINED, len(metadata.iptc), metadata.iptc, True)] if metadata.iptc else []
     extra += [(_ORIENTATION, _SHORT, 1, metadata.orientation, True)] if metadata.orientation != 1 else []
     texts = facts.get("texts")
@@ -117,6 +117,7 @@ def write_tiff(pixels: Pixels, metadata: Metadata, profile: bytes | None) -> byt
         if isinstance(texts, tuple)
         else []
     )
+    tile: Any = facts.get("tile")
     resolution: Any = facts.get("resolution")
     channels = pixels.shape[2]
     buffer = io.BytesIO()
@@ -128,8 +129,8 @@ def write_tiff(pixels: Pixels, metadata: Metadata, profile: bytes | None) -> byt
         extrasamples=["unassalpha"] if channels in (2, 4) else None,
         compression=compression,
         predictor=bool(facts.get("predictor", True)) if compression in ("zlib", "lzw", "zstd") else None,
-        tile=facts.get("tile"),
-        rowsperstrip=None if facts.get("tile") else max(1, (1 << 20) // max(pixels[0].nbytes, 1)),
+        tile=tile,
+        rowsperstrip=None if tile else max(1, (1 << 20) // max(pixels[0].nbytes, 1)),
         resolution=None if resolution is None else resolution[:2],
         resolutionunit=None if resolution is None else resolution[2],
         iccprofile=profile,

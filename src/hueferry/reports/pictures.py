@@ -92,6 +92,6 @@ def largest_change(before: Picture, after: Picture) -> Window:
 
 
 def _address(pixels: np.ndarray[Any, Any]) -> str:
-    from hueferry.files.encode import jpeg_bytes
+    from hueferry.files.jpeg import jpeg_bytes
 
     return "data:image/jpeg;base64," + base64.b64encode(jpeg_bytes(pixels, quality=86)).decode("ascii")

@@ -2,15 +2,15 @@
 
 from __future__ import annotations
 
-from typing import Protocol
+from typing import Any, Protocol
 
 import attrs
 import numpy as np
 from numpy.typing import NDArray
 
-Rays = NDArray[np.float32]
+Rays = NDArray[np.floating[Any]]
 """(n, 3) origins or directions."""
-Line = NDArray[np.float32]
+Line = NDArray[np.floating[Any]]
 
 FAR = np.float32(1e9)
 _NEAR = np.float32(1e-4)

@@ -28,7 +28,7 @@ def smooth_noise(u: Field, v: Field, *, seed: int, octaves: int = 4) -> Field:
         total += size * (2 * (low * (1 - fy) + high * fy) - 1)
         reach += size
         size /= 2
-    return total / np.float32(reach)
+    return np.asarray(total / np.float32(reach), dtype=np.float32)
 
 
 def cracks(u: Field, v: Field, *, seed: int) -> Field:
@@ -42,7 +42,7 @@ def cracks(u: Field, v: Field, *, seed: int) -> Field:
             distance = np.hypot(u - px, v - py).astype(np.float32)
             second = np.minimum(second, np.maximum(first, distance))
             first = np.minimum(first, distance)
-    return np.clip(1 - (second - first) / np.float32(0.05), 0, 1)
+    return np.asarray(np.clip(1 - (second - first) / np.float32(0.05), 0, 1))
 
 
 def wood(u: Field, v: Field) -> Field:
@@ -52,5 +52,4 @@ def wood(u: Field, v: Field) -> Field:
     bend = smooth_noise(u * 1.3 + shift, v * 5, seed=3, octaves=3)
     rings = 0.5 + 0.5 * np.sin((v * 60 + bend * 5 + shift) * 2)
     pores = smooth_noise(u * 14 + shift, v * 420, seed=9, octaves=2)
-    gap = np.clip(1 - np.abs(v / 0.24 - plank - 0.5) / -0.5 - 1.985, 0, 1)
-    return np.clip(0.34 * rings + 0.3 * np.clip(pores, 0, 1) + 0.25 * bend + 0.2 + gap * 0, 0, 1)
+    return np.asarray(np.clip(0.34 * rings + 0.3 * np.clip(pores, 0, 1) + 0.25 * bend + 0.2, 0, 1))

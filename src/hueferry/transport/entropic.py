@@ -5,6 +5,8 @@ Convention: min ⟨P, C⟩ + ε KL(P | a ⊗ b), and P_ij = a_i b_j exp((f_i + g
 
 from __future__ import annotations
 
+from typing import Any
+
 import attrs
 import numpy as np
 from numpy.typing import NDArray
@@ -111,7 +113,7 @@ def entropic_potentials(
     return Potentials(_everywhere(f, rows), _everywhere(g, columns), misplaced, spent)
 
 
-def soft_minimum(cost: Costs, potential: Potential, weights: Weights, epsilon: float) -> Potential:
+def soft_minimum(cost: NDArray[Any], potential: Potential, weights: Weights, epsilon: float) -> Potential:
     """Return −ε log Σ_j w_j exp((g_j − C_ij) / ε) for every row i, in the log domain.
 
     This is the soft c-transform; it extends a potential to any point (Peyré & Cuturi 2019, section 5.3).
@@ -119,7 +121,9 @@ def soft_minimum(cost: Costs, potential: Potential, weights: Weights, epsilon: f
     exponent = (potential[None, :].astype(cost.dtype) - cost) / cost.dtype.type(epsilon)
     peak = exponent.max(axis=1)
     np.exp(exponent - peak[:, None], out=exponent)
-    return -epsilon * (peak.astype(np.float64) + np.log((exponent @ weights.astype(cost.dtype)).astype(np.float64)))
+    return np.asarray(
+        -epsilon * (peak.astype(np.float64) + np.log((exponent @ weights.astype(cost.dtype)).astype(np.float64)))
+    )
 
 
 def _levels(largest: float, epsilon: float) -> list[float]:
@@ -138,7 +142,7 @@ def _everywhere(potential: Potential, kept: NDArray[np.bool_]) -> Potential:
 
 
 def _iterate(
-    a: Weights, b: Weights, cost: Costs, g: Potential, *, epsilon: float, tolerance: float, iterations: int
+    a: Weights, b: Weights, cost: NDArray[Any], g: Potential, *, epsilon: float, tolerance: float, iterations: int
 ) -> tuple[Potential, Potential, float, int]:
     """Scale rows and columns at one ε until the rows are right; columns are exact after every round."""
     f = soft_minimum(cost, g, b, epsilon)
@@ -160,7 +164,7 @@ def _iterate(
     return f + epsilon * np.log(u), g + epsilon * np.log(v), misplaced, iterations
 
 
-def _kernel(cost: Costs, f: Potential, g: Potential, a: Weights, b: Weights, epsilon: float) -> Costs:
+def _kernel(cost: NDArray[Any], f: Potential, g: Potential, a: Weights, b: Weights, epsilon: float) -> NDArray[Any]:
     """Return the coupling that the potentials give; scaling it keeps its numbers near 1."""
     kind = cost.dtype.type
     kernel = np.exp((f.astype(kind)[:, None] + g.astype(kind)[None, :] - cost) / kind(epsilon))
