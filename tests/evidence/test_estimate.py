@@ -8,14 +8,8 @@ from hueferry.evidence.camera import NAMES, CameraMap
 from hueferry.evidence.estimate import expected_error, fit_camera, lacking
 from hueferry.evidence.prior import no_change
 
-PLANTED = CameraMap(
-    np.array(
-        [
-            {"gain_red": 0.3, "gain_green": 0.15, "gain_blue": 0.0, "chroma": -0.2, "turn": 0.1, "power": 0.1}.get(name, 0.0)
-            for name in NAMES
-        ]
-    )
-)
+_CHANGES = {"gain_red": 0.3, "gain_green": 0.15, "chroma": -0.2, "turn": 0.1, "power": 0.1}
+PLANTED = CameraMap(np.array([_CHANGES.get(name, 0.0) for name in NAMES]))
 
 
 def colours(count: int, seed: int) -> np.ndarray:
@@ -25,9 +19,7 @@ def colours(count: int, seed: int) -> np.ndarray:
 def test_a_planted_change_comes_back() -> None:
     source = colours(800, 0)
 
-    estimate = fit_camera(
-        source, PLANTED(source), weights=np.ones(800), prior=no_change(), effective=800.0
-    )
+    estimate = fit_camera(source, PLANTED(source), weights=np.ones(800), prior=no_change(), effective=800.0)
 
     fresh = colours(200, 1)
     assert np.linalg.norm(estimate.map(fresh) - PLANTED(fresh), axis=1).max() < 0.004

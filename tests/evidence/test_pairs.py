@@ -3,8 +3,8 @@
 import cv2
 import numpy as np
 import pytest
-from evidence.scenes import picture_of, relit, textured
 
+from evidence.scenes import picture_of, relit, textured
 from hueferry.evidence.keypoints import match
 from hueferry.evidence.pairs import Pairs, find_homography, find_pairs
 from hueferry.evidence.reduced import Reduced, reduce_picture

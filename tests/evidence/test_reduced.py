@@ -3,8 +3,8 @@
 import cv2
 import numpy as np
 import pytest
-from evidence.scenes import picture_of, textured
 
+from evidence.scenes import picture_of, textured
 from hueferry.colour.encoding import SRGB
 from hueferry.errors import InputError
 from hueferry.evidence.reduced import reduce_picture

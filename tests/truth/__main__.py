@@ -13,6 +13,7 @@ from truth.methods import METHODS
 from truth.pictures import HELD, TUNED
 from truth.run import as_text, run
 from truth.score import Score, summarise
+from truth.show import case_row, write_rows
 
 SETS = {"tuned": TUNED, "held": HELD, "all": TUNED + HELD}
 
@@ -28,6 +29,9 @@ def _arguments() -> argparse.Namespace:
     parser.add_argument("--camera", choices=sorted(CAMERAS), default="own", help="whose rendering the grades are of")
     parser.add_argument("--pixels", type=int, default=20_000, help="pixels compared a case; 0 for all")
     parser.add_argument("--json", type=Path, help="write every score here")
+    parser.add_argument(
+        "--picture", type=Path, help="write a picture of the first case of each group here, under agree"
+    )
     parser.add_argument("--show", action="store_true", help="print every case")
     return parser.parse_args()
 
@@ -38,6 +42,19 @@ def _names(choice: str) -> tuple[str, ...]:
     return tuple(
         str(path) for path in sorted(Path(choice).iterdir()) if path.suffix.lower() in (".jpg", ".jpeg", ".png")
     )
+
+
+def write_picture(options: argparse.Namespace, groups: list[str], path: Path) -> None:
+    """Draw the first case of every group."""
+    names = _names(options.pictures)
+    rows = []
+    for group in groups:
+        cases = make_cases(
+            names, groups=[group], seeds=[options.first_seed], long_side=options.long_side, camera=options.camera
+        )
+        case = next(iter(cases))
+        rows.append(case_row(case, METHODS["agree"](case.source, case.reference)[0]))
+    write_rows(rows, path)
 
 
 def main() -> None:
@@ -54,6 +71,8 @@ def main() -> None:
             print(f"{score.group:>9} {Path(score.name).name:<28} {score.seed:>5} {score.method:>10} "  # noqa: T201
                   f"{score.none:6.2f} → {score.score:6.2f}  {score.note}", flush=True)  # fmt: skip
     print(as_text(summarise(scores), groups, methods))  # noqa: T201
+    if options.picture:
+        write_picture(options, groups, options.picture)
     if options.json:
         options.json.write_text(json.dumps([attrs.asdict(score) for score in scores], indent=1), encoding="utf-8")
 

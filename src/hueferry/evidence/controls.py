@@ -11,6 +11,7 @@ from hueferry.maps.protocol import Map
 
 _LEVELS = np.linspace(0.0, 1.25, 501)
 
+
 @attrs.frozen(eq=False)
 class NeutralAxis:
     """A map less the colour that it gives to neutrals, as far as `keep` says at each lightness.

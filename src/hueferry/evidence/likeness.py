@@ -25,13 +25,13 @@ from hueferry.evidence.witness import Witness
 CAUTION = 3.0
 """What the content covariance counts for: halves of one picture have more in common than two pictures of one scene."""
 
-STRANGE, SHARP = 0.92, 0.02
-"""Likeness, as a share of that of halves, at which two pictures are as likely strangers as one scene; and its slope."""
+STRANGE, SHARP = 0.82, 0.02
+"""Likeness, as a share of the halves' own, at which strangers are as likely as one scene; and the slope of that."""
 
 LEAST_TRUST = 0.3
 """Chance of one scene below which nothing is said."""
 
-DOUBT = 0.35
+DOUBT = 0.25
 """Share of the squared content error that a change must exceed to be acted on; it is taken off what is found."""
 
 LEAST_MOVE = 0.5
@@ -45,11 +45,10 @@ def hear_palettes(source: Reduced, reference: Reduced, prior: Prior) -> Witness:
     if min(len(source.scene), len(reference.scene)) < FEWEST:
         return silent("too little of the pictures is left to compare once clipped and masked pixels are out")
     spread = min(float(scene.colours.std(axis=0).max()) for scene in (source.scene, reference.scene))
-    usual = min(source.content.likeness, reference.content.likeness)
-    if spread < 0.005 or usual <= 0:
+    usual = max(source.content.likeness, reference.content.likeness)
+    if spread < 0.005 or not usual:
         return silent("a picture of one flat colour does not tell light from content")
     found = register(source.scene, reference.scene, prior)
-    usual = (source.content.likeness + reference.content.likeness) / 2
     ratio = explained(source.scene, reference.scene, found) / usual
     trust = 1 / (1 + exp(min((STRANGE - ratio) / SHARP, 700.0)))
     if trust < LEAST_TRUST:

@@ -74,7 +74,7 @@ def _step(
 def explained(source: Scene, reference: Scene, parameters: Parameters) -> float:
     """Return how much of each picture the other one has under `parameters`, 0 … 1; the smaller of the two shares."""
     rendered = render(parameters, oklab_to_linear_srgb(source.colours))
-    kernel = _texture_kernel(source, reference, 0.5) * _colour_kernel(rendered, reference.colours, 0.035)
+    kernel = _texture_kernel(source, reference, 0.5) * _colour_kernel(rendered, reference.colours, 0.025)
     here, there = 100 * kernel.mean(axis=1), 100 * kernel.mean(axis=0)
     return float(min((here / (here + 1)).mean(), (there / (there + 1)).mean()))
 
