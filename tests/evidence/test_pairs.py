@@ -4,7 +4,7 @@ import cv2
 import numpy as np
 import pytest
 
-from evidence.scenes import picture_of, relit, textured
+from evidence.scenes import CAST, picture_of, relit, textured
 from hueferry.evidence.keypoints import match
 from hueferry.evidence.pairs import Pairs, find_homography, find_pairs
 from hueferry.evidence.reduced import Reduced, reduce_picture
@@ -38,7 +38,7 @@ def test_pairs_hold_the_colours_of_the_same_surface() -> None:
 
     light = oklab_to_linear_srgb(pairs.source)
     unclipped = ~(pairs.low | pairs.high).any(axis=1)
-    wanted = linear_srgb_to_oklab(light * np.array([1.25, 1.0, 0.8]) * 0.85)
+    wanted = linear_srgb_to_oklab(light * CAST)
     error = np.linalg.norm(pairs.reference - wanted, axis=1)[unclipped]
     assert np.median(error) < 0.004
     assert np.quantile(error, 0.95) < 0.02

@@ -7,9 +7,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, read_only
+from hueferry.colour.difference import delta_e_2000
+from hueferry.colour.spaces import oklab_to_lab
 from hueferry.maps.protocol import Map
 
 _LEVELS = np.linspace(0.0, 1.25, 501)
+
+_CELL = 0.02
+"""Side of the Oklab cells that held colours are gathered in."""
 
 
 @attrs.frozen(eq=False)
@@ -70,24 +75,30 @@ class HeldColours:
         colours = np.asarray(colours, dtype=np.float64)
         carried = self.inner(colours)
         free = np.ones(len(colours))
-        for start in range(0, len(colours), 8192):
-            part = slice(start, start + 8192)
-            squared = ((colours[part, None, :] - self.centres[None]) ** 2).sum(axis=2).min(axis=1)
-            free[part] = 1 - (1 - self.slack) * np.exp(-np.maximum(squared - 0.01**2, 0) / (2 * self.reach**2))
+        for start in range(0, len(colours), 2048):
+            part = slice(start, start + 2048)
+            near = (self.centres**2).sum(axis=1) - 2 * colours[part] @ self.centres.T
+            squared = (colours[part] ** 2).sum(axis=1) + near.min(axis=1)
+            free[part] = 1 - (1 - self.slack) * np.exp(-np.maximum(squared - _CELL**2 * 3, 0) / (2 * self.reach**2))
         return colours + free[:, None] * (carried - colours)
 
 
 def hold_colours(inner: Map, colours: Colours, *, limit: float) -> Map:
-    """Hold (n, 3) Oklab `colours`: none of them moves more than `limit` ΔE00 on average of its neighbourhood."""
-    from hueferry.colour.difference import delta_e_2000
-    from hueferry.colour.spaces import oklab_to_lab
-
+    """Return `inner` so weakened around (n, 3) Oklab `colours` that none of them moves more than `limit` ΔE00."""
     if not len(colours):
         return inner
-    _, first = np.unique(np.floor(colours / 0.02), axis=0, return_index=True)
-    centres = colours[first[: min(len(first), 512)]] if len(first) <= 512 else colours[first[:: len(first) // 512 + 1]]
-    moved = float(delta_e_2000(oklab_to_lab(inner(centres)), oklab_to_lab(centres)).max())
-    return inner if moved <= limit else HeldColours(inner, centres, slack=min(1.0, limit / moved))
+    moved = _farthest(inner, colours)
+    if moved <= limit:
+        return inner
+    _, first = np.unique(np.floor(colours / _CELL), axis=0, return_index=True)
+    centres = colours[first]
+    held: Map = HeldColours(inner, centres, slack=limit / moved)
+    return held if _farthest(held, colours) <= limit else HeldColours(inner, centres, slack=0.0)
+
+
+def _farthest(map_: Map, colours: Colours) -> float:
+    """Return the largest ΔE00 that (n, 3) `colours` move by."""
+    return float(delta_e_2000(oklab_to_lab(map_(colours)), oklab_to_lab(colours)).max())
 
 
 @attrs.frozen(eq=False)
