@@ -22,6 +22,7 @@ from hueferry.evidence.refine import refine
 from hueferry.evidence.testimony import hear
 from hueferry.evidence.witness import Verdict, Witness, combine
 from hueferry.maps.protocol import Map
+from hueferry.palettes.palette import Palette
 from hueferry.picture import Picture
 
 HOLD_LIMIT = 1.0
@@ -33,7 +34,7 @@ _SAMPLE = 500
 
 def agree(
     source: Picture | Reduced,
-    references: Sequence[Picture | Reduced],
+    references: Sequence[Picture | Reduced | Palette],
     *,
     keep_neutrals: bool = False,
     only: Literal["tone", "chroma"] | str | None = None,
@@ -45,7 +46,7 @@ def agree(
 
     Args:
         source: the picture to correct, or its reduced form (then `mask` has been taken account of already).
-        references: what it is brought towards, at least one.
+        references: what it is brought towards, at least one: pictures, reduced forms, or palettes alone.
         keep_neutrals: leave the gray axis without colour.
         only: "tone" or "chroma" to correct that part alone.
         hold: (height, width) of the source, true where colours must not move more than `HOLD_LIMIT`.
@@ -64,17 +65,17 @@ def agree(
     if only is not None and only not in _ONLY:
         raise InputError(f"only the tone or the chroma can be corrected alone, not {only!r}")
     ours = source if isinstance(source, Reduced) else reduce_picture(source, mask=mask)
-    theirs = [ref if isinstance(ref, Reduced) else reduce_picture(ref) for ref in references]
+    theirs = [reduce_picture(ref) if isinstance(ref, Picture) else ref for ref in references]
     sample = _sample(ours.colours, seed)
     if not len(sample):
         return _nothing("nothing of the picture counts: every pixel is masked, transparent or not finite", len(theirs))
-    priors = [no_change(source_exposure=ours.exposure, reference_exposure=their.exposure) for their in theirs]
+    priors = [no_change(source_exposure=ours.exposure, reference_exposure=_exposure(their)) for their in theirs]
     witnesses = [hear(ours, their, prior) for their, prior in zip(theirs, priors, strict=True)]
     prior = priors[0] if len(theirs) == 1 else no_change()
     if all(witness.basis is Basis.NONE for witness in witnesses):
         return _nothing(witnesses[0].reason, len(theirs), witnesses=witnesses, error=_left(witnesses, prior, sample))
     verdict = combine(witnesses, prior, sample)
-    if only is None and (ours.is_gray or all(their.is_gray for their in theirs)):
+    if only is None and (ours.is_gray or all(_is_gray(their) for their in theirs)):
         only = "tone"
     map_ = _controlled(_refined(verdict, witnesses, sample), ours, keep_neutrals=keep_neutrals, only=only, hold=hold)
     return map_, _evidence(map_, verdict, witnesses, sample, _stops(ours, theirs))
@@ -133,8 +134,18 @@ def _sample(colours: Colours, seed: int) -> Colours:
     return colours[np.random.default_rng(seed).choice(len(colours), _SAMPLE, replace=False)]
 
 
-def _stops(ours: Reduced, theirs: Sequence[Reduced]) -> float | None:
-    known = [their.exposure for their in theirs if their.exposure is not None]
+def _exposure(reference: Reduced | Palette) -> float | None:
+    return reference.exposure if isinstance(reference, Reduced) else None
+
+
+def _is_gray(reference: Reduced | Palette) -> bool:
+    if isinstance(reference, Reduced):
+        return reference.is_gray
+    return bool(np.abs(reference.colours[:, 1:]).max() < 0.01)
+
+
+def _stops(ours: Reduced, theirs: Sequence[Reduced | Palette]) -> float | None:
+    known = [exposure for exposure in map(_exposure, theirs) if exposure is not None]
     return None if ours.exposure is None or not known else float(ours.exposure - np.mean(known))
 
 

@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, Mask, Weights, read_only
+from hueferry.palettes.palette import Palette
 
 PATCHES = 340
 """Patches of a picture, about."""
@@ -94,6 +95,30 @@ def scene_of(oklab: NDArray[np.float32], counted: Mask, *, patches: int = PATCHE
     )
     whole = share > 0.5
     return Scene(mean[whole], np.stack(textures, axis=2)[whole], np.stack([rows, columns], axis=2)[whole])
+
+
+def scene_of_pixels(oklab: NDArray[np.float32], counted: Mask) -> Scene:
+    """Draw `PATCHES` single pixels of (height, width, 3) `oklab`, where `counted`, as patches without texture."""
+    rows, columns = np.nonzero(counted)
+    if len(rows) > PATCHES:
+        drawn = np.sort(np.random.default_rng(0).choice(len(rows), PATCHES, replace=False))
+        rows, columns = rows[drawn], columns[drawn]
+    places = np.stack([(rows + 0.5) / counted.shape[0], (columns + 0.5) / counted.shape[1]], axis=1)
+    return Scene(oklab[rows, columns], np.zeros((len(rows), 2)), places)
+
+
+def scene_of_palette(palette: Palette) -> Scene:
+    """Draw `PATCHES` colours of a palette, each as often as its weight says, as patches without texture or place.
+
+    Colours at the ends of the range are left out: they may have been clipped.
+    """
+    inside = (palette.colours[:, 0] > 0.03) & (palette.colours[:, 0] < 0.985)
+    weights = palette.weights * inside
+    if weights.sum() <= 0:
+        return Scene(np.empty((0, 3)), np.empty((0, 2)), np.empty((0, 2)))
+    steps = (np.arange(PATCHES) + 0.5) / PATCHES * weights.sum()
+    drawn = np.minimum(np.searchsorted(np.cumsum(weights), steps), len(weights) - 1)
+    return Scene(palette.colours[drawn], np.zeros((PATCHES, 2)), np.full((PATCHES, 2), 0.5))
 
 
 def _variance(oklab: NDArray[np.float32]) -> NDArray[np.float32]:

@@ -10,12 +10,13 @@ from hueferry.colour.difference import delta_e_2000
 from hueferry.colour.spaces import oklab_to_lab
 from hueferry.evidence.estimate import Estimate, fit_camera
 from hueferry.evidence.evidence import Basis
-from hueferry.evidence.likeness import hear_palettes
+from hueferry.evidence.likeness import hear_palettes, hear_saved_palette
 from hueferry.evidence.pairs import Pairs, find_pairs
 from hueferry.evidence.prior import Prior
 from hueferry.evidence.reduced import Reduced
 from hueferry.evidence.refine import WIDTHS, Correction, fit_correction
 from hueferry.evidence.witness import Witness
+from hueferry.palettes.palette import Palette
 
 PER_BLOCK = 40.0
 """Independent pairs that one block of the picture is worth at most: neighbours err alike."""
@@ -29,8 +30,10 @@ LEAST_REFINEMENT = 0.03
 Errors = NDArray[np.float64]
 
 
-def hear(source: Reduced, reference: Reduced, prior: Prior) -> Witness:
+def hear(source: Reduced, reference: Reduced | Palette, prior: Prior) -> Witness:
     """Hear what `reference` says about the change from `source` to it."""
+    if isinstance(reference, Palette):
+        return hear_saved_palette(source, reference, prior)
     pairs = find_pairs(source, reference)
     if pairs is not None:
         witness = hear_pairs(pairs, prior)
