@@ -12,15 +12,12 @@ from hueferry.maps.compose import Partial
 from hueferry.maps.protocol import Map
 from hueferry.palettes.palette import Palette
 from hueferry.picture import Encoding
-from hueferry.tables.build import SIZES, build_table, code_function
 from hueferry.tables.cells import Occupied
-from hueferry.tables.certificate import Certificate, certify
+from hueferry.tables.certificate import Certificate
 from hueferry.tables.lookup import look_up
-from hueferry.tables.regularise import Regularisation, make_safe
+from hueferry.tables.make import make_table
+from hueferry.tables.regularise import Regularisation
 from hueferry.tables.table import Table
-
-ACCEPTED_ERROR = 1.0
-"""Table error, 99.9th percentile in 8-bit codes, above which the finer table is taken."""
 
 
 @attrs.frozen(eq=False)
@@ -51,19 +48,14 @@ def tabulate(wanted: Map, encoding: Encoding, palette: Palette, settings: Settin
         bits: significant bits a channel of the picture.
     """
     map_ = wanted if settings.strength == 1.0 else Partial(wanted, settings.strength)
-    occupied = Occupied.of_palette(palette, encoding)
-    sizes = SIZES if settings.table_size is None else (settings.table_size,)
-    cap = settings.gain_cap(bits)
-    for size in sizes:
-        table, how = make_safe(
-            build_table(map_, encoding, size=size), occupied=occupied, encoding=encoding, max_gain=cap
-        )
-        certificate = certify(
-            table, occupied=occupied, encoding=encoding, max_gain=cap, function=code_function(map_, encoding)
-        )
-        if how.needed or certificate.error is None or certificate.error.high <= ACCEPTED_ERROR:
-            break
-    return Tabulated(map_, table, certificate, _sentences(how))
+    made = make_table(
+        map_,
+        encoding,
+        occupied=Occupied.of_palette(palette, encoding),
+        max_gain=settings.gain_cap(bits),
+        size=settings.table_size,
+    )
+    return Tabulated(map_, made.table, made.certificate, _sentences(made.regularisation))
 
 
 def _sentences(how: Regularisation) -> tuple[str, ...]:

@@ -7,7 +7,8 @@ from collections.abc import Callable
 import numpy as np
 from numpy.typing import NDArray
 
-from hueferry.arrays import Codes, Colours
+from hueferry.arrays import Codes
+from hueferry.colour.gamut import compress
 from hueferry.colour.spaces import oklab_to_xyz, xyz_to_oklab
 from hueferry.errors import InputError
 from hueferry.maps.protocol import Map
@@ -63,7 +64,12 @@ def build_table(map_: Map, encoding: Encoding, *, size: int = 33, output: Encodi
 
 
 def code_function(
-    map_: Map, encoding: Encoding, *, output: Encoding | None = None, hold_ends: bool = True
+    map_: Map,
+    encoding: Encoding,
+    *,
+    output: Encoding | None = None,
+    hold_ends: bool = True,
+    into_gamut: bool = True,
 ) -> CodeFunction:
     """Return what a table of `map_` approximates: codes → Oklab → map → gamut → codes.
 
@@ -72,22 +78,17 @@ def code_function(
         encoding: what goes in.
         output: what comes out; None means `encoding`.
         hold_ends: keep pixels that are clipped in all channels neutral (`hold_clipped`).
+        into_gamut: compress colours that what is written cannot hold; else they leave 0 … 1.
     """
     written = encoding if output is None else output
 
     def through(codes: Codes) -> Codes:
         colours = xyz_to_oklab(encoding.to_xyz(codes))
-        return written.from_xyz(oklab_to_xyz(_into_gamut(map_(colours), written, source=colours)))
+        carried = map_(colours)
+        held = compress(carried, written, source=colours) if into_gamut else carried
+        return written.from_xyz(oklab_to_xyz(held))
 
     return hold_clipped(through) if hold_ends else through
-
-
-def _into_gamut(colours: Colours, encoding: Encoding, *, source: Colours) -> Colours:
-    try:
-        from hueferry.colour.gamut import compress
-    except ModuleNotFoundError:
-        return colours
-    return np.asarray(compress(colours, encoding, source=source))
 
 
 def input_curves(encoding: Encoding, size: int) -> NDArray[np.float32]:

@@ -26,6 +26,8 @@ Cells = NDArray[np.bool_]
 ORDERS = tuple(permutations(range(3)))
 """The six tetrahedra of a cell, each by the order in which its channels are walked from the low to the high corner."""
 
+_UNSEEN, _BESIDE = 1e-3, 0.1
+
 _SLAB = 4
 """Planes of cells at a time: what is computed on the way stays in the cache."""
 
@@ -56,6 +58,21 @@ class Occupied:
         cell = np.minimum(lattice_positions(table, self.codes).astype(np.int64), size - 2)
         found[tuple(cell.T)] = True
         return widened(found, margin)
+
+    def node_weights(self, table: Table) -> Floats:
+        """Return (n, n, n) how much each node matters: 1 in occupied cells, little beside them, hardly elsewhere."""
+        weights = np.full(table.lattice.shape[:3], _UNSEEN)
+        weights[corners(self.cells(table, margin=1))] = _BESIDE
+        weights[corners(self.cells(table, margin=0))] = 1.0
+        return weights
+
+
+def corners(cells: Cells) -> NDArray[np.bool_]:
+    """Return the (n, n, n) nodes at the corners of cells."""
+    nodes = np.zeros(tuple(n + 1 for n in cells.shape), dtype=bool)
+    for corner in np.ndindex(2, 2, 2):
+        nodes[tuple(slice(c, c + n) for c, n in zip(corner, cells.shape, strict=True))] |= cells
+    return nodes
 
 
 def widened(cells: Cells, margin: int) -> Cells:
@@ -134,6 +151,21 @@ def gains(table: Table, cells: Cells) -> tuple[Floats, Floats]:
     steep = np.stack([most[axis, index[:, axis]] for axis in range(3)], axis=1)
     gentle = np.stack([least[axis, index[:, axis]] for axis in range(3)], axis=1)
     return _singular(shown * steep[:, None, :])[0], _singular(lattice * gentle[:, None, :])[1]
+
+
+def steeper(table: Table, cells: Cells, cap: float) -> NDArray[np.bool_]:
+    """Return (m,), true for the `cells` (C order) whose largest gain in any tetrahedron exceeds `cap`."""
+    _, most = curve_slopes(table)
+    index = np.argwhere(cells)
+    steep = np.stack([most[axis, index[:, axis]] for axis in range(3)], axis=1)
+    matrices = jacobians(table, cells) * steep[:, None, :]
+    # The Frobenius norm is never less than the largest singular value, and much quicker.
+    found = ((matrices * matrices).sum(axis=(-2, -1)) > cap * cap).any(axis=0)
+    if found.any():
+        doubtful = np.zeros_like(cells)
+        doubtful[tuple(index[found].T)] = True
+        found[found] = (gains(table, doubtful)[0] > cap).any(axis=0)
+    return np.asarray(found)
 
 
 def clipped_channels(table: Table, cells: Cells) -> NDArray[np.bool_]:

@@ -57,7 +57,7 @@ def smooth_through(field: Field, weights: NDArray[np.float64], *, stiffness: flo
         ready = _solve_even(residual, anchor=anchor, stiffness=stiffness)
         power, before = float((residual * ready).sum()), power
         direction = ready + power / before * direction
-    return found + offset
+    return np.asarray(found + offset)
 
 
 def _second_differences(field: Field) -> Field:

@@ -17,15 +17,12 @@ from hueferry.tables.gradients import mend
 from hueferry.tables.lattice_equations import smooth_through
 from hueferry.tables.lookup import look_up
 from hueferry.tables.rules import Rules
-from hueferry.tables.smoothing import corners, no_change, smooth
+from hueferry.tables.smoothing import no_change, smooth
 from hueferry.tables.table import Table
 
 _LIMITING_ROUNDS = 8
-_STIFFNESSES = (0.1, 1.0, 10.0, 100.0, 1000.0)
+_STIFFNESSES = (0.02, 0.5, 10.0, 200.0, 4000.0)
 """How much smoothness counts against nearness to the table where it is occupied, from least to most."""
-
-_UNSEEN, _BESIDE = 1e-3, 0.1
-"""Weights of nodes far from and beside the occupied cells, whose own nodes have weight 1."""
 
 _HALVINGS = 7
 _TARGET = 0.995
@@ -105,7 +102,7 @@ def make_safe(
 
 def _by_limits(table: Table, rules: Rules) -> tuple[Table, Regularisation]:
     affine, affine_kept = _safe_affine(table, rules)
-    weights = _node_weights(table, rules)
+    weights = rules.occupied.node_weights(table)
     rounds = 0
     for stiffness in _STIFFNESSES:
         beyond = table.lattice.astype(np.float64) - affine.lattice
@@ -117,13 +114,6 @@ def _by_limits(table: Table, rules: Rules) -> tuple[Table, Regularisation]:
             return limited, Regularisation(smoothed, rounds, stiffness, affine_kept=affine_kept)
     result, kept = _blend(affine, limited, rules)
     return result, Regularisation(rounds=rounds, stiffness=stiffness, kept=kept, affine_kept=affine_kept)
-
-
-def _node_weights(table: Table, rules: Rules) -> NDArray[np.float64]:
-    weights = np.full(table.lattice.shape[:3], _UNSEEN)
-    weights[corners(rules.occupied.cells(table, margin=1))] = _BESIDE
-    weights[corners(rules.occupied.cells(table, margin=0))] = 1.0
-    return weights
 
 
 def _limited(table: Table, affine: Table, rules: Rules) -> tuple[Table, int]:

@@ -6,7 +6,7 @@ import attrs
 import numpy as np
 
 from hueferry.picture import Encoding
-from hueferry.tables.cells import Cells, Occupied, determinants_within, gains
+from hueferry.tables.cells import Cells, Occupied, determinants_within, steeper
 from hueferry.tables.lookup import lattice_positions
 from hueferry.tables.ramps import uneven_codes
 from hueferry.tables.table import Table
@@ -66,7 +66,7 @@ class Rules:
         cells = np.zeros_like(folded)
         cells[within] = self.occupied.cells(table)[within]
         steep = np.zeros_like(folded)
-        steep[cells] = (gains(table, cells)[0] > self.max_gain).any(axis=0)
+        steep[cells] = steeper(table, cells, self.max_gain)
         uneven = np.zeros_like(folded)
         places = lattice_positions(table, uneven_codes(table, self.encoding, self.output)).astype(np.int64)
         uneven[tuple(np.minimum(places, table.size - 2).T)] = True

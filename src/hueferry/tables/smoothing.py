@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from hueferry.tables.cells import Cells, widened
+from hueferry.tables.cells import corners, widened
 from hueferry.tables.lookup import node_codes
 from hueferry.tables.rules import Box, Rules
 from hueferry.tables.table import Table
@@ -59,14 +59,6 @@ def _box_around(nodes: NDArray[np.bool_]) -> Box:
         found = np.flatnonzero(nodes.any(axis=tuple(other for other in range(3) if other != axis)))
         sides.append(slice(max(int(found[0]) - 1, 0), min(int(found[-1]) + 2, nodes.shape[axis])))
     return sides[0], sides[1], sides[2]
-
-
-def corners(cells: Cells) -> NDArray[np.bool_]:
-    """Return the (n, n, n) nodes at the corners of cells."""
-    nodes = np.zeros(tuple(n + 1 for n in cells.shape), dtype=bool)
-    for corner in np.ndindex(2, 2, 2):
-        nodes[tuple(slice(c, c + n) for c, n in zip(corner, cells.shape, strict=True))] |= cells
-    return nodes
 
 
 def _averaged(shift: Nodes) -> Nodes:
