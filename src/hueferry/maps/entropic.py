@@ -71,6 +71,7 @@ class DebiasedMap:
         across: the entropic map from the palette to its target.
         within: the entropic map from the palette to itself.
         reach: distance over which trust fades outside the palette, in working-space units.
+        level: soft squared distance that the palette's own colours have; trust is full up to it.
 
     References:
         Feydy et al. (2019), Interpolating between optimal transport and MMD using Sinkhorn divergences: the
@@ -80,16 +81,17 @@ class DebiasedMap:
     across: SoftMean
     within: SoftMean
     reach: float
+    level: float
 
     def __call__(self, colours: Colours) -> Colours:
         """Carry (n, 3) colours over."""
         there, _ = self.across.evaluate(colours)
         here, soft = self.within.evaluate(colours)
-        return np.asarray(colours + trust_of(soft, self.reach)[:, None] * (there - here))
+        return np.asarray(colours + trust_of(soft - self.level, self.reach)[:, None] * (there - here))
 
     def trust(self, colours: Colours) -> NDArray[np.float64]:
         """Return how far the palette vouches for (n, 3) colours, 0 … 1."""
-        return trust_of(self.within.evaluate(colours)[1], self.reach)
+        return trust_of(self.within.evaluate(colours)[1] - self.level, self.reach)
 
 
 def trust_of(soft_squared_distance: NDArray[np.float64], reach: float) -> NDArray[np.float64]:
@@ -116,4 +118,6 @@ def fit_entropic(source: Palette, target: Palette, *, blur: float = BLUR) -> Com
     found = entropic_potentials(source.weights, target.weights, cost, epsilon=epsilon)
     own = self_potential(source.weights, squared_distances(start, start), epsilon=epsilon)
     across = SoftMean(target.colours, target.weights, found.g, epsilon)
-    return Composed(affine, DebiasedMap(across, SoftMean(start, source.weights, own, epsilon), reach=2 * blur))
+    within = SoftMean(start, source.weights, own, epsilon)
+    level = float(np.quantile(within.evaluate(start)[1], 0.98))
+    return Composed(affine, DebiasedMap(across, within, reach=2 * blur, level=level))

@@ -8,6 +8,7 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, Weights, read_only
 from hueferry.maps.compose import Composed
+from hueferry.maps.entropic import trust_of
 from hueferry.maps.gaussian import fit_gaussian
 from hueferry.palettes.palette import Palette
 from hueferry.transport.costs import squared_distances
@@ -28,6 +29,7 @@ class Displacements:
         shifts: (n, 3) displacements.
         weights: (n,) how much each counts.
         bandwidth: standard deviation of the averaging kernel.
+        level: soft squared distance that the points themselves have; shifts are taken whole up to it.
 
     References:
         Nadaraya (1964), On estimating regression.
@@ -37,15 +39,21 @@ class Displacements:
     shifts: Colours = attrs.field(converter=read_only)
     weights: Weights = attrs.field(converter=read_only)
     bandwidth: float
+    level: float = 0.0
 
     def __call__(self, colours: Colours) -> Colours:
         """Carry (n, 3) colours over."""
+        shifts, soft = self.evaluate(colours)
+        return np.asarray(colours + trust_of(soft - self.level, 2 * self.bandwidth)[:, None] * shifts)
+
+    def evaluate(self, colours: Colours) -> tuple[Colours, NDArray[np.float64]]:
+        """Return the mean shift (n, 3) near colours, and their soft squared distance from the points (n,)."""
         seen = self.weights > 0
         points = self.points[seen].astype(np.float32)
         values = np.concatenate([self.shifts[seen], np.ones((len(points), 1))], axis=1).astype(np.float32)
         scale = np.float32(1 / (2 * self.bandwidth**2))
         bias = np.log(self.weights[seen]).astype(np.float32) - (points**2).sum(axis=1) * scale
-        carried = np.array(colours, dtype=np.float64)
+        shifts, soft = np.empty((len(colours), 3)), np.empty(len(colours))
         for start in range(0, len(colours), _BLOCK):
             part = slice(start, start + _BLOCK)
             x = colours[part].astype(np.float32)
@@ -53,10 +61,9 @@ class Displacements:
             peak = exponent.max(axis=1)
             np.exp(exponent - peak[:, None], out=exponent)
             sums = exponent @ values
-            nearest = (x**2).sum(axis=1) - (peak - np.log(self.weights[seen].max())) / scale
-            trust = 1.0 / (1.0 + np.maximum(nearest, 0.0) / (4 * self.bandwidth) ** 2)
-            carried[part] += trust[:, None] * sums[:, :3] / sums[:, 3:]
-        return carried
+            shifts[part] = sums[:, :3] / sums[:, 3:]
+            soft[part] = (x**2).sum(axis=1) - (peak + np.log(sums[:, 3])) / scale
+        return shifts, soft
 
 
 def fit_exact(source: Palette, target: Palette, *, bandwidth: float = BANDWIDTH) -> Composed:
@@ -74,7 +81,9 @@ def fit_exact(source: Palette, target: Palette, *, bandwidth: float = BANDWIDTH)
     start = affine(source.colours)
     plan = solve_exact(source.weights, target.weights, squared_distances(start, target.colours))
     images = barycentric_projection(plan.coupling, target.colours, otherwise=start)
-    return Composed(affine, Displacements(start, images - start, source.weights, bandwidth))
+    near = Displacements(start, images - start, source.weights, bandwidth)
+    level = float(np.quantile(near.evaluate(start)[1], 0.98))
+    return Composed(affine, attrs.evolve(near, level=level))
 
 
 def barycentric_projection(coupling: NDArray[np.float64], target: Colours, *, otherwise: Colours) -> Colours:

@@ -9,6 +9,7 @@ from hueferry.maps.entropic import fit_entropic
 from hueferry.maps.exact import fit_exact
 from hueferry.maps.gaussian import fit_gaussian
 from hueferry.maps.method import Method
+from hueferry.maps.mixture import fit_mixture
 from hueferry.maps.protocol import Map
 from hueferry.maps.sliced import fit_channels, fit_sliced
 from hueferry.palettes.palette import Palette
@@ -23,6 +24,7 @@ FITTERS: Mapping[Method, Fitter] = MappingProxyType(
         Method.SLICED: lambda source, target, seed: fit_sliced(source, target, seed=seed),
         Method.ENTROPIC: lambda source, target, _: fit_entropic(source, target),
         Method.EXACT: lambda source, target, _: fit_exact(source, target),
+        Method.MIXTURE: lambda source, target, seed: fit_mixture(source, target, seed=seed),
     }
 )
 

@@ -11,23 +11,7 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Weights
 from hueferry.measure.cloud import LabCloud
-
-Directions = NDArray[np.float64]
-
-_GOLDEN = (1 + 5**0.5) / 2
-
-
-def spiral_directions(count: int) -> Directions:
-    """Return (count, 3) unit vectors spread evenly over a half sphere: x and −x give the same line.
-
-    References:
-        Swinbank & Purser (2006), Fibonacci grids: a novel approach to global modelling.
-    """
-    index = np.arange(count)
-    height = (index + 0.5) / count
-    angle = 2 * np.pi * index / _GOLDEN
-    radius = np.sqrt(1 - height**2)
-    return np.stack([radius * np.cos(angle), radius * np.sin(angle), height], axis=1)
+from hueferry.transport.sliced import Directions, spiral_directions
 
 
 def squared_on_lines(first: LabCloud, second: LabCloud, directions: Directions) -> NDArray[np.float64]:

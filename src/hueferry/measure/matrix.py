@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 from hueferry.arrays import read_only
 from hueferry.errors import InputError
 from hueferry.measure.cloud import LabCloud
-from hueferry.measure.lines import quantile_embedding, spiral_directions
+from hueferry.measure.lines import quantile_embedding
 from hueferry.palettes.palette import Palette
+from hueferry.transport.sliced import spiral_directions
 
 Distances = NDArray[np.float64]
 

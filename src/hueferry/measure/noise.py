@@ -9,10 +9,11 @@ from numpy.typing import NDArray
 from hueferry.arrays import Mask, Weights
 from hueferry.colour.spaces import oklab_to_lab
 from hueferry.measure.cloud import LabCloud
-from hueferry.measure.lines import quantile_embedding, spiral_directions
+from hueferry.measure.lines import quantile_embedding
 from hueferry.palettes.blocks import Blocks, count_blocks
 from hueferry.palettes.histogram import Counts
 from hueferry.picture import PictureSource
+from hueferry.transport.sliced import spiral_directions
 
 _LINES = 24
 _LEVELS = 64

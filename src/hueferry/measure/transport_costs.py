@@ -8,9 +8,10 @@ import numpy as np
 from hueferry.arrays import Costs, Lab, Weights
 from hueferry.errors import NotConverged
 from hueferry.measure.cloud import LabCloud
-from hueferry.measure.lines import spiral_directions, squared_on_lines
+from hueferry.measure.lines import squared_on_lines
 from hueferry.transport.costs import squared_distances
 from hueferry.transport.gaussian import gaussian_w2_squared
+from hueferry.transport.sliced import spiral_directions
 
 BLUR = 5.0
 """Blur of the Sinkhorn divergence in ΔE*ab: differences of detail much smaller than this do not count in it."""

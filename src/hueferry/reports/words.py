@@ -25,9 +25,9 @@ METHODS: Mapping[str, str] = MappingProxyType(
         "agree": (
             "Every picture was brought towards the reference under the aim “agree”: only the change of light and "
             "camera was undone. All pixels were counted into palettes of at most 1,024 weighted colours in Oklab. "
-            "Surfaces that both pictures show were found by scale-invariant keypoints and a verified homography, and paired "
-            "colours were read from the aligned pictures; palettes were discounted by the variation between blocks of "
-            "one picture. A camera-like map (exposure, white balance, tone, chroma) was estimated by maximum a "
+            "Surfaces that both pictures show were found by scale-invariant keypoints and a verified homography, and "
+            "paired colours were read from the aligned pictures; palettes were discounted by the variation between blocks "
+            "of one picture. A camera-like map (exposure, white balance, tone, chroma) was estimated by maximum a "
             "posteriori with a heavy-tailed likelihood and a prior centred on no change, and judged on surfaces that "
             "the fit had not seen. The map was sampled as a lattice, regularised until no tetrahedron folds and no "
             "occupied cell exceeds the gain cap, and applied by tetrahedral interpolation at the file's own depth. "

@@ -1,0 +1,67 @@
+"""The mixture map: every colour follows the normals it belongs to."""
+
+from __future__ import annotations
+
+import attrs
+import numpy as np
+from numpy.typing import NDArray
+
+from hueferry.arrays import Colours, read_only
+from hueferry.maps.compose import Composed
+from hueferry.maps.gaussian import fit_gaussian
+from hueferry.palettes.palette import Palette
+from hueferry.transport.mixture import Mixture, component_maps, fit_mixture_model, solve_mixture
+
+COMPONENTS = 6
+FLOOR = 4e-4
+"""Variance added to every component, Oklab units squared: two hundredths, below which a lattice cannot follow."""
+
+
+@attrs.frozen(eq=False)
+class MixtureMap:
+    """x ↦ the mean, over components by their share at x and over targets by the plan, of the affine maps between them.
+
+    Attributes:
+        source: the mixture that decides what x belongs to.
+        matrices: (k, 3, 3) mean affine map of each component under the plan.
+        offsets: (k, 3).
+
+    References:
+        Delon & Desolneux (2020), section 6.3 (T_mean).
+    """
+
+    source: Mixture
+    matrices: NDArray[np.float64] = attrs.field(converter=read_only)
+    offsets: NDArray[np.float64] = attrs.field(converter=read_only)
+
+    def __call__(self, colours: Colours) -> Colours:
+        """Carry (n, 3) colours over."""
+        shares = self.source.memberships(colours)
+        images = np.einsum("kij,nj->nki", self.matrices, colours) + self.offsets
+        return np.asarray(np.einsum("nk,nki->ni", shares, images))
+
+
+def fit_mixture(source: Palette, target: Palette, *, seed: int = 0, components: int = COMPONENTS) -> Composed:
+    """Return the Gaussian map followed by the mixture map of what it leaves.
+
+    Args:
+        source: palette to carry over.
+        target: palette to reach.
+        seed: of the fits.
+        components: normals in either mixture, at most.
+    """
+    affine = fit_gaussian(source, target)
+    start = affine(source.colours)
+    ours = fit_mixture_model(start, source.weights, components=components, seed=seed, floor=FLOOR)
+    theirs = fit_mixture_model(target.colours, target.weights, components=components, seed=seed, floor=FLOOR)
+    plan = solve_mixture(ours, theirs).coupling
+    conditional = plan / np.maximum(plan.sum(axis=1, keepdims=True), 1e-300)
+    matrices, offsets = component_maps(ours, theirs)
+    return Composed(
+        affine,
+        MixtureMap(
+            ours,
+            np.einsum("kl,klij->kij", conditional, matrices),
+            np.einsum("kl,kli->ki", conditional, offsets),
+        ),
+    )

@@ -1,0 +1,295 @@
+"""Transport against textbooks, papers and closed forms; each value names its source."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+
+from hueferry.transport.barycentre import bures_barycentre
+from hueferry.transport.costs import squared_distances
+from hueferry.transport.entropic import solve_entropic
+from hueferry.transport.exact import solve_exact
+from hueferry.transport.gaussian import bures_squared, gaussian_map, gaussian_w2_squared
+from hueferry.transport.mixture import Mixture, solve_mixture
+from hueferry.transport.one_dimensional import wasserstein_1d
+from hueferry.transport.sliced import sliced_squared
+from hueferry.transport.unbalanced import solve_unbalanced
+
+A = np.asarray
+
+
+def even(values: list[float]) -> tuple[np.ndarray, np.ndarray]:
+    return A(values, float), np.full(len(values), 1 / len(values))
+
+
+# --- on a line -------------------------------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("source", "target", "w1", "w2_squared"),
+    [
+        (even([0, 1, 3]), even([5, 6, 8]), 5, 25),  # example of scipy.stats.wasserstein_distance
+        ((A([0.0, 1]), A([0.75, 0.25])), (A([0.0, 1]), A([0.5, 0.5])), 0.25, 0.25),  # the same
+        (
+            (A([3.4, 3.9, 7.5, 7.8]), A([1.4, 0.9, 3.1, 7.2]) / 12.6),
+            (A([4.5, 1.4]), A([3.2, 3.5]) / 6.7),
+            4.078133143804786,
+            19.08963752665245,
+        ),  # the same
+        (even([0, 1, 3]), even([1, 5, 9]), 11 / 3, 53 / 3),  # by hand: sorted to sorted
+    ],
+)
+def test_one_dimension_by_hand_and_by_scipys_examples(
+    source: tuple[np.ndarray, np.ndarray], target: tuple[np.ndarray, np.ndarray], w1: float, w2_squared: float
+) -> None:
+    assert wasserstein_1d(*source, *target, power=1) == pytest.approx(w1, rel=1e-12)
+    assert wasserstein_1d(*source, *target, power=2) == pytest.approx(w2_squared, rel=1e-12)
+
+
+def test_uniform_laws_of_two_lengths() -> None:
+    """By hand: U(0, 1) to U(0, 2) has W1 = 1/2 and W2² = 1/3; midpoints of n cells are exact to 1/n²."""
+    short, shares = (np.arange(4000) + 0.5) / 4000, np.full(4000, 1 / 4000)
+
+    assert wasserstein_1d(short, shares, 2 * short, shares, power=1) == pytest.approx(0.5, abs=1e-7)
+    assert wasserstein_1d(short, shares, 2 * short, shares) == pytest.approx(1 / 3, abs=1e-7)
+
+
+# --- transportation problems -----------------------------------------------------------------------------------------
+
+HITCHCOCK = A([[10, 5, 6, 7], [8, 2, 7, 6], [9, 3, 4, 8]], float)
+PT_COSTS = A([[464, 513, 654, 867], [352, 416, 690, 791], [995, 682, 388, 685]], float)
+PT_SUPPLY, PT_DEMAND = A([75, 125, 100.0]) / 300, A([80, 65, 70, 85.0]) / 300
+
+
+def test_exact_reproduces_hitchcocks_problem() -> None:
+    """Hitchcock (1941), data as usually reprinted, from memory: 535; not unique, so the cost alone counts."""
+    plan = solve_exact(A([25, 25, 50.0]) / 100, A([15, 20, 30, 35.0]) / 100, HITCHCOCK)
+
+    assert 100 * plan.cost == pytest.approx(535, rel=1e-12)
+    assert plan.gap < 1e-9
+
+
+def test_exact_reproduces_the_cannery_problem_with_its_proof() -> None:
+    """Hillier & Lieberman, Introduction to Operations Research, P&T Company: 152 535, a unique plan, and its duals."""
+    plan = solve_exact(PT_SUPPLY, PT_DEMAND, PT_COSTS)
+    f, g = plan.potentials
+    trucks = A([[0, 20, 0, 55], [80, 45, 0, 0], [0, 0, 70, 30.0]])
+    reduced = A([[15, 0, 84, 0], [0, 0, 217, 21], [728, 351, 0, 0.0]])
+
+    assert 300 * plan.cost == pytest.approx(152_535, rel=1e-12)
+    np.testing.assert_allclose(300 * plan.coupling, trucks, atol=1e-9)
+    np.testing.assert_allclose(f - f[0], [0, -97, -182], atol=1e-8)
+    np.testing.assert_allclose(PT_COSTS - f[:, None] - g[None, :], reduced, atol=1e-8)
+    assert plan.gap < 1e-9
+
+
+def test_exact_reproduces_dantzigs_canneries() -> None:
+    """Dantzig (1963), Linear Programming and Extensions, section 3.3: 153.675; a dummy demand of 50."""
+    freight = 90 * A([[2.5, 1.7, 1.8, 0], [2.5, 1.8, 1.4, 0]]) / 1000
+
+    plan = solve_exact(A([350, 600.0]) / 950, A([325, 300, 275, 50.0]) / 950, freight)
+
+    assert 950 * plan.cost == pytest.approx(153.675, rel=1e-12)
+
+
+# --- normal distributions --------------------------------------------------------------------------------------------
+
+GENERAL = (A([[2, 0.5], [0.5, 1]]), A([[1, -0.3], [-0.3, 3]]))
+
+
+@pytest.mark.parametrize(
+    ("first", "second", "squared", "matrix"),
+    [
+        (A([[5, 4], [4, 5.0]]), A([[5, -4], [-4, 5.0]]), 8.0, A([[5 / 3, -4 / 3], [-4 / 3, 5 / 3]])),
+        (
+            np.diag([1.0, 4]),
+            A([[2, 1], [1, 2.0]]),
+            9 - 2 * np.sqrt(10 + 2 * np.sqrt(12)),
+            A([[1.3280466636, 0.2430494082], [0.2430494082, 0.6965857781]]),
+        ),
+        (*GENERAL, 0.9293118550, A([[0.7542862120, -0.3112527175], [-0.3112527175, 1.8380243661]])),
+        (
+            A([[0.04, 0.03, 0.02], [0.03, 0.05, 0.03], [0.02, 0.03, 0.06]]),
+            A([[0.09, 0.02, -0.01], [0.02, 0.03, 0.01], [-0.01, 0.01, 0.02]]),
+            0.0338901882,
+            A(
+                [
+                    [1.7153507432, -0.1599099913, -0.3094307768],
+                    [-0.1599099913, 0.8451842566, 0.0297096945],
+                    [-0.3094307768, 0.0297096945, 0.6228485368],
+                ]
+            ),
+        ),
+    ],
+)
+def test_bures_distance_and_map(first: np.ndarray, second: np.ndarray, squared: float, matrix: np.ndarray) -> None:
+    """Formula: Dowson & Landau (1982), Olkin & Pukelsheim (1982); values by POT and an independent square root."""
+    ours = gaussian_map(first, second)
+
+    assert bures_squared(first, second) == pytest.approx(squared, abs=1e-9)
+    np.testing.assert_allclose(ours, matrix, atol=1e-9)
+    np.testing.assert_allclose(ours @ first @ ours, second, atol=1e-12)
+
+
+def test_the_gaussian_map_is_cheaper_than_the_maps_it_is_mistaken_for() -> None:
+    """The Cholesky map and S2^1/2 S1^-1/2 also push one covariance to the other, and cost 1.1923 and 0.9332."""
+    first, second = GENERAL
+    cholesky = np.linalg.cholesky(second) @ np.linalg.inv(np.linalg.cholesky(first))
+
+    def cost(matrix: np.ndarray) -> float:
+        return float(np.trace((matrix - np.eye(2)) @ first @ (matrix - np.eye(2)).T))
+
+    assert cost(gaussian_map(first, second)) == pytest.approx(0.9293118550, abs=1e-9)
+    assert cost(cholesky) == pytest.approx(1.1923102302, abs=1e-9)
+
+
+def test_gaussian_w2_with_means() -> None:
+    assert gaussian_w2_squared(A([0.0, 0]), GENERAL[0], A([1.0, 2]), GENERAL[1]) == pytest.approx(
+        5.9293118550, abs=1e-9
+    )
+
+
+@pytest.mark.parametrize("spread", [0.1, 1.0, 7.0])
+def test_equal_normals_keep_their_distance_whatever_the_spread(spread: float) -> None:
+    """By hand: W2 of two normals of equal covariance is the distance of their means, 3 for (1, 2, 2)."""
+    same = spread**2 * np.eye(3)
+
+    assert gaussian_w2_squared(np.zeros(3), same, A([1.0, 2, 2]), same) == pytest.approx(9, abs=1e-9)
+
+
+# --- entropy ---------------------------------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("epsilon", "linear", "regularised"),
+    [
+        (0.001, 0.5084500006, 0.5092098669),
+        (0.01, 0.5096064564, 0.5153616642),
+        (0.1, 0.5196519267, 0.5502031826),
+        (1, 0.6015661808, 0.6145657209),
+        (10, 0.6252468764, 0.6266160737),
+        (1000, 0.6279600298, 0.6279737648),
+    ],
+)
+def test_entropic_plans_of_the_cannery_problem(epsilon: float, linear: float, regularised: float) -> None:
+    """Formula: Cuturi (2013); values by POT, C / 1000 and weights / 300."""
+    plan = solve_entropic(PT_SUPPLY, PT_DEMAND, PT_COSTS / 1000, epsilon=epsilon, tolerance=1e-11)
+    f, g = plan.potentials
+
+    assert plan.cost == pytest.approx(linear, abs=1e-8)
+    assert PT_SUPPLY @ f + PT_DEMAND @ g == pytest.approx(regularised, abs=1e-8)
+
+
+@pytest.mark.parametrize(("epsilon", "corner"), [(0.5, 0.4403985390), (1, 0.3655292893), (10, 0.2624895937)])
+def test_the_two_by_two_plan_in_closed_form(epsilon: float, corner: float) -> None:
+    """By hand: P11 = ½ / (1 + exp(−1/ε))."""
+    plan = solve_entropic(A([0.5, 0.5]), A([0.5, 0.5]), A([[0, 1.0], [1, 0]]), epsilon=epsilon, tolerance=1e-12)
+
+    assert plan.coupling[0, 0] == pytest.approx(corner, abs=1e-9)
+
+
+@pytest.mark.parametrize(
+    ("epsilon", "linear", "value"),
+    [(0.5, 10.2421951145, 10.7776703453), (2, 10.8768943744, 11.8175080165), (10, 12.5968757626, 13.2533871664)],
+)
+def test_entropic_transport_of_normals(epsilon: float, linear: float, value: float) -> None:
+    """N(0, 1) to N(3, 2): Janati, Muzellec, Peyré & Cuturi (2020), theorem 1; a grid agrees to 1e-5."""
+    x, y = np.linspace(-7, 7, 301), np.linspace(-11, 17, 301)
+    a, b = np.exp(-(x**2) / 2), np.exp(-(((y - 3) / 2) ** 2) / 2)
+    a, b = a / a.sum(), b / b.sum()
+
+    plan = solve_entropic(a, b, (x[:, None] - y[None, :]) ** 2, epsilon=epsilon, tolerance=1e-10)
+    f, g = plan.potentials
+    images = plan.coupling @ y / a
+
+    assert plan.cost == pytest.approx(linear, abs=1e-4)
+    assert a @ f + b @ g == pytest.approx(value, abs=1e-4)
+    # The barycentric map is 3 + c x with c = (√(ε²/4 + 16) − ε/2) / 2: it shrinks the palette.
+    slope = (np.sqrt(epsilon**2 / 4 + 16) - epsilon / 2) / 2
+    np.testing.assert_allclose(images[100:200], 3 + slope * x[100:200], atol=1e-3)
+
+
+# --- lines, barycentres, mixtures, loose marginals -------------------------------------------------------------------
+
+
+def test_sliced_distance_of_normals() -> None:
+    """d = 3, spreads 1 and 2, shift (1, 2, 2): SW2² = (1−2)² + 9/3 = 4, by hand; sampling 3 %."""
+    rng = np.random.default_rng(1)
+    first, second = rng.standard_normal((20_000, 3)), 2 * rng.standard_normal((20_000, 3)) + A([1, 2, 2])
+    shares = np.full(20_000, 1 / 20_000)
+
+    estimate = sliced_squared(first, shares, second, shares, directions=200)
+
+    assert estimate.squared == pytest.approx(4.0, rel=0.03)
+    assert estimate.error < 0.05
+
+
+def test_barycentre_of_commuting_normals() -> None:
+    """(Σ w S^1/2)² = 4 I where the Euclidean mean would be 5 I (Agueh & Carlier 2011)."""
+    turned = [A([[5, 4], [4, 5.0]]), A([[5, -4], [-4, 5.0]])]
+
+    found = bures_barycentre([np.zeros(2)] * 2, turned, A([0.5, 0.5]))
+
+    np.testing.assert_allclose(found.covariance, 4 * np.eye(2), atol=1e-9)
+
+
+def test_barycentre_of_two_is_the_midpoint() -> None:
+    """McCann's midpoint ((I + A) / 2) S1 ((I + A) / 2)."""
+    found = bures_barycentre([A([0.0, 0]), A([1.0, 2])], list(GENERAL), A([0.5, 0.5]))
+
+    np.testing.assert_allclose(
+        found.covariance, [[1.4264730326, 0.1405992841], [0.1405992841, 1.8411990037]], atol=1e-9
+    )
+    np.testing.assert_allclose(found.mean, [0.5, 1.0])
+
+
+def test_barycentre_of_three() -> None:
+    """Fixed point of Alvarez-Esteban et al. (2016); value by POT's bures_wasserstein_barycenter."""
+    means = [A([0.0, 0]), A([1.0, 2]), A([3.0, -1])]
+
+    found = bures_barycentre(means, [*GENERAL, A([[4, 1], [1, 0.5]])], A([0.5, 0.3, 0.2]))
+
+    np.testing.assert_allclose(
+        found.covariance, [[1.9444048523, 0.3985548546], [0.3985548546, 1.2991228487]], atol=1e-9
+    )
+    np.testing.assert_allclose(found.mean, [0.9, 0.4])
+    assert found.residual < 1e-12
+
+
+def test_mixtures_are_carried_component_by_component() -> None:
+    """Delon & Desolneux (2020): component costs [[1, 36], [9.25, 4.25]], plan [[.3, .2], [0, .5]], MW2² = 9.625."""
+    first = Mixture(A([0.5, 0.5]), A([[0.0], [4]]), A([[[1.0]], [[0.25]]]))
+    second = Mixture(A([0.3, 0.7]), A([[1.0], [6]]), A([[[1.0]], [[1.0]]]))
+
+    plan = solve_mixture(first, second)
+
+    assert plan.cost == pytest.approx(9.625, abs=1e-9)
+    np.testing.assert_allclose(plan.coupling, [[0.3, 0.2], [0, 0.5]], atol=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("a", "b", "cost", "penalty", "epsilon", "mass", "value"),
+    [(2, 0.5, 1, 1, 0.1, 0.6211451576, 1.2955951690), (1, 1, 4, 1, 0.5, 0.2018965180, 1.9952587050)],
+)
+def test_two_points_with_loose_marginals(
+    a: float, b: float, cost: float, penalty: float, epsilon: float, mass: float, value: float
+) -> None:
+    """m = (ab)^((ρ+ε)/(2ρ+ε)) exp(−c/(2ρ+ε)): Chizat et al. (2018), by hand; POT agrees."""
+    plan = solve_unbalanced(A([a]), A([b]), A([[cost]], dtype=float), penalty=penalty, epsilon=epsilon)
+
+    assert plan.mass == pytest.approx(mass, abs=1e-9)
+    assert plan.value == pytest.approx(value, abs=1e-9)
+
+
+@pytest.mark.parametrize(("penalty", "crossing"), [(0.90, 0.0), (1.0, 0.0330990), (10.0, 0.3587204)])
+def test_proportions_are_left_alone_below_the_threshold(penalty: float, crossing: float) -> None:
+    """(½, ½) to (.9, .1) at squared distance 1: nothing crosses while ρ < 1/ln 3 (own derivation, POT agrees)."""
+    plan = solve_unbalanced(
+        A([0.5, 0.5]), A([0.9, 0.1]), A([[0, 1.0], [1, 0]]), penalty=penalty, epsilon=1e-3, tolerance=1e-8
+    )
+
+    assert plan.coupling[1, 0] == pytest.approx(crossing, abs=2e-3)
+
+
+def test_squared_distances_by_hand() -> None:
+    assert squared_distances(A([[0.0, 0, 0]]), A([[1.0, 2, 2]]))[0, 0] == pytest.approx(9)
