@@ -8,7 +8,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from hueferry.measure.lines import quantile_embedding, sliced_distance, spiral_directions, squared_on_lines
+from hueferry.measure.lines import quantile_embedding, sliced_distance, squared_on_lines
+from hueferry.transport.sliced import spiral_directions
 from measure.clouds import cloud, scattered, weights_of
 
 FIRST, SECOND = cloud(scattered(1), weights_of(1)), cloud(scattered(2, 43), weights_of(2, 43))

@@ -11,7 +11,7 @@ from hueferry.measure.cloud import LabCloud
 from hueferry.measure.lines import squared_on_lines
 from hueferry.transport.costs import squared_distances
 from hueferry.transport.gaussian import gaussian_w2_squared
-from hueferry.transport.sliced import spiral_directions
+from hueferry.transport.sliced import turned_directions
 
 BLUR = 5.0
 """Blur of the Sinkhorn divergence in ΔE*ab: differences of detail much smaller than this do not count in it."""
@@ -102,9 +102,7 @@ def gaussian_w2(first: LabCloud, second: LabCloud) -> float:
 
 def sliced_w2(first: LabCloud, second: LabCloud, *, seed: int = 0) -> Estimate:
     """Return the sliced W2 with its standard error, from evenly spread lines turned at random eight times."""
-    rng = np.random.default_rng(seed)
-    lines = spiral_directions(_LINES)
-    turned = [lines @ np.linalg.qr(rng.normal(size=(3, 3)))[0] for _ in range(_REPLICATES)]
+    turned = [turned_directions(_LINES, 3, seed=seed * _REPLICATES + number) for number in range(_REPLICATES)]
     squared = np.array([squared_on_lines(first, second, directions).mean() for directions in turned])
     value = float(np.sqrt(squared.mean()))
     error = float(squared.std(ddof=1) / np.sqrt(_REPLICATES))
