@@ -3,6 +3,10 @@
 from __future__ import annotations
 
 import itertools
+import os
+import subprocess
+import sys
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -107,6 +111,34 @@ def test_the_palette_is_the_same_for_any_strips_and_threads() -> None:
 
     assert one.colours.tobytes() == other.colours.tobytes()
     assert one.weights.tobytes() == other.weights.tobytes()
+
+
+_DIGEST = """
+import hashlib, sys
+import numpy as np
+from palettes.coded import Coded
+from hueferry.palettes.build import palette_of
+from hueferry.picture import Picture
+pixels = np.random.default_rng(0).normal(120, 60, (900, 900, 3)).clip(0, 255).astype(np.uint8)
+palette = palette_of(Picture(pixels, Coded()))
+print(hashlib.sha256(palette.colours.tobytes() + palette.weights.tobytes()).hexdigest())
+"""
+
+
+def test_the_palette_is_the_same_for_any_number_of_blas_threads() -> None:
+    digests = set()
+    for threads in ("1", "2", "3"):
+        limits = {"OPENBLAS_NUM_THREADS": threads, "OMP_NUM_THREADS": threads, "MKL_NUM_THREADS": threads}
+        tests = str(Path(__file__).parents[1])
+        run = subprocess.run(
+            [sys.executable, "-c", _DIGEST],
+            env=os.environ | limits | {"PYTHONPATH": tests},
+            capture_output=True,
+            check=True,
+        )
+        digests.add(run.stdout)
+
+    assert len(digests) == 1
 
 
 @pytest.mark.parametrize("border", [0, 255])

@@ -60,15 +60,23 @@ def reduce(histogram: Histogram, encoding: Encoding, *, size: int = 1024) -> Pal
     sample = _systematic_sample(weights)
     drawn = xyz_to_oklab(encoding.to_xyz(codes[sample]))
     inside = drawn - blocks[joined[sample]]
-    wanted = _covariance(blocks, held) + inside.T @ inside / len(inside)
+    wanted = _covariance(blocks, held) + _second_moments(inside, np.full(len(inside), 1 / len(inside)))
     colours = _restored(means, shares, wanted)
     spread = _root_mean_square(drawn - colours[labels[joined[sample]]])
     return Palette(colours, shares, spread, histogram.pixels)
 
 
 def _covariance(colours: Colours, weights: Weights) -> Colours:
-    centred = colours - weights @ colours / weights.sum()
-    return np.asarray((centred * weights[:, None]).T @ centred / weights.sum())
+    return _second_moments(colours - _mean(colours, weights), weights / weights.sum())
+
+
+def _mean(colours: Colours, weights: Weights) -> Colours:
+    return np.asarray(np.einsum("i,ij->j", weights, colours) / weights.sum())
+
+
+def _second_moments(colours: Colours, weights: Weights) -> Colours:
+    """Return Σ w x xᵀ; not by matrix product, whose last bits may change with the number of threads."""
+    return np.asarray(np.einsum("i,ij,ik->jk", weights, colours, colours))
 
 
 def _restored(colours: Colours, weights: Weights, wanted: Colours) -> Colours:
@@ -77,7 +85,7 @@ def _restored(colours: Colours, weights: Weights, wanted: Colours) -> Colours:
     With S the covariance there is and T the one wanted, x → S^½ (S^-½ T S^-½)^½ S^-½ x does it. Directions in which
     the colours are flat stay flat.
     """
-    mean = weights @ colours
+    mean = _mean(colours, weights)
     values, vectors = np.linalg.eigh(_covariance(colours, weights))
     seen = values > 1e-9 * max(float(values[-1]), _NEGLIGIBLE)
     basis, deviations = vectors[:, seen], np.sqrt(values[seen])
@@ -102,7 +110,7 @@ def thin(palette: Palette, size: int) -> Palette:
     colours, weights = palette.colours[kept], palette.weights[kept]
     labels = group(colours, weights, size)
     means, shares = _average(colours, weights, labels)
-    moved = float(weights @ ((colours - means[labels]) ** 2).sum(axis=1) / weights.sum())
+    moved = float(np.trace(_second_moments(colours - means[labels], weights / weights.sum())))
     return Palette(means, shares, float(np.sqrt(palette.spread**2 + moved)), palette.pixels)
 
 
