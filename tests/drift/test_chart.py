@@ -118,8 +118,9 @@ def test_notices_come_with_a_trend_and_name_their_rule() -> None:
     assert {"one side", "beyond"} <= {notice.rule for notice in found.notices}
 
 
-def test_a_device_without_any_scatter_is_steady() -> None:
-    same = [attrs.evolve(r, l=0.5, a=0.0, b=0.0) for r in readings(1, 20)]
+@pytest.mark.parametrize("value", [0.0, 0.1, 0.5, -7.3])
+def test_a_device_without_any_scatter_is_steady(value: float) -> None:
+    same = [attrs.evolve(r, l=value, a=value, b=-value) for r in readings(1, 20)]
 
     found = chart(same)
 

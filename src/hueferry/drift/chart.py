@@ -35,6 +35,8 @@ SINGLE_SIGMAS = 3.0
 ALARM_SIGMAS = 3.32
 """Three channels share the false alarms of one chart at three deviations: 0.0027 / 3 each (Bonferroni)."""
 
+_ROUNDING = 1e-9  # of the averages, where a device does not scatter at all and its limits have no width
+
 CHANNELS: Mapping[str, tuple[str, str, str]] = MappingProxyType(
     {"l": ("L*", "darker", "lighter"), "a": ("a*", "greener", "redder"), "b": ("b*", "bluer", "yellower")}
 )
@@ -92,7 +94,7 @@ class Trace:
     @property
     def alarms(self) -> NDArray[np.bool_]:
         """(n,) true where the weighted average is outside its limits."""
-        return np.asarray(np.abs(self.averages - self.level.centre) > self.average_widths)
+        return np.asarray(np.abs(self.averages - self.level.centre) > self.average_widths + _ROUNDING)
 
 
 @attrs.frozen
