@@ -114,7 +114,7 @@ def test_a_gentle_map_needs_the_small_table_only_and_a_bent_one_gets_the_large()
     muted = scattered(0, 0.3, 0.7)
 
     def ripple(colours: np.ndarray) -> np.ndarray:
-        return colours + 0.003 * np.sin(120 * colours[:, :1]) * [1, 0, 0]
+        return colours + 0.006 * np.sin(100 * colours[:, :1]) * [1, 0, 0]
 
     gentle = make_table(lambda colours: colours * [0.97, 1.1, 1.1], Display(), occupied=muted, max_gain=2.5)
     bent = make_table(ripple, Display(), occupied=muted, max_gain=2.5)

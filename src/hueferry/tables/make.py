@@ -3,28 +3,21 @@
 from __future__ import annotations
 
 import attrs
-import numpy as np
-from numpy.typing import NDArray
 
 from hueferry.maps.protocol import Map
 from hueferry.picture import Encoding
-from hueferry.tables.build import SIZES, CodeFunction, code_function, input_curves, sample_table
+from hueferry.tables.build import SIZES, code_function, input_curves, sample_table
 from hueferry.tables.cells import Occupied
 from hueferry.tables.certificate import Certificate, TableError, certify, table_error
-from hueferry.tables.lattice_equations import smooth_through
 from hueferry.tables.regularise import Regularisation, make_safe
+from hueferry.tables.rolling import roll_into_range
 from hueferry.tables.table import Table
 
-MOST_CODES = 1.0
+MOST_CODES = 1.5
 """8-bit codes: the 99.9th percentile of the table error beyond which the larger table is taken."""
 
 MOST_DELTA_E = 1.0
 """ΔE00: the largest error beyond which the larger table is taken."""
-
-MOST_CLIPPED = 0.0005
-"""Share of the picture that may leave the code range before colours are compressed into the gamut."""
-
-_STIFFNESS = 0.005
 
 
 @attrs.frozen(eq=False)
@@ -69,40 +62,16 @@ def make_table(
         hold_ends: keep pixels that are clipped in all channels neutral.
     """
     written = encoding if output is None else output
-    plain, held = (
-        code_function(map_, encoding, output=output, hold_ends=hold_ends, into_gamut=compressed)
-        for compressed in (False, True)
-    )
-    function = plain if _fits(plain, occupied) else held
+    plain = code_function(map_, encoding, output=output, hold_ends=hold_ends, into_gamut=False)
+    function = roll_into_range(plain, occupied)
     for nodes in SIZES if size is None else (size,):
-        table = _sampled(function, plain, occupied, size=nodes, curves=input_curves(encoding, nodes))
+        table = sample_table(function, size=nodes, curves=input_curves(encoding, nodes))
         safe, how = make_safe(table, occupied=occupied, encoding=encoding, max_gain=max_gain, output=output)
         error = table_error(safe, function, occupied, encoding=written)
         if how.needed or _accepted(error):  # more nodes bring no map back that had to be changed
             break
     certificate = certify(safe, occupied=occupied, encoding=encoding, max_gain=max_gain, output=output, error=error)
     return MadeTable(safe, certificate, how)
-
-
-def _fits(plain: CodeFunction, occupied: Occupied) -> bool:
-    """Whether the picture's own colours fit the code range as they come."""
-    result = plain(occupied.codes)
-    return float(occupied.weights[((result < 0) | (result > 1)).any(axis=1)].sum()) <= MOST_CLIPPED
-
-
-def _sampled(
-    function: CodeFunction, plain: CodeFunction, occupied: Occupied, *, size: int, curves: NDArray[np.float32]
-) -> Table:
-    """Sample `function` where the picture has colours, and continue smoothly what it does beyond `plain` elsewhere.
-
-    Colours that no picture has would all be pressed against the gamut's edge, where cells turn flat and fold.
-    """
-    table = sample_table(plain, size=size, curves=curves)
-    if function is plain:
-        return table
-    beyond = sample_table(function, size=size, curves=curves).lattice.astype(np.float64) - table.lattice
-    weights = occupied.node_weights(table)
-    return Table(table.lattice + smooth_through(beyond, weights, stiffness=_STIFFNESS, rounds=6), curves)
 
 
 def _accepted(error: TableError) -> bool:
