@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from hueferry.measure.lines import quantile_embedding, sliced_distance, squared_on_lines
+from hueferry.measure.lines import SortedLines, sliced_distance, squared_on_lines
 from hueferry.transport.sliced import spiral_directions
 from measure.clouds import cloud, scattered, weights_of
 
@@ -64,7 +64,7 @@ def test_quantile_vectors_give_the_distance_from_below(seed: int) -> None:
     lines = spiral_directions(16)
 
     exact = float(np.sqrt(squared_on_lines(first, second, lines).mean()))
-    vectors = [quantile_embedding(c, lines, 256) for c in (first, second)]
+    vectors = [SortedLines.of(c.colours, lines).quantiles(c.weights, 256) for c in (first, second)]
 
     assert 0.9 * exact <= np.linalg.norm(vectors[0] - vectors[1]) <= exact + 1e-9
 

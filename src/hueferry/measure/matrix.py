@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from hueferry.arrays import read_only
 from hueferry.errors import InputError
 from hueferry.measure.cloud import LabCloud
-from hueferry.measure.lines import quantile_embedding
+from hueferry.measure.lines import SortedLines
 from hueferry.palettes.palette import Palette
 from hueferry.transport.sliced import spiral_directions
 
@@ -80,7 +80,8 @@ def compare(palettes: Sequence[Palette], names: Sequence[str]) -> Comparison:
 def distance_matrix(palettes: Sequence[Palette]) -> Distances:
     """Return the (n, n) sliced W2 in ΔE*ab, as Euclidean distances of quantile vectors."""
     directions = spiral_directions(_LINES)
-    vectors = np.stack([quantile_embedding(LabCloud.of(palette), directions, _LEVELS) for palette in palettes])
+    clouds = [LabCloud.of(palette) for palette in palettes]
+    vectors = np.stack([SortedLines.of(c.colours, directions).quantiles(c.weights, _LEVELS) for c in clouds])
     vectors -= vectors.mean(axis=0)
     norms = np.einsum("ij,ij->i", vectors, vectors)
     squared = norms[:, None] + norms[None, :] - 2 * vectors @ vectors.T

@@ -4,12 +4,10 @@ from __future__ import annotations
 
 import attrs
 import numpy as np
-from numpy.typing import NDArray
 
-from hueferry.arrays import Mask, Weights
+from hueferry.arrays import Mask
 from hueferry.colour.spaces import oklab_to_lab
-from hueferry.measure.cloud import LabCloud
-from hueferry.measure.lines import quantile_embedding
+from hueferry.measure.lines import SortedLines
 from hueferry.palettes.blocks import Blocks, count_blocks
 from hueferry.palettes.histogram import Counts
 from hueferry.picture import PictureSource
@@ -88,10 +86,10 @@ def noise_floor(source: PictureSource, *, mask: Mask | None = None, resamples: i
 def floor_of_blocks(blocks: Blocks, *, resamples: int = 100, seed: int = 0) -> NoiseFloor:
     """Find the noise floor from counts by block; see `noise_floor`."""
     rng = np.random.default_rng(seed)
-    lab = oklab_to_lab(blocks.colours)
+    lines = SortedLines.of(oklab_to_lab(blocks.colours), spiral_directions(_LINES))
     draws = (_halve_pixels, _halve_blocks, _draw_blocks)
     sampling, split_half, within = (
-        float(np.quantile([_distance(lab, *draw(blocks.counts, rng)) for _ in range(resamples)], _QUANTILE))
+        float(np.quantile([_distance(lines, *draw(blocks.counts, rng)) for _ in range(resamples)], _QUANTILE))
         for draw in draws
     )
     return NoiseFloor(sampling, split_half, within, len(blocks.counts), resamples)
@@ -126,10 +124,6 @@ def _draw_blocks(counts: Counts, rng: np.random.Generator) -> tuple[Counts, Coun
     return counts[first].sum(axis=0), counts[second].sum(axis=0)
 
 
-def _distance(lab: NDArray[np.float64], first: Counts, second: Counts) -> float:
-    vectors = [_embedded(lab, counts / counts.sum()) for counts in (first, second) if counts.sum()]
+def _distance(lines: SortedLines, first: Counts, second: Counts) -> float:
+    vectors = [lines.quantiles(counts / counts.sum(), _LEVELS) for counts in (first, second) if counts.sum()]
     return float(np.linalg.norm(vectors[0] - vectors[1])) if len(vectors) == 2 else 0.0
-
-
-def _embedded(lab: NDArray[np.float64], shares: Weights) -> NDArray[np.float64]:
-    return quantile_embedding(LabCloud(lab, shares, 0.0), spiral_directions(_LINES), _LEVELS)
