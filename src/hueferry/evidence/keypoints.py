@@ -11,6 +11,9 @@ from hueferry.arrays import Mask
 MOST = 1500
 """Keypoints a picture at most, the strongest first."""
 
+FAINTEST = 0.005
+"""Least contrast of a keypoint: out of focus, faint ones are all there are, and chance is judged later."""
+
 RATIO = 0.85
 """Largest distance to the best match over that to the second best (Lowe 2004, section 7.1)."""
 
@@ -37,7 +40,7 @@ def find_keypoints(gray: NDArray[np.uint8], counted: Mask) -> Keypoints:
 
     if min(gray.shape) < 16:
         return Keypoints(np.empty((0, 2)), np.empty((0, 128), dtype=np.float32))
-    detector = cv2.SIFT_create(nfeatures=MOST, contrastThreshold=0.03)  # type: ignore[attr-defined]
+    detector = cv2.SIFT_create(nfeatures=MOST, contrastThreshold=FAINTEST)  # type: ignore[attr-defined]
     found, descriptors = detector.detectAndCompute(gray, counted.astype(np.uint8))
     if descriptors is None or not len(found):
         return Keypoints(np.empty((0, 2)), np.empty((0, 128), dtype=np.float32))

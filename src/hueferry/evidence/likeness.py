@@ -31,7 +31,7 @@ CAUTION = 3.0
 STRANGE, SHARP = 0.82, 0.02
 """Likeness, as a share of the halves' own, at which strangers are as likely as one scene; and the slope of that."""
 
-STRANGE_COLOURS = 0.97
+STRANGE_COLOURS = 1.0
 """The same where colours alone are compared, without texture."""
 
 LEAST_SPREAD = 0.005

@@ -25,7 +25,7 @@ TEXTURE = 0.4
 FOREIGN = 0.2
 """Share of a patch's chance kernel mass that stands for stuff the other picture does not have."""
 
-WORTH = 12.0
+WORTH = 24.0
 """Independent patches that a scene of any number of patches is worth: neighbours show the same stuff."""
 
 _LEAST_SCALE = 0.03
@@ -34,29 +34,38 @@ _LEAST_SCALE = 0.03
 def register(source: Scene, reference: Scene, prior: Prior) -> Parameters:
     """Return the (15,) change of light under which `source` looks most like `reference`.
 
+    A blurred matching draws colours together; what it does to the source matched with itself is taken off, so that
+    equal scenes stand still (the same repair as the debiased divergences of Feydy et al. 2019).
+
     References:
         Myronenko & Song (2010), Point set registration: coherent point drift, for the mixture with a uniform share;
         Student reweighting as in `fit_camera`.
     """
     light = oklab_to_linear_srgb(source.colours)
-    alike = _texture_kernel(source, reference, TEXTURE)
-    ours, theirs = source.weights, reference.weights
-    foreign_here = FOREIGN * alike.sum(axis=1) / len(reference) + 1e-9
-    foreign_there = FOREIGN * alike.sum(axis=0) / len(source) + 1e-9
+    across = _texture_kernel(source, reference, TEXTURE)
+    within = _texture_kernel(source, source, TEXTURE)
     parameters, steps = np.array(prior.mean), 0.02 * prior.deviations
     for blur in BLURS:
         rendered, slope = sensitivities(parameters, light, steps)
-        kernel = alike * _colour_kernel(rendered, reference.colours, blur)
-        there = kernel * ours[:, None]
-        here = kernel * theirs
-        plan = there / (there.sum(axis=0) + foreign_there) * theirs
-        plan += here / (here.sum(axis=1, keepdims=True) + foreign_here[:, None]) * ours[:, None]
-        mass = plan.sum(axis=1) / 2
-        goal = (plan @ reference.colours) / np.maximum(2 * mass, 1e-12)[:, None]
-        parameters = parameters + _step(
-            parameters, goal - rendered, slope, mass * WORTH, max(0.7 * blur, _LEAST_SCALE), prior
-        )
+        goal, mass = _matched(across, rendered, reference.colours, blur)
+        drawn, _ = _matched(within, rendered, rendered, blur)
+        scale = max(0.7 * blur, _LEAST_SCALE)
+        parameters = parameters + _step(parameters, goal - drawn, slope, mass * WORTH, scale, prior)
     return parameters
+
+
+def _matched(
+    alike: NDArray[np.float64], ours: Colours, theirs: Colours, blur: float
+) -> tuple[Colours, NDArray[np.float64]]:
+    """Return (n, 3) what each of `ours` is matched with on average, and (n,) the mass of it that finds a match."""
+    n, m = alike.shape
+    kernel = alike * _colour_kernel(ours, theirs, blur)
+    foreign_here = FOREIGN * alike.mean(axis=1, keepdims=True) + 1e-9
+    foreign_there = FOREIGN * alike.mean(axis=0) + 1e-9
+    plan = kernel / (kernel.mean(axis=0) + foreign_there)
+    plan += kernel / (kernel.mean(axis=1, keepdims=True) + foreign_here)
+    mass = plan.sum(axis=1)
+    return (plan @ theirs) / np.maximum(mass, 1e-12)[:, None], mass / (2 * n * m)
 
 
 def _step(
