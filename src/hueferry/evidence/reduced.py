@@ -22,7 +22,7 @@ from hueferry.evidence.keypoints import Keypoints, find_keypoints
 from hueferry.evidence.scene import Scene, scene_of
 from hueferry.picture import Picture
 
-MAX_PIXELS = 400_000
+MAX_PIXELS = 250_000
 """Pixels of the reduced form at most: keypoints are as sure as on more, and found in a tenth of a second."""
 
 CLIPPED = 1.5 / 255

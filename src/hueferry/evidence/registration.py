@@ -73,9 +73,9 @@ def _step(
     prior: Prior,
 ) -> Parameters:  # fmt: skip
     say = trust * 7 / (4 + (residual**2).sum(axis=1) / scale**2) / scale**2
-    weighted = slope * say[:, None, None]
-    precision = np.einsum("nci,ncj->ij", weighted, slope) + prior.precision
-    gradient = np.einsum("nci,nc->i", weighted, residual) - prior.precision @ (parameters - prior.mean)
+    weighted = (slope * say[:, None, None]).reshape(-1, slope.shape[2])
+    precision = weighted.T @ slope.reshape(-1, slope.shape[2]) + prior.precision
+    gradient = weighted.T @ residual.ravel() - prior.precision @ (parameters - prior.mean)
     step = np.linalg.solve(precision, gradient)
     return np.asarray(step * min(1.0, 2.0 / max(float(np.abs(step / prior.deviations).max()), 1e-12)))
 
