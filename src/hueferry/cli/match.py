@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from hueferry.series.job import Done
 
 SOME_FAILED = 1
+NOTHING_WRITTEN = 2
 
 
 def match(
@@ -57,7 +58,7 @@ def match(
     else:
         show_costs(record)
     if record.failures:
-        raise typer.Exit(SOME_FAILED)
+        raise typer.Exit(SOME_FAILED if record.entries else NOTHING_WRITTEN)
 
 
 def say(number: int, count: int, outcome: Done | Failure) -> None:

@@ -12,9 +12,9 @@ from hueferry.maps.gaussian import fit_gaussian
 from hueferry.palettes.palette import Palette
 from hueferry.transport.mixture import Mixture, component_maps, fit_mixture_model, solve_mixture
 
-COMPONENTS = 6
-FLOOR = 4e-4
-"""Variance added to every component, Oklab units squared: two hundredths, below which a lattice cannot follow."""
+COMPONENTS = 16
+FLOOR = 5e-5
+"""Variance added to every component, Oklab units squared: that of a cell of a fine lattice."""
 
 
 @attrs.frozen(eq=False)
@@ -47,13 +47,15 @@ def fit_mixture(source: Palette, target: Palette, *, seed: int = 0, components: 
     Args:
         source: palette to carry over.
         target: palette to reach.
-        seed: of the fits.
+        seed: of the first fit, to the source.
         components: normals in either mixture, at most.
     """
     affine = fit_gaussian(source, target)
     start = affine(source.colours)
-    ours = fit_mixture_model(start, source.weights, components=components, seed=seed, floor=FLOOR)
-    theirs = fit_mixture_model(target.colours, target.weights, components=components, seed=seed, floor=FLOOR)
+    first = fit_mixture_model(start, source.weights, components=components, seed=seed, floor=FLOOR)
+    # Both go on from the same start, so that equal palettes have equal mixtures.
+    ours = fit_mixture_model(start, source.weights, components=components, start=first, floor=FLOOR)
+    theirs = fit_mixture_model(target.colours, target.weights, components=components, start=first, floor=FLOOR)
     plan = solve_mixture(ours, theirs).coupling
     conditional = plan / np.maximum(plan.sum(axis=1, keepdims=True), 1e-300)
     matrices, offsets = component_maps(ours, theirs)

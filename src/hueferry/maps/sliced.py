@@ -29,9 +29,13 @@ def fit_sliced(source: Palette, target: Palette, *, seed: int = 0, rotations: in
     return Composed(affine, chain_between(start, source.weights, target, bases))
 
 
-def fit_channels(source: Palette, target: Palette) -> Chain:
-    """Return one monotone map a channel of Oklab: lightness, a and b by themselves."""
-    return chain_between(source.colours, source.weights, target, [np.eye(3)])
+def fit_channels(source: Palette, target: Palette) -> Composed:
+    """Return the Gaussian map followed by one monotone map a channel of Oklab: lightness, a and b by themselves.
+
+    Channels alone cannot turn a palette; after the Gaussian map they need not.
+    """
+    affine = fit_gaussian(source, target)
+    return Composed(affine, chain_between(affine(source.colours), source.weights, target, [np.eye(3)]))
 
 
 def chain_between(start: Colours, weights: Weights, target: Palette, bases: list[NDArray[np.float64]]) -> Chain:
