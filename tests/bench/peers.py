@@ -54,6 +54,6 @@ def growth(sizes: tuple[int, ...] = (1, 4, 24)) -> dict[str, list[float]]:
         shape = height, int(height * 1.5)
         row = stages(shape, 2)["default"]
         found["megapixels"].append(size)
-        found["milliseconds"].append(sum(row[stage] for stage in ("read", "fit", "apply", "write")))
+        found["milliseconds"].append(sum(row[stage]["wall"] for stage in ("read", "fit", "apply", "write")))
         found["peak MB"].append(peak_of_one_picture(shape, "default"))
     return found
