@@ -66,8 +66,10 @@ def test_stained_tissue_is_found_and_glass_is_not() -> None:
 
 
 @pytest.mark.parametrize(
-    "ink", [(0.1, 0.15, 0.5), (0.05, 0.45, 0.2), (0.8, 0.1, 0.12), (0.05, 0.05, 0.06)], ids=["blue", "green", "red", "black"]
-)  # fmt: skip
+    "ink",
+    [(0.1, 0.15, 0.5), (0.05, 0.45, 0.2), (0.8, 0.1, 0.12), (0.05, 0.05, 0.06)],
+    ids=["blue", "green", "red", "black"],
+)
 def test_pen_marks_are_not_tissue(ink: tuple[float, ...]) -> None:
     codes = np.full((384, 512, 3), 0.95)
     codes[60:200, 100:300] = section(np.full(3, 0.95))[60:200, 100:300]

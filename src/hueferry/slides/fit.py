@@ -19,6 +19,9 @@ from hueferry.tables.cells import Occupied
 from hueferry.tables.certificate import Certificate, certify, table_error
 from hueferry.tables.table import Table
 
+MAX_GAIN = 4.0
+"""Stretch of codes that is accepted: a stain twice as strong stretches pale codes by two, by design."""
+
 _LEAST_PAIRS = 300
 _PALE = 0.08
 _CELLS = 4096
@@ -87,11 +90,11 @@ def fit_slide(
         reference: what it is brought towards.
         aim: `agree` or `adopt`.
         strength: share of the way, 0 … 1.
-        max_gain: largest stretch in code values; None means 2.5 for 8 bits and 4 beyond.
+        max_gain: largest stretch in code values; None means `MAX_GAIN`.
         method: the transport under `adopt`.
     """
     map_, basis, sentences = find_map(look, reference, aim=aim, method=method)
-    cap = max_gain if max_gain is not None else (2.5 if look.bits <= 8 else 4.0)
+    cap = MAX_GAIN if max_gain is None else max_gain
     table, certificate, more = freeze(map_, look, reference.scale(look.scale.encoding), strength=strength, max_gain=cap)
     if basis == "none":
         table, certificate, more = freeze(IDENTITY, look, look.scale, strength=0.0, max_gain=cap)
@@ -180,5 +183,6 @@ def freeze(
 def occupied_codes(look: Look) -> Occupied:
     """Return the codes that the slide holds: its tissue, and its glass."""
     step = max(1, len(look.codes) // _CELLS)
-    codes = np.concatenate([look.codes[::step], look.scale.glass[None, :]])
-    return Occupied(codes, np.full(len(codes), 1 / len(codes)))
+    tissue = look.codes[::step]
+    weights = np.append(np.full(len(tissue), 0.9 / max(len(tissue), 1)), 0.1)
+    return Occupied(np.concatenate([tissue, look.scale.glass[None, :]]), weights / weights.sum())

@@ -16,7 +16,7 @@ from hueferry.slides.statistics import error_covariance, statistics
 
 Parameters = NDArray[np.float64]
 
-CAUTION = 6.0
+CAUTION = 20.0
 """What the content covariance counts for: halves of one slide are more alike than two slides."""
 
 SPREADS = np.concatenate([[0.25, 0.25], np.full(6, 0.07), np.full(3, 0.08), np.full(3, 0.002)])

@@ -20,6 +20,10 @@ THUMBNAIL = 1024
 _MOST_AT_ONCE = 1 << 24
 
 
+def _frozen(texts: Mapping[str, str]) -> Mapping[str, str]:
+    return MappingProxyType(dict(texts))
+
+
 @attrs.frozen
 class SlideFacts:
     """What a file says of a slide besides its pixels.
@@ -34,7 +38,7 @@ class SlideFacts:
     format: str
     pitch: tuple[float, float] | None = None
     background: tuple[int, int, int] | None = None
-    texts: Mapping[str, str] = attrs.field(factory=dict, converter=lambda given: MappingProxyType(dict(given)))
+    texts: Mapping[str, str] = attrs.field(factory=dict, converter=_frozen)
 
 
 class SlideSource(Protocol):

@@ -18,7 +18,8 @@ from hueferry.picture import Encoding, Window
 from hueferry.slides.source import SlideFacts
 
 TiffPage: TypeAlias = Any
-"""A tifffile page; the library has no types."""
+TiffFile: TypeAlias = Any
+"""A tifffile page and file; the library has no types."""
 
 _KEPT = 64 << 20
 _LARGEST_SEGMENT = 1 << 28
@@ -58,10 +59,17 @@ class TiffSlide:
         self._path = path
         try:
             self._tiff = tifffile.TiffFile(path)
+        except (tifffile.TiffFileError, OSError, ValueError) as error:
+            raise PictureError(path, f"the TIFF cannot be opened as a slide: {error}") from error
+        try:
             pages = _pyramid(path, self._tiff)
             self._levels = [_level(path, page) for page in pages]
             self._descriptor = os.open(path, os.O_RDONLY)
+        except PictureError:
+            self._tiff.close()
+            raise
         except (tifffile.TiffFileError, OSError, ValueError, KeyError, IndexError, TypeError) as error:
+            self._tiff.close()
             raise PictureError(path, f"the TIFF cannot be opened as a slide: {error}") from error
         self._cache: OrderedDict[tuple[int, int], Pixels] = OrderedDict()
         self._held, self._lock = 0, threading.Lock()
@@ -149,9 +157,23 @@ class TiffSlide:
         tables = page.jpegtables
         try:
             decoded = page.decode(data, index, jpegtables=tables)[0] if tables else page.decode(data, index)[0]
-        except Exception as error:  # noqa: BLE001 - every codec raises its own kind
+        except Exception as error:  # every codec raises its own kind
             raise PictureError(self._path, f"tile {index} of level {level} is broken: {error}") from error
         return np.asarray(decoded[0][:, :, :3])
+
+    def check_tiles(self, level: int) -> None:
+        """Check that every tile of a level lies within the file.
+
+        Raises:
+            PictureError: one does not, or is missing.
+        """
+        chosen = self._levels[level]
+        wanted = -(-chosen.height // chosen.rows) * -(-chosen.width // chosen.columns)
+        counts, offsets = chosen.page.databytecounts, chosen.page.dataoffsets
+        size = os.fstat(self._descriptor).st_size
+        for index in range(wanted):
+            if index >= len(counts) or counts[index] == 0 or offsets[index] + counts[index] > size:
+                raise PictureError(self._path, f"tile {index} of level {level} is missing")
 
     def close(self) -> None:
         """Let go of the file."""
@@ -161,7 +183,7 @@ class TiffSlide:
             self._descriptor = -1
 
 
-def _pyramid(path: Path, tiff: Any) -> list[TiffPage]:
+def _pyramid(path: Path, tiff: TiffFile) -> list[TiffPage]:
     """Return the pages of the largest picture and of its reductions, whether they are SubIFDs or in the main chain."""
     first = tiff.pages[0]
     if tiff.is_ome and len(tiff.series[0].levels[0].pages) > 1:
@@ -199,7 +221,7 @@ def _encoding(path: Path, page: TiffPage) -> Encoding:
     return encoding_of(path, page.iccprofile)
 
 
-def _pitch(tiff: Any, page: TiffPage) -> tuple[float, float] | None:
+def _pitch(tiff: TiffFile, page: TiffPage) -> tuple[float, float] | None:
     """Return micrometres a pixel: from OME-XML where there is some, else from the resolution tags."""
     if tiff.is_ome and tiff.ome_metadata:
         from hueferry.slides.ome import pitch_of
