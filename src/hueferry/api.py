@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Sequence
+from datetime import datetime
 from enum import StrEnum
 from itertools import combinations
 from pathlib import Path
@@ -264,3 +265,57 @@ def demo_samples(out: Path) -> Samples:
         if not (folder / "hero.jpg").is_file():
             render_samples(folder)
     return Samples(folder / "hero.jpg", tuple(sorted(folder.glob("bench-*"))))
+
+
+def drift_add(log: Path, picture: Path, *, to: Path, device: str = "", when: datetime | None = None) -> dict[str, Any]:
+    """Measure a control frame against its reference, append the reading to a log, and return it as JSON values.
+
+    Raises:
+        InputError: a picture cannot be read, or the file is not a drift log.
+    """
+    from hueferry.drift.log import add_reading
+    from hueferry.drift.reading import Labels
+
+    labels = Labels(device=device, picture=picture.name, reference=to.name, when=when)
+    reading = add_reading(log, read(picture), as_reference(to).palette, labels)
+    return attrs.asdict(reading) | {"schema": "hueferry/drift-1", "when": reading.when.isoformat()}
+
+
+def drift_chart(
+    log: Path, *, device: str | None = None, out: Path | None = None, overwrite: bool = False
+) -> dict[str, Any]:
+    """Chart one device of a drift log, write the chart if asked, and return what it says as JSON values.
+
+    Args:
+        log: the drift log.
+        device: whose; None takes the only one.
+        out: where to write: `.svg` the chart, `.csv` its table.
+        overwrite: replace an earlier chart.
+
+    Raises:
+        InputError: there is no such log or device, several devices and none named, or a suffix that names no form.
+    """
+    from hueferry.drift.chart import chart
+    from hueferry.drift.drawing import as_svg
+    from hueferry.drift.log import list_devices, list_readings
+    from hueferry.drift.table import as_csv
+    from hueferry.files.atomic import write_bytes
+
+    devices = list_devices(log)
+    if device is None and len(devices) > 1:
+        raise InputError(f"{log} holds several devices; choose one with --device: " + ", ".join(devices))
+    found = chart(list_readings(log, device=device))
+    if out is not None:
+        forms = {".svg": as_svg, ".csv": as_csv}
+        if out.suffix.lower() not in forms:
+            raise InputError(f"{out}: the suffix names no form of a chart; use .svg or .csv")
+        write_bytes(out, forms[out.suffix.lower()](found).encode("utf-8"), overwrite=overwrite)
+    drift = None if found.drift is None else attrs.asdict(found.drift)
+    return {
+        "schema": "hueferry/drift-1",
+        "device": found.device,
+        "state": found.state.value,
+        "sentence": found.sentence,
+        "readings": len(found.readings),
+        "drift": drift,
+    }

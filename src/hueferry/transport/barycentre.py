@@ -175,3 +175,51 @@ def common_palette(palettes: Sequence[Palette], weights: Weights | None = None, 
     spread = float(np.sqrt(shares @ np.array([one.spread**2 for one in palettes])))
     pixels = sum(one.pixels for one in palettes)
     return thin(Palette(np.concatenate(carried), together / together.sum(), spread=spread, pixels=pixels), size)
+
+
+def sliced_barycentre(
+    supports: Sequence[Colours],
+    masses: Sequence[Weights],
+    weights: Weights,
+    start: Colours,
+    *,
+    rounds: int = 60,
+    directions: int = 24,
+) -> Colours:
+    """Return (n, 3) equally weighted colours near the sliced barycentre of several clouds.
+
+    Every round moves the cloud along each of a few evenly spread lines towards the mean of what the clouds want there.
+
+    Args:
+        supports: k of (m, 3).
+        masses: k of (m,) shares.
+        weights: (k,) shares.
+        start: (n, 3) where to begin.
+        rounds: how many.
+        directions: lines a round, turned differently each time.
+
+    References:
+        Bonneel, Rabin, Peyré & Pfister (2015), Sliced and Radon Wasserstein barycenters of measures, section 3.
+    """
+    from hueferry.transport.sliced import turned_directions
+
+    shares = checked_shares(weights, len(supports))
+    cloud = np.array(start, dtype=np.float64)
+    levels = (np.arange(len(cloud)) + 0.5) / len(cloud)
+    for number in range(rounds):
+        step = np.zeros_like(cloud)
+        for line in turned_directions(directions, 3, seed=number):
+            order = np.argsort(cloud @ line, kind="stable")
+            wanted = sum(
+                share * _quantiles(support @ line, mass, levels)
+                for share, support, mass in zip(shares, supports, masses, strict=True)
+            )
+            step[order] += np.outer(wanted - (cloud @ line)[order], line)
+        cloud += step * 3 / directions
+    return cloud
+
+
+def _quantiles(positions: Matrix, mass: Weights, levels: Matrix) -> Matrix:
+    order = np.argsort(positions, kind="stable")
+    middle = np.cumsum(mass[order]) - mass[order] / 2
+    return np.asarray(np.interp(levels, middle, positions[order]))

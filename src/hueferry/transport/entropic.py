@@ -91,26 +91,77 @@ def entropic_potentials(
 ) -> Potentials:
     """Find the potentials alone, in float32 by default: what maps need.
 
+    Args:
+        source: (n,) weights, summing to 1; zeros are allowed.
+        target: (m,) weights, summing to 1; zeros are allowed.
+        cost: (n, m) costs.
+        epsilon: blur of the plan, in the unit of `cost`; > 0.
+        tolerance: largest misplaced mass accepted, as a share of 1.
+        iterations: at most, over all ε.
+        dtype: of the kernel.
+
     Raises:
         InputError: `epsilon` is not positive.
         NotConverged: the iterations left more than `tolerance` misplaced.
     """
-    if not epsilon > 0 or not np.isfinite(epsilon):
-        raise InputError(f"the blur ε must be positive, not {epsilon}")
-    rows, columns = source > 0, target > 0
-    a, b = source[rows], target[columns]
-    inner = np.ascontiguousarray(cost[np.ix_(rows, columns)], dtype=dtype)
-    f, g = np.zeros(len(a)), np.zeros(len(b))
-    spent, misplaced = 0, np.inf
-    for level in _levels(float(inner.max()), epsilon):
-        last = level == epsilon
-        goal = tolerance if last else max(tolerance, 1e-2)
-        budget = iterations - spent if last else min(60, iterations - spent)
-        f, g, misplaced, used = _iterate(a, b, inner, g, epsilon=level, tolerance=goal, iterations=budget)
+    problem = _Problem.of(source, target, cost, epsilon=epsilon, dtype=dtype)
+    g, spent = np.zeros(len(problem.b)), 0
+    for level in _levels(float(problem.cost.max()), epsilon)[:-1]:
+        budget = min(60, iterations - spent)
+        _, g, _, used = _iterate(problem, g, epsilon=level, tolerance=max(tolerance, 1e-2), iterations=budget)
         spent += used
+    return _finish(problem, g, tolerance=tolerance, iterations=iterations, spent=spent)
+
+
+def warm_potentials(
+    source: Weights, target: Weights, cost: Costs, start: Potential, *, epsilon: float, tolerance: float = 1e-3
+) -> Potentials:
+    """Find the potentials from (m,) g of a problem that differs little, without coming down from a large ε.
+
+    Raises:
+        InputError: `epsilon` is not positive.
+        NotConverged: too much mass is still misplaced after 20,000 iterations.
+    """
+    problem = _Problem.of(source, target, cost, epsilon=epsilon, dtype=np.float32)
+    g = np.asarray(start, dtype=np.float64)[problem.columns]
+    return _finish(problem, g, tolerance=tolerance, iterations=20_000, spent=0)
+
+
+@attrs.frozen(eq=False)
+class _Problem:
+    """What is left of a problem without the colours that have no weight."""
+
+    a: Weights
+    b: Weights
+    cost: NDArray[Any]
+    epsilon: float
+    rows: NDArray[np.bool_]
+    columns: NDArray[np.bool_]
+
+    @classmethod
+    def of(
+        cls,
+        source: Weights,
+        target: Weights,
+        cost: Costs,
+        *,
+        epsilon: float,
+        dtype: type[np.float32] | type[np.float64],
+    ) -> _Problem:
+        if not epsilon > 0 or not np.isfinite(epsilon):
+            raise InputError(f"the blur ε must be positive, not {epsilon}")
+        rows, columns = source > 0, target > 0
+        inner = np.ascontiguousarray(cost[np.ix_(rows, columns)], dtype=dtype)
+        return cls(source[rows], target[columns], inner, epsilon, rows, columns)
+
+
+def _finish(problem: _Problem, g: Potential, *, tolerance: float, iterations: int, spent: int) -> Potentials:
+    f, g, misplaced, used = _iterate(
+        problem, g, epsilon=problem.epsilon, tolerance=tolerance, iterations=iterations - spent
+    )
     if not misplaced <= tolerance:
-        raise NotConverged("entropic", spent, misplaced, tolerance)
-    return Potentials(_everywhere(f, rows), _everywhere(g, columns), misplaced, spent)
+        raise NotConverged("entropic", spent + used, misplaced, tolerance)
+    return Potentials(_everywhere(f, problem.rows), _everywhere(g, problem.columns), misplaced, spent + used)
 
 
 def soft_minimum(cost: NDArray[Any], potential: Potential, weights: Weights, epsilon: float) -> Potential:
@@ -142,9 +193,10 @@ def _everywhere(potential: Potential, kept: NDArray[np.bool_]) -> Potential:
 
 
 def _iterate(
-    a: Weights, b: Weights, cost: NDArray[Any], g: Potential, *, epsilon: float, tolerance: float, iterations: int
+    problem: _Problem, g: Potential, *, epsilon: float, tolerance: float, iterations: int
 ) -> tuple[Potential, Potential, float, int]:
     """Scale rows and columns at one ε until the rows are right; columns are exact after every round."""
+    a, b, cost = problem.a, problem.b, problem.cost
     f = soft_minimum(cost, g, b, epsilon)
     g = soft_minimum(cost.T, f, a, epsilon)
     kernel, u, v = _kernel(cost, f, g, a, b, epsilon), np.ones(len(a)), np.ones(len(b))
