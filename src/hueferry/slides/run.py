@@ -1,0 +1,321 @@
+"""A whole slide, or a folder of them: looked at, fitted, corrected window by window, written, and measured."""
+
+from __future__ import annotations
+
+from collections import deque
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import Future, ThreadPoolExecutor
+from enum import StrEnum
+from pathlib import Path
+from typing import Any
+
+import attrs
+import numpy as np
+
+from hueferry.arrays import Mask, Pixels
+from hueferry.errors import HueferryError, InputError, OutputError, RefusedError
+from hueferry.maps.method import Method
+from hueferry.picture import Picture, Window
+from hueferry.slides.cautions import AMOUNT_IS_MEASURED, CAUTIONS
+from hueferry.slides.codecs import Packing
+from hueferry.slides.density import Light
+from hueferry.slides.fit import SlideAim, SlideFit, fit_slide
+from hueferry.slides.look import Look, look_at
+from hueferry.slides.quality import compare, describe_slide, overlay, within
+from hueferry.slides.readers import find_slides, open_slide
+from hueferry.slides.reference import SlideReference, reference_of
+from hueferry.slides.refuse import amount_is_measured, reason_against
+from hueferry.slides.source import SlideSource, thumbnail_of
+from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
+
+_WIDE = 1 << 16
+"""Columns above which one band at a time is read ahead, so that memory stays bounded."""
+
+
+class Container(StrEnum):
+    """What a slide is written as."""
+
+    OME = "ome"
+    FLAT = "flat"
+    ZARR = "zarr"
+
+
+SUFFIXES = {Container.OME: ".ome.tif", Container.FLAT: ".tif", Container.ZARR: ".ome.zarr"}
+
+
+@attrs.frozen(kw_only=True)
+class StainSettings:
+    """Settings of a run on slides; equal settings and inputs give equal bytes.
+
+    Attributes:
+        aim: `agree` or `adopt`.
+        light: what Beer–Lambert's law is applied to.
+        strength: share of the way, 0 … 1.
+        max_gain: largest stretch in code values; None means the default for slides.
+        method: transport under `adopt`.
+        layout: "ome" (SubIFDs), "flat" (pages, for OpenSlide) or "zarr".
+        packing: compression of tiles; None means JPEG 4:4:4 for 8 bit and deflate for deeper slides.
+        quality: of JPEG, 1 … 100.
+        measure_only: write no slide.
+        correct_measured: correct also where the amount of a stain is likely to be the measurement (DAB).
+        keep_texts: carry the file's free text and identifiers over.
+        overwrite: replace outputs of the same name.
+        threads: windows at the same time; the bytes do not depend on it.
+    """
+
+    aim: SlideAim = SlideAim.AGREE
+    light: Light = Light.ENCODED
+    strength: float = attrs.field(default=1.0, validator=[attrs.validators.ge(0.0), attrs.validators.le(1.0)])
+    max_gain: float | None = None
+    method: Method = Method.ENTROPIC
+    layout: Container = Container.OME
+    packing: Packing | None = None
+    quality: int = attrs.field(default=90, validator=[attrs.validators.ge(1), attrs.validators.le(100)])
+    measure_only: bool = False
+    correct_measured: bool = False
+    keep_texts: bool = False
+    overwrite: bool = False
+    threads: int = 2
+
+
+@attrs.frozen(eq=False)
+class SlideOutcome:
+    """What happened to one slide.
+
+    Attributes:
+        source: the file or folder read.
+        output: what was written; None if the slide was only measured.
+        overlay: the thumbnail with its tissue outlined; None if nothing was written.
+        fit: the correction; None if the slide was only measured without one.
+        numbers: figures before and after, certificate: JSON values.
+        sentences: what was done and why.
+        cautions: what must be told with it.
+    """
+
+    source: Path
+    output: Path | None
+    overlay: Path | None
+    fit: SlideFit | None
+    numbers: dict[str, Any]
+    sentences: tuple[str, ...]
+    cautions: tuple[str, ...] = CAUTIONS
+
+
+@attrs.frozen
+class SlideFailure:
+    """A slide that could not be done, and why."""
+
+    source: Path
+    reason: str
+
+
+def look_at_slide(path: Path, source: SlideSource, *, light: Light, mask: Mask | None = None) -> Look:
+    """Look at a slide's thumbnail, or refuse it.
+
+    Raises:
+        RefusedError: it is no bright-field slide.
+    """
+    look = look_at(thumbnail_of(source), source.encoding, bits=source.bits, light=light, mask=mask)
+    top = 1.0 if look.thumbnail.dtype == np.float32 else float(2**look.bits - 1)
+    reason = reason_against(look.thumbnail.astype(np.float64) / top, look.regions)
+    if reason is not None:
+        raise RefusedError(path, reason)
+    return look
+
+
+def stain_slide(
+    path: Path, reference: SlideReference, out: Path, *, settings: StainSettings | None = None, mask: Mask | None = None
+) -> SlideOutcome:
+    """Bring one slide towards a reference.
+
+    Args:
+        path: the slide.
+        reference: what it is brought towards.
+        out: folder that outputs go to.
+        settings: how.
+        mask: (rows, columns) of the thumbnail, true where tissue may be.
+
+    Raises:
+        RefusedError: it is no bright-field slide.
+        PictureError: it cannot be read.
+        OutputError: the output's name is taken, or nothing can be written there.
+    """
+    chosen = settings or StainSettings()
+    target = output_path(path, out, chosen.layout)
+    if target.resolve() == path.resolve():
+        raise OutputError(target, "this is the original, which is never overwritten; name another folder")
+    source = open_slide(path)
+    try:
+        look = look_at_slide(path, source, light=chosen.light, mask=mask)
+        fit = fit_slide(
+            look, reference, aim=chosen.aim, strength=chosen.strength, max_gain=chosen.max_gain, method=chosen.method
+        )
+        numbers = _numbers(look, fit, reference)
+        held_back = amount_is_measured(look.density) and not chosen.correct_measured
+        sentences = (f"optical density of {chosen.light.value} values", *fit.sentences)
+        if chosen.measure_only or held_back:
+            said = (*sentences, AMOUNT_IS_MEASURED) if held_back else sentences
+            return SlideOutcome(path, None, None, fit, numbers, said)
+        _write(source, fit, target, chosen)
+        shown = target.with_name(stem_of(path) + ".tissue.png")
+        return SlideOutcome(path, target, _write_overlay(look, shown, chosen), fit, numbers, sentences)
+    finally:
+        source.close()
+
+
+def measure_slide(path: Path, *, light: Light = Light.ENCODED) -> dict[str, Any]:
+    """Return the figures of one slide, without a reference.
+
+    Raises:
+        RefusedError: it is no bright-field slide.
+        PictureError: it cannot be read.
+    """
+    source = open_slide(path)
+    try:
+        return describe_slide(look_at_slide(path, source, light=light))
+    finally:
+        source.close()
+
+
+def stain(
+    paths: Sequence[Path],
+    *,
+    to: Sequence[Path] = (),
+    out: Path,
+    settings: StainSettings | None = None,
+    on_done: Callable[[SlideOutcome | SlideFailure], None] | None = None,
+) -> list[SlideOutcome | SlideFailure]:
+    """Bring slides towards reference slides or, without any, towards what they have in common.
+
+    Args:
+        paths: slides, and folders of slides.
+        to: reference slides; several make a house palette.
+        out: folder that outputs go to; made if it does not exist.
+        settings: how.
+        on_done: called after each slide.
+
+    Raises:
+        InputError: there is no slide, no usable reference, or two outputs would have one name.
+    """
+    chosen = settings or StainSettings()
+    slides = find_slides(paths)
+    _check_names(slides, out, chosen.layout)
+    reference = reference_from(find_slides(to) if to else slides, light=chosen.light)
+    out.mkdir(parents=True, exist_ok=True)
+    results: list[SlideOutcome | SlideFailure] = []
+    for path in slides:
+        try:
+            results.append(stain_slide(path, reference, out, settings=chosen))
+        except HueferryError as error:
+            results.append(SlideFailure(path, str(error)))
+        if on_done is not None:
+            on_done(results[-1])
+    return results
+
+
+def reference_from(paths: Sequence[Path], *, light: Light = Light.ENCODED) -> SlideReference:
+    """Make a reference from slides; those that cannot be read are left out unless none can.
+
+    Raises:
+        InputError: no slide can be used; the message says why the last could not.
+    """
+    looks, last = [], ""
+    for path in paths:
+        try:
+            source = open_slide(path)
+            try:
+                looks.append(look_at_slide(path, source, light=light))
+            finally:
+                source.close()
+        except InputError as error:
+            last = str(error)
+    if not looks:
+        raise InputError(f"no reference slide can be used; {last}")
+    return reference_of(looks)
+
+
+def stem_of(path: Path) -> str:
+    """Return the name of a slide without its suffixes."""
+    name = path.name
+    for suffix in (".ome.zarr", ".ome.tif", ".ome.tiff", ".zarr", path.suffix):
+        if suffix and name.lower().endswith(suffix):
+            return name[: -len(suffix)] or name
+    return name
+
+
+def output_path(path: Path, out: Path, layout: Container) -> Path:
+    """Return where the output of a slide goes."""
+    return out / (stem_of(path) + SUFFIXES[layout])
+
+
+def _check_names(slides: Sequence[Path], out: Path, layout: Container) -> None:
+    taken: dict[str, Path] = {}
+    for path in slides:
+        name = output_path(path, out, layout).name.casefold()
+        if name in taken:
+            raise InputError(f"{taken[name]} and {path} would both become {name}; run them into different folders")
+        taken[name] = path
+
+
+def _numbers(look: Look, fit: SlideFit, reference: SlideReference) -> dict[str, Any]:
+    from hueferry.applying.engine import Engine
+
+    engine = Engine(fit.table, look.thumbnail.dtype, look.bits)
+    after = within(look, engine.apply(np.ascontiguousarray(look.thumbnail)))
+    return {**compare(look, after, reference), "basis": fit.basis, "certificate": fit.certificate.as_dict()}
+
+
+def _write(source: SlideSource, fit: SlideFit, target: Path, settings: StainSettings) -> None:
+    dtype = source.read(Window(0, 0, 1, 1)).dtype
+    form = SlideForm(source.shape, dtype, source.encoding, source.facts.pitch)
+    bands = corrected_bands(source, fit, threads=settings.threads)
+    if settings.layout is Container.ZARR:
+        from hueferry.slides.zarr_writer import write_zarr_slide
+
+        write_zarr_slide(target, bands, form, threads=settings.threads, overwrite=settings.overwrite)
+        return
+    packing = settings.packing or (Packing.JPEG if dtype == np.uint8 else Packing.DEFLATE)
+    options = TiffOptions(
+        layout=Layout(settings.layout.value), packing=packing, quality=settings.quality, threads=settings.threads,
+        note=_note(source, settings),
+    )  # fmt: skip
+    write_tiff_slide(target, bands, form, options=options, overwrite=settings.overwrite)
+
+
+def _note(source: SlideSource, settings: StainSettings) -> str:
+    derived = (
+        f"Derived: stain colours brought towards a reference (aim {settings.aim.value}) by hueferry. {CAUTIONS[0]}"
+    )
+    if not settings.keep_texts:
+        return derived
+    texts = "; ".join(f"{name}: {text}" for name, text in source.facts.texts.items())
+    plain = "".join(character if 32 <= ord(character) < 127 else " " for character in texts)
+    return f"{derived} Source: {plain}"
+
+
+def corrected_bands(source: SlideSource, fit: SlideFit, *, threads: int = 2) -> Iterator[Pixels]:
+    """Yield the corrected full size in bands of `TILE` rows; read and mapped by threads, a few at a time."""
+    from hueferry.applying.engine import Engine
+
+    height, width = source.shape
+    engine = Engine(fit.table, source.read(Window(0, 0, 1, 1)).dtype, source.bits)
+
+    def work(top: int) -> Pixels:
+        return engine.apply(source.read(Window(top, 0, min(TILE, height - top), width)), top=top)
+
+    ahead = 1 if width > _WIDE else max(1, threads)
+    with ThreadPoolExecutor(max(1, threads)) as pool:
+        pending: deque[Future[Pixels]] = deque()
+        for top in range(0, height, TILE):
+            pending.append(pool.submit(work, top))
+            if len(pending) > ahead:
+                yield pending.popleft().result()
+        while pending:
+            yield pending.popleft().result()
+
+
+def _write_overlay(look: Look, path: Path, settings: StainSettings) -> Path:
+    from hueferry.colour.encoding import SRGB
+    from hueferry.files.write import write
+
+    return write(Picture(overlay(look), SRGB), path, overwrite=settings.overwrite)
