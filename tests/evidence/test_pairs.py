@@ -5,6 +5,7 @@ import numpy as np
 import pytest
 
 from evidence.scenes import CAST, picture_of, relit, textured
+from hueferry.colour.spaces import linear_srgb_to_oklab, oklab_to_linear_srgb
 from hueferry.evidence.keypoints import match
 from hueferry.evidence.pairs import Pairs, find_homography, find_pairs
 from hueferry.evidence.reduced import Reduced, reduce_picture
@@ -34,8 +35,6 @@ def test_pairs_hold_the_colours_of_the_same_surface() -> None:
     pairs = find_pairs(reduced(scene), reduced(relit(scene)))
 
     assert pairs is not None
-    from hueferry.colour.spaces import linear_srgb_to_oklab, oklab_to_linear_srgb
-
     light = oklab_to_linear_srgb(pairs.source)
     unclipped = ~(pairs.low | pairs.high).any(axis=1)
     wanted = linear_srgb_to_oklab(light * CAST)
@@ -79,3 +78,25 @@ def test_matching_nothing_gives_nothing() -> None:
 
     assert len(match(flat.keypoints, scene.keypoints)[0]) == 0
     assert find_pairs(flat, scene) is None
+
+
+def test_a_caption_common_to_two_pictures_is_not_their_surface() -> None:
+    first, second = textured(9), textured(10)
+    for picture in (first, second):
+        cv2.rectangle(picture, (0, 240), (400, 300), (20, 20, 20), -1)
+        cv2.putText(picture, "Marrowfield Tileworks 17", (8, 280), cv2.FONT_HERSHEY_TRIPLEX, 0.9, (230, 230, 230), 1)
+
+    assert find_pairs(reduced(first), reduced(second)) is None
+
+
+def test_what_stands_in_front_is_left_out() -> None:
+    scene = textured(11)
+    hidden = relit(scene)
+    hidden[60:240, 120:280] = textured(12)[60:240, 120:280]
+
+    pairs = find_pairs(reduced(scene), reduced(hidden))
+
+    assert pairs is not None
+    light = oklab_to_linear_srgb(pairs.source)
+    error = np.linalg.norm(pairs.reference - linear_srgb_to_oklab(light * CAST), axis=1)
+    assert (error[~(pairs.low | pairs.high).any(axis=1)] < 0.03).mean() > 0.85

@@ -6,7 +6,7 @@ import attrs
 import numpy as np
 from numpy.typing import NDArray
 
-from hueferry.arrays import Colours
+from hueferry.arrays import Colours, Mask
 from hueferry.evidence.reduced import Reduced
 
 MOST = 3000
@@ -18,6 +18,13 @@ CELL = 0.04
 FLATTER = 0.6
 """Share of every cell that is kept, the flattest pixels first."""
 
+LEAST_CORRELATION = 0.3
+"""Local correlation below which textures are different surfaces: something stands in front, or moved."""
+
+COMMON = 0.45
+"""Share of the textured pixels that have to show the same surfaces."""
+
+_TEXTURED = 300.0
 _BLOCKS = 4
 
 
@@ -39,7 +46,8 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
     """Read local colours of `source` and of `reference` brought onto it, where both are flat and neither clips.
 
     Returns:
-        None where fewer than 50 pixels are left.
+        None where fewer than 50 pixels are left, or where most of what has texture looks different: then something
+        small is common to both, such as a caption, and not the surfaces.
     """
     import cv2
 
@@ -58,6 +66,11 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
     valid = cv2.warpPerspective(good, homography, size, flags=flags) > 0.99
     valid &= source.usable
     valid = cv2.erode(valid.astype(np.uint8), np.ones((3, 3), np.uint8), borderValue=0) > 0
+    gray = np.asarray(cv2.warpPerspective(reference.gray, homography, size, flags=flags), dtype=np.uint8)
+    alike = _alike(source.gray, gray, valid)
+    if alike is None:
+        return None
+    valid &= alike
     ours, roughness = _local(ours)
     warped, other_roughness = _local(warped)
     roughness = np.hypot(roughness, other_roughness)
@@ -109,6 +122,29 @@ def _same_sharpness(
     elif scale < 1 / 1.15:
         ours = np.asarray(cv2.GaussianBlur(ours, (0, 0), 0.5 / scale), dtype=np.float32)
     return ours, theirs
+
+
+def _alike(ours: NDArray[np.uint8], theirs: NDArray[np.uint8], valid: Mask) -> Mask | None:
+    """Tell where two evened-out pictures (height, width) show the same, or at least no texture to the contrary.
+
+    Returns:
+        None where less than `COMMON` of the textured pixels among `valid` show the same.
+    """
+    import cv2
+
+    def mean(plane: NDArray[np.float32]) -> NDArray[np.float32]:
+        return np.asarray(cv2.blur(plane, (17, 17)), dtype=np.float32)
+
+    here, there = ours.astype(np.float32), theirs.astype(np.float32)
+    mean_here, mean_there = mean(here), mean(there)
+    spread_here, spread_there = mean(here * here) - mean_here**2, mean(there * there) - mean_there**2
+    common = mean(here * there) - mean_here * mean_there
+    same = common > LEAST_CORRELATION * np.sqrt(np.maximum(spread_here * spread_there, 1e-6))
+    textured = np.maximum(spread_here, spread_there) > _TEXTURED
+    judged = textured & valid
+    if judged.any() and same[judged].mean() < COMMON:
+        return None
+    return np.asarray(same | ~textured)
 
 
 def _nearby(ends: NDArray[np.bool_]) -> NDArray[np.float32]:
