@@ -23,6 +23,9 @@ _SHRINK = 0.25
 _ABSORB = 1e8
 """Scaling beyond which it is taken up into the potentials, so that float32 kernels neither overflow nor vanish."""
 
+_OVER = 1.6
+"""Exponent of the over-relaxed row scaling (Thibault, Chizat, Dossal & Papadakis 2021, Overrelaxed Sinkhorn)."""
+
 _VANISHED = 1e-24
 """Mass too small to matter in a coupling; kept, it would turn into subnormal numbers, which cost ten times the time."""
 
@@ -200,13 +203,15 @@ def _iterate(
     f = soft_minimum(cost, g, b, epsilon)
     g = soft_minimum(cost.T, f, a, epsilon)
     kernel, u, v = _kernel(cost, f, g, a, b, epsilon), np.ones(len(a)), np.ones(len(b))
-    misplaced = np.inf
+    misplaced = before = np.inf
     for used in range(1, iterations + 1):
         rows = (kernel @ v.astype(kernel.dtype)).astype(np.float64)
         misplaced = float(np.abs(u * rows - a).sum())
         if misplaced <= tolerance:
             return f + epsilon * np.log(u), g + epsilon * np.log(v), misplaced, used
-        u = a / np.maximum(rows, 1e-300)
+        # Beyond the exact scaling while that helps: a round that misplaces more is followed by a plain one.
+        reach = _OVER if misplaced < before else 1.0
+        u, before = (a / np.maximum(rows, 1e-300)) ** reach * u ** (1.0 - reach), misplaced
         columns = (kernel.T @ u.astype(kernel.dtype)).astype(np.float64)
         v = b / np.maximum(columns, 1e-300)
         if max(u.max(), v.max(), 1 / u.min(), 1 / v.min()) > _ABSORB:
