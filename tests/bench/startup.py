@@ -9,12 +9,13 @@ from collections.abc import Iterator
 from bench.timing import Ratio, compare
 
 _HEAVY = ("scipy", "ot", "numba", "cv2", "tifffile", "dask")
+_COMMAND = "from hueferry.cli.main import main; main()"
 
 
 def measure_startup(turns: int) -> Iterator[Ratio]:
     """Compare `hueferry --help` and importing the package with the start of Python, and of Python with NumPy."""
     bare, numpy = _run("-c", "pass"), _run("-c", "import numpy")
-    yield compare("hueferry --help, over bare Python", _run("-m", "hueferry", "--help"), bare, turns=turns)
+    yield compare("hueferry --help, over bare Python", _run("-c", _COMMAND, "--help"), bare, turns=turns)
     yield compare("import hueferry.api, over importing NumPy", _run("-c", "import hueferry.api"), numpy, turns=turns)
 
 
