@@ -47,6 +47,8 @@ class Fit:
         cost_before: transport cost from the picture's palette to the reference's, ΔE*ab (D50).
         cost_after: the same for the palette that the table gives.
         moved: mean ΔE00 by which the table moves the picture's colours.
+        palette: the picture's colours.
+        palette_after: the same colours through the table, in the same order.
         view: what a report draws: palette groups, where colour went, tone and chroma curves; JSON values.
         sentences: what was done and why, for people.
     """
@@ -58,6 +60,8 @@ class Fit:
     cost_before: Cost
     cost_after: Cost
     moved: float
+    palette: Palette
+    palette_after: Palette
     view: Mapping[str, Any]
     sentences: tuple[str, ...]
 
@@ -117,6 +121,8 @@ def fit_picture(
         cost_before=quick_cost(palette, target),
         cost_after=quick_cost(after, target),
         moved=mean_move(palette, after),
+        palette=palette,
+        palette_after=after,
         view=view_of(result.table, source.encoding, palette, after, target),
         sentences=_sentences(evidence, result, settings),
     )

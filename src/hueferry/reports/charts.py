@@ -157,6 +157,89 @@ def flows(plan: NDArray[np.float64], source: Sequence[str], target: Sequence[str
     return svg(240, 226, title, body, kind="chart flows")
 
 
+def matrix(names: Sequence[str], distances: NDArray[np.float64], title: str) -> str:
+    """Draw distances as squares, darker ink for farther apart, with the number in every square.
+
+    Args:
+        names: n pictures; numbered in the order given.
+        distances: (n, n), symmetric.
+        title: accessible name.
+    """
+    cell, left, top = 40, 150, 22
+    largest = max(float(distances.max()), 1e-9)
+    body = []
+    for i, name in enumerate(names):
+        body += [
+            text(left - 8, top + i * cell + 25, f"{shortened(name, 17)} {i + 1}", anchor="end"),
+            text(left + i * cell + 20, 14, str(i + 1), anchor="middle"),
+        ]
+        for j in range(len(names)):
+            x, y, share = left + j * cell, top + i * cell, distances[i, j] / largest
+            body.append(
+                f'<rect class="square" x="{x}" y="{y}" width="38" height="38" fill-opacity="{0.75 * share:.2f}"/>'
+            )
+            if i != j:
+                kind = "light" if share > 0.6 else "dark"
+                body.append(
+                    f'<text class="{kind}" x="{x + 19}" y="{y + 24}" text-anchor="middle">{distances[i, j]:.1f}</text>'
+                )
+    return svg(left + cell * len(names), top + cell * len(names), title, body, kind="chart matrix")
+
+
+def series_map(names: Sequence[str], before: Points, after: Points, title: str) -> str:
+    """Draw every picture before (ring) and after (dot) on two axes, joined by a line; one scale for both axes."""
+    width, height, margin = 640, 380, 34
+    every = np.concatenate([before, after])
+    low, span = every.min(axis=0), np.maximum(np.ptp(every, axis=0), 1e-9)
+    scale = min((width - 2 * margin - 90) / span[0], (height - 2 * margin) / span[1])
+
+    def place(points: Points) -> Points:
+        return np.stack(
+            [margin + (points[:, 0] - low[0]) * scale, height - margin - (points[:, 1] - low[1]) * scale], 1
+        )
+
+    step = _nice_step(span[0] / 5)
+    body = [
+        line(margin, height - 12, margin + step * scale, height - 12, "travel"),
+        text(margin + step * scale + 8, height - 8, f"{step:g} ΔE*ab"),
+    ]
+    for index, ((x1, y1), (x2, y2)) in enumerate(zip(place(before), place(after), strict=True)):
+        body += [
+            line(x1, y1, x2, y2, "rule"),
+            f'<circle class="ring" cx="{x1:.1f}" cy="{y1:.1f}" r="5"/>',
+            f'<circle class="dot" cx="{x2:.1f}" cy="{y2:.1f}" r="5"/>',
+            text(x1 + 8, y1 - 7, shortened(names[index], 18)),
+        ]
+    return svg(width, height, title, body, kind="chart series")
+
+
+def traces(before: Sequence[float], after: Sequence[float], title: str, *, label: str) -> str:
+    """Draw a value over the series, before (rings) and after (dots)."""
+    width, height, left, bottom = 640, 190, 46, 26
+    every = [*before, *after]
+    low, high = min(every) - 1, max(every) + 1
+    across = (width - left - 20) / max(len(before) - 1, 1)
+
+    def points(values: Sequence[float]) -> Points:
+        rise = (np.array(values) - low) / (high - low) * (height - bottom - 20)
+        return np.stack([left + np.arange(len(values)) * across, height - bottom - rise], axis=1)
+
+    body = [line(left, 10, left, height - bottom), line(left, height - bottom, width - 20, height - bottom)]
+    body += [
+        text(left - 6, height - bottom, f"{low:.0f}", anchor="end"),
+        text(left - 6, 20, f"{high:.0f}", anchor="end"),
+    ]
+    body += [
+        text(left + 6, 18, label),
+        path_through(points(before), "trace thin"),
+        path_through(points(after), "trace"),
+    ]
+    for kind, values in (("ring", before), ("dot", after)):
+        body += [f'<circle class="{kind}" cx="{x:.1f}" cy="{y:.1f}" r="4"/>' for x, y in points(values)]
+    body += [text(x, height - 8, str(i + 1), anchor="middle") for i, (x, _) in enumerate(points(before))]
+    return svg(width, height, title, body, kind="chart traces")
+
+
 def _stack(shares: NDArray[np.float64], height: float, gap: float) -> NDArray[np.float64]:
     """Return (n, 2) top and bottom of bars on top of each other, with gaps, as high as their shares."""
     lengths = shares * (height - gap * len(shares))

@@ -61,6 +61,8 @@ def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
         lead=summary(record),
         cautions=CAUTIONS.get(record["command"], ()),
         overview=_overview(entries),
+        series=_series(record.get("overview", {})),
+        outliers=_outliers(record.get("overview", {})),
         failures=record["failures"],
         pictures=[_picture(entry, pair) for entry, pair in zip(entries, pairs, strict=True)],
         methods=METHODS[record["settings"]["aim"]],
@@ -106,6 +108,13 @@ def _overview(entries: Sequence[Json]) -> dict[str, Any]:
     ]
     chart = charts.costs(names, before, after, floor=None) if names else ""
     return {"names": names, "chart": chart, "rows": rows}
+
+
+def _outliers(overview: Json) -> str:
+    if not overview:
+        return ""
+    before, after = (", ".join(overview[f"outliers_{when}"]) or "none" for when in ("before", "after"))
+    return f"Standing apart before: {before}; after: {after}."
 
 
 def name_of(entry: Json) -> str:
@@ -160,6 +169,50 @@ def _charts(view: Json) -> list[dict[str, Any]]:
         _curve(view["tone"], "Tone: lightness of grays, L*", (0.0, 100.0), ("L* in", "L* out")),
         _curve(view["chroma"], "Chroma: mean over hues at L* 60, C*ab", (0.0, 50.0), ("C* in", "C* out")),
     ]
+
+
+def _series(overview: Json) -> list[dict[str, Any]]:
+    """Return the charts of the series as a whole; none where the record has no overview."""
+    if not overview:
+        return []
+    names = overview["names"]
+    numbers = [f"{index} {name}" for index, name in enumerate(names, 1)]
+    drawn: list[dict[str, Any]] = []
+    for when in ("before", "after"):
+        distances = np.array(overview[f"distances_{when}"])
+        drawn.append(
+            {
+                "svg": charts.matrix(names, distances, f"How far the pictures are from each other {when}"),
+                "caption": f"Sliced W2 between the pictures {when}, ΔE*ab; darker is farther",
+                "columns": ("Picture", *(str(index) for index in range(1, len(names) + 1))),
+                "rows": [
+                    (one, *(f"{value:.1f}" for value in row)) for one, row in zip(numbers, distances, strict=True)
+                ],
+            }
+        )
+    before, after = np.array(overview["map_before"]), np.array(overview["map_after"])
+    share = f"{100 * overview['shown']:.0f} %"
+    drawn.append(
+        {
+            "svg": charts.series_map(names, before, after, "Map of the series"),
+            "caption": f"Map of the series, ring before, dot after; it shows {share} of the distances",
+            "columns": ("Picture", "before, across", "before, up", "after, across", "after, up"),
+            "rows": [
+                (one, *(f"{value:.1f}" for value in (*a, *b))) for one, a, b in zip(numbers, before, after, strict=True)
+            ],
+        }
+    )
+    for key, label in (("lightness", "mean L*"), ("chroma", "mean C*ab")):
+        a, b = (overview["traces"][when][key] for when in ("before", "after"))
+        drawn.append(
+            {
+                "svg": charts.traces(a, b, f"{label} over the series", label=label),
+                "caption": f"{label} over the series, rings before, dots after",
+                "columns": ("Picture", "before", "after"),
+                "rows": [(one, f"{x:.1f}", f"{y:.1f}") for one, x, y in zip(numbers, a, b, strict=True)],
+            }
+        )
+    return drawn
 
 
 def _reach(groups: Sequence[Json]) -> float:

@@ -12,18 +12,25 @@ from hueferry.errors import HueferryError
 from hueferry.fitting.fit import Fit, fit_picture
 from hueferry.fitting.reference import Reference
 from hueferry.fitting.settings import Settings
+from hueferry.palettes.palette import Palette
+from hueferry.palettes.reduce import thin
 from hueferry.picture import Picture
 from hueferry.record.record import Entry, Failure, FileFact
 from hueferry.series.plan import Errand
 
+_SMALL = 128
+"""Colours that the overview of a series compares."""
+
 
 @attrs.frozen(eq=False)
 class Done:
-    """A picture that was done: its entry in the record, and thumbnails (before, after) for the contact sheet."""
+    """A picture that was done: its entry in the record, thumbnails for the contact sheet, palettes for the overview."""
 
     entry: Entry
     before: Picture
     after: Picture
+    palette: Palette
+    palette_after: Palette
 
 
 def run_errand(
@@ -47,7 +54,8 @@ def run_errand(
         errand.output.parent.mkdir(parents=True, exist_ok=True)
         write(result, errand.output, overwrite=overwrite)
         entry = entry_of(errand, fitted, picture)
-        return Done(entry, thumbnail(picture, longest), thumbnail(result, longest))
+        small = thumbnail(picture, longest), thumbnail(result, longest)
+        return Done(entry, *small, thin(fitted.palette, _SMALL), thin(fitted.palette_after, _SMALL))
     except HueferryError as error:
         return Failure(errand.source.as_posix(), str(error))
 

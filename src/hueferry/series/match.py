@@ -16,6 +16,7 @@ from hueferry.palettes.palette import Palette
 from hueferry.picture import Picture
 from hueferry.record.record import NAME, Failure, FileFact, Record, to_json
 from hueferry.series.job import Done, relative_to_folder, run_errand
+from hueferry.series.overview import overview
 from hueferry.series.plan import Errand, plan_errands
 
 OnDone = Callable[[int, int, Done | Failure], None]
@@ -137,6 +138,7 @@ def _finish(order: MatchOrder, outcomes: Sequence[Done | Failure], sentence: str
         entries=[relative_to_folder(outcome.entry, order.out) for outcome in done],
         failures=[outcome for outcome in outcomes if isinstance(outcome, Failure)],
         sentences=(sentence,),
+        overview=overview(done),
     )
     if done:
         write_bytes(order.out / NAME, to_json(record).encode(), overwrite=True)
