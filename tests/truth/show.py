@@ -41,7 +41,8 @@ def write_rows(rows: Sequence[Pixels8], path: Path) -> None:
         cv2.putText(head, name, spot, cv2.FONT_HERSHEY_SIMPLEX, 0.36, (0, 0, 0), 1, cv2.LINE_AA)
     gap = np.full((_GAP, width, 3), 255, dtype=np.uint8)
     sheet = np.vstack([head, *(piece for row in rows for piece in (row, gap))])
-    packed = cv2.imencode(path.suffix, sheet[:, :, ::-1], [cv2.IMWRITE_JPEG_QUALITY, 85])[1]
+    quality = [cv2.IMWRITE_JPEG_QUALITY, 85] if path.suffix.lower() in (".jpg", ".jpeg") else []
+    packed = cv2.imencode(path.suffix, sheet[:, :, ::-1], quality)[1]
     path.write_bytes(packed.tobytes())
 
 
