@@ -10,7 +10,6 @@ from typing import Any
 import attrs
 
 from hueferry.arrays import Mask
-from hueferry.errors import InputError
 from hueferry.evidence.agree import HOLD_LIMIT, agree
 from hueferry.evidence.controls import hold_colours, keep_neutrals_of, only_chroma, only_tone
 from hueferry.evidence.evidence import Basis, Evidence
@@ -185,11 +184,9 @@ def _fit_agree(task: _Task) -> tuple[Map, Evidence]:
     return map_, evidence
 
 
-def _witnesses(references: Sequence[Reference]) -> list[Reduced]:
-    seen = [reference.witness for reference in references if reference.witness is not None]
-    if len(seen) < len(references):
-        raise InputError("a palette alone cannot tell light from content; give a picture, or use the aim adopt")
-    return seen
+def _witnesses(references: Sequence[Reference]) -> list[Reduced | Palette]:
+    """Return the reduced picture of each reference, or its palette where there is no picture."""
+    return [one.palette if one.witness is None else one.witness for one in references]
 
 
 _FITTERS: Mapping[Aim, Callable[[_Task], tuple[Map, Evidence]]] = MappingProxyType(

@@ -27,6 +27,9 @@ from hueferry.reports.words import (
 
 NAME = "report.html"
 
+_DRAWN_UP_TO = 100
+"""Pictures up to which each has its charts; beyond, the record has their numbers and the page stays quick to open."""
+
 Json = Mapping[str, Any]
 
 
@@ -64,7 +67,10 @@ def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
         series=_series(record.get("overview", {})),
         outliers=_outliers(record.get("overview", {})),
         failures=record["failures"],
-        pictures=[_picture(entry, pair) for entry, pair in zip(entries, pairs, strict=True)],
+        pictures=[
+            _picture(entry, pair, drawn=len(entries) <= _DRAWN_UP_TO)
+            for entry, pair in zip(entries, pairs, strict=True)
+        ],
         methods=METHODS[record["settings"]["aim"]],
         sources=SOURCES[record["settings"]["aim"]],
         settings=setting_facts(record["settings"]),
@@ -122,13 +128,13 @@ def name_of(entry: Json) -> str:
     return str(entry["source"]["path"]).rsplit("/", 1)[-1]
 
 
-def _picture(entry: Json, pair: PicturePair | None) -> dict[str, Any]:
+def _picture(entry: Json, pair: PicturePair | None, *, drawn: bool) -> dict[str, Any]:
     numbers = entry["numbers"]
     certificate = numbers["certificate"]
     picture: dict[str, Any] = {
         "name": name_of(entry),
         "said": " ".join(entry["sentences"]),
-        "charts": _charts(numbers["view"]) if "view" in numbers else [],
+        "charts": _charts(numbers["view"]) if drawn and "view" in numbers else [],
         "safe": certificate["safe"],
         "verdict": plain_verdict(certificate),
         "certificate": said(certificate),
