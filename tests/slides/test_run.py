@@ -19,6 +19,7 @@ from hueferry.slides.cautions import CAUTIONS
 from hueferry.slides.codecs import Packing
 from hueferry.slides.fit import SlideAim
 from hueferry.slides.readers import find_slides, open_slide
+from hueferry.slides.reference import SlideReference
 from hueferry.slides.run import (
     Container,
     SlideFailure,
@@ -58,9 +59,13 @@ def slides(tmp_path_factory) -> tuple[Path, Path]:
 
 
 @pytest.fixture(scope="module")
-def outcome(slides, tmp_path_factory) -> SlideOutcome:
-    out = tmp_path_factory.mktemp("out")
-    return stain_slide(slides[0], reference_from([slides[1]]), out, settings=LOSSLESS)
+def reference(slides) -> SlideReference:
+    return reference_from([slides[1]])
+
+
+@pytest.fixture(scope="module")
+def outcome(slides, reference, tmp_path_factory) -> SlideOutcome:
+    return stain_slide(slides[0], reference, tmp_path_factory.mktemp("out"), settings=LOSSLESS)
 
 
 def test_a_slide_comes_nearer_to_its_reference(outcome: SlideOutcome) -> None:
@@ -105,9 +110,7 @@ def test_the_overlay_shows_the_tissue(outcome: SlideOutcome) -> None:
     assert outcome.overlay.stat().st_size > 1000
 
 
-def test_the_bytes_do_not_depend_on_workers(slides, outcome: SlideOutcome, tmp_path: Path) -> None:
-    reference = reference_from([slides[1]])
-
+def test_the_bytes_do_not_depend_on_workers(slides, reference, outcome: SlideOutcome, tmp_path: Path) -> None:
     again = stain_slide(slides[0], reference, tmp_path, settings=StainSettings(packing=Packing.DEFLATE, threads=5))
 
     assert again.output.read_bytes() == outcome.output.read_bytes()
@@ -135,30 +138,28 @@ def test_a_slide_towards_itself_is_unchanged(slides, tmp_path: Path) -> None:
     assert difference.max() <= 1
 
 
-def test_adopting_takes_on_the_densities(slides, tmp_path: Path) -> None:
+def test_adopting_takes_on_the_densities(slides, reference, tmp_path: Path) -> None:
     settings = StainSettings(aim=SlideAim.ADOPT, measure_only=True)
 
-    done = stain_slide(slides[0], reference_from([slides[1]]), tmp_path, settings=settings)
+    done = stain_slide(slides[0], reference, tmp_path, settings=settings)
 
     assert done.numbers["cost_density_after"] < 0.25 * done.numbers["cost_density_before"]
     assert done.numbers["certificate"]["folds"] == 0
     assert done.numbers["glass_off_target_codes"] <= 2
 
 
-def test_measuring_writes_nothing(slides, tmp_path: Path) -> None:
-    done = stain_slide(slides[0], reference_from([slides[1]]), tmp_path, settings=StainSettings(measure_only=True))
+def test_measuring_writes_nothing(slides, reference, tmp_path: Path) -> None:
+    done = stain_slide(slides[0], reference, tmp_path, settings=StainSettings(measure_only=True))
 
     assert done.output is None
     assert list(tmp_path.iterdir()) == []
     assert measure_slide(slides[0])["tissue_share"] == pytest.approx(done.numbers["before"]["tissue_share"])
 
 
-def test_a_brown_stain_is_measured_only_unless_asked(slides, tmp_path: Path) -> None:
+def test_a_brown_stain_is_measured_only_unless_asked(slides, reference, tmp_path: Path) -> None:
     brown = save(tmp_path / "brown.tif", rendered(5, HED[[0, 2]]))
     out = tmp_path / "out"
     out.mkdir()
-    reference = reference_from([slides[1]])
-
     kept = stain_slide(brown, reference, out)
     corrected = stain_slide(brown, reference, out, settings=StainSettings(correct_measured=True))
 
@@ -167,14 +168,14 @@ def test_a_brown_stain_is_measured_only_unless_asked(slides, tmp_path: Path) -> 
     assert corrected.output is not None
 
 
-def test_an_original_is_never_overwritten(slides) -> None:
+def test_an_original_is_never_overwritten(slides, reference) -> None:
     settings = StainSettings(layout=Container.FLAT, overwrite=True)
 
     with pytest.raises(OutputError, match="the original"):
-        stain_slide(slides[0], reference_from([slides[1]]), slides[0].parent, settings=settings)
+        stain_slide(slides[0], reference, slides[0].parent, settings=settings)
 
 
-def test_planted_identifiers_are_nowhere(slides, tmp_path: Path) -> None:
+def test_planted_identifiers_are_nowhere(slides, reference, tmp_path: Path) -> None:
     planted = [f"PLANTED-{n:02d}" for n in range(12)]
     path = tmp_path / "named.tif"
     text = ";".join(planted[:6])
@@ -185,13 +186,13 @@ def test_planted_identifiers_are_nowhere(slides, tmp_path: Path) -> None:
     out = tmp_path / "out"
     out.mkdir()
 
-    plain = stain_slide(path, reference_from([slides[1]]), out)
-    asked = stain_slide(path, reference_from([slides[1]]), out, settings=StainSettings(keep_texts=True, overwrite=True))
+    plain = stain_slide(path, reference, out)
+    asked = stain_slide(path, reference, out, settings=StainSettings(keep_texts=True, overwrite=True))
 
     assert not any(name in json.dumps(plain.numbers) for name in planted)
     with tifffile.TiffFile(asked.output) as tiff:
         assert "PLANTED-00" in str(tiff.ome_metadata)
-    stain_slide(path, reference_from([slides[1]]), out, settings=StainSettings(overwrite=True))
+    stain_slide(path, reference, out, settings=StainSettings(overwrite=True))
     written = b"".join(file.read_bytes() for file in sorted(out.iterdir()))
     assert not any(name.encode() in written for name in planted)
 
@@ -267,19 +268,19 @@ def test_ome_zarr_reads_back_exactly(tmp_path: Path, version: str, shape: tuple[
     assert group.metadata.zarr_format == (2 if version == "0.4" else 3)
 
 
-def test_a_slide_may_be_written_as_ome_zarr(slides, outcome: SlideOutcome, tmp_path: Path) -> None:
-    done = stain_slide(slides[0], reference_from([slides[1]]), tmp_path, settings=StainSettings(layout=Container.ZARR))
+def test_a_slide_may_be_written_as_ome_zarr(slides, reference, outcome: SlideOutcome, tmp_path: Path) -> None:
+    done = stain_slide(slides[0], reference, tmp_path, settings=StainSettings(layout=Container.ZARR))
 
     ours = open_slide(done.output)
     assert np.array_equal(ours.read(Window(0, 0, 600, 700)), tifffile.imread(outcome.output))
     with pytest.raises(OutputError, match="exists already"):
-        stain_slide(slides[0], reference_from([slides[1]]), tmp_path, settings=StainSettings(layout=Container.ZARR))
+        stain_slide(slides[0], reference, tmp_path, settings=StainSettings(layout=Container.ZARR))
 
 
-def test_the_flat_layout_opens_in_openslide(slides, outcome: SlideOutcome, tmp_path: Path) -> None:
+def test_the_flat_layout_opens_in_openslide(slides, reference, outcome: SlideOutcome, tmp_path: Path) -> None:
     settings = StainSettings(layout=Container.FLAT, packing=Packing.DEFLATE)
 
-    done = stain_slide(slides[0], reference_from([slides[1]]), tmp_path, settings=settings)
+    done = stain_slide(slides[0], reference, tmp_path, settings=settings)
 
     with openslide.OpenSlide(done.output) as slide:
         assert slide.level_count == 3
@@ -301,21 +302,21 @@ def test_openslide_and_our_reader_see_the_same_slide(slides) -> None:
     ours.close()
 
 
-def test_fields_of_view_are_slides_too(slides, tmp_path: Path) -> None:
+def test_fields_of_view_are_slides_too(slides, reference, tmp_path: Path) -> None:
     path = write(Picture(rendered(14), SRGB), tmp_path / "field.png")
 
-    done = stain_slide(path, reference_from([slides[1]]), tmp_path)
+    done = stain_slide(path, reference, tmp_path)
 
     assert done.output == tmp_path / "field.ome.tif"
 
 
-def test_too_little_tissue_changes_nothing_and_says_so(slides, tmp_path: Path) -> None:
+def test_too_little_tissue_changes_nothing_and_says_so(slides, reference, tmp_path: Path) -> None:
     pixels = np.full((300, 300, 3), 240, np.uint8)
     pixels[100:160, 100:160] = (180, 80, 160)
     path = save(tmp_path / "bare.tif", pixels)
     mask = np.zeros((300, 300), dtype=bool)
 
-    done = stain_slide(path, reference_from([slides[1]]), tmp_path, settings=LOSSLESS, mask=mask)
+    done = stain_slide(path, reference, tmp_path, settings=LOSSLESS, mask=mask)
 
     assert done.fit.basis == "none"
     assert any("too little tissue" in sentence for sentence in done.sentences)

@@ -6,8 +6,9 @@ from enum import StrEnum
 
 import attrs
 import numpy as np
+from numpy.typing import NDArray
 
-from hueferry.arrays import Codes, Colours
+from hueferry.arrays import Codes, Colours, read_only
 from hueferry.maps.affine import IDENTITY, AffineMap
 from hueferry.maps.method import Method
 from hueferry.maps.protocol import Map
@@ -25,6 +26,7 @@ MAX_GAIN = 4.0
 _LEAST_PAIRS = 300
 _PALE = 0.08
 _CELLS = 4096
+_DENSEST, _MARGIN = 0.995, 0.05
 
 
 class SlideAim(StrEnum):
@@ -74,6 +76,32 @@ class PinnedMap:
         return np.asarray(colours + smooth[:, None] * (self.inner(colours) - colours))
 
 
+@attrs.frozen(eq=False)
+class BoundedMap:
+    """A map of densities that shifts what is denser than a slide's tissue as it shifts the densest tissue.
+
+    A matrix in density is a product of powers in codes, which runs away where no tissue is: all of the table would
+    have to be smoothed for colours that the slide does not hold.
+
+    Attributes:
+        inner: density to density.
+        densest: (3,) density beyond which the shift stays.
+    """
+
+    inner: Map
+    densest: NDArray[np.float64] = attrs.field(converter=read_only)
+
+    @classmethod
+    def around(cls, inner: Map, density: Colours) -> BoundedMap:
+        """Bound a map to the densities of a slide."""
+        return cls(inner, np.quantile(density, _DENSEST, axis=0) + _MARGIN)
+
+    def __call__(self, colours: Colours) -> Colours:
+        """Carry (n, 3) densities over."""
+        held = np.clip(colours, -_MARGIN, self.densest)
+        return np.asarray(colours + self.inner(held) - held)
+
+
 def fit_slide(
     look: Look,
     reference: SlideReference,
@@ -94,6 +122,8 @@ def fit_slide(
         method: the transport under `adopt`.
     """
     map_, basis, sentences = find_map(look, reference, aim=aim, method=method)
+    if basis != "none":
+        map_ = BoundedMap.around(map_, look.density)
     cap = MAX_GAIN if max_gain is None else max_gain
     table, certificate, more = freeze(map_, look, reference.scale(look.scale.encoding), strength=strength, max_gain=cap)
     if basis == "none":

@@ -26,7 +26,8 @@ log powers of three channels, and density of three channels at glass that was se
 _UNSEEN = 0.02
 """The last of these where bare glass was not seen in both slides."""
 
-FALLBACK: Vectors = np.array([[0.65110783, 0.70119304, 0.29049426], [0.07010172, 0.99143863, 0.11015985]])
+FALLBACK: Vectors = np.array([[0.65, 0.70, 0.29], [0.07, 0.99, 0.11]])
+FALLBACK /= np.linalg.norm(FALLBACK, axis=1, keepdims=True)
 """Haematoxylin and eosin of Ruifrok & Johnston (2001), unit length: where a slide's own stains cannot be told."""
 
 _POINTS, _STEPS, _PALE = 8000, 10, 0.02
