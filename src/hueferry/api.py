@@ -211,8 +211,12 @@ def report(folder: PathLike) -> Path:
     return write_report(Path(folder))
 
 
-def cost_table(paths: Sequence[Path]) -> dict[str, Any]:
+def cost_table(paths: Sequence[Path], *, out: Path | None = None) -> dict[str, Any]:
     """Compare pictures each with each: every figure of every pair, units, noise, and a map of three or more.
+
+    Args:
+        paths: two pictures or more.
+        out: folder for a report page; None writes nothing.
 
     Returns:
         JSON values: `schema`, `pairs`, `units`, and `comparison` for three pictures or more.
@@ -238,6 +242,10 @@ def cost_table(paths: Sequence[Path]) -> dict[str, Any]:
     table: dict[str, Any] = {"schema": SCHEMA, "pairs": pairs, "units": dict(UNITS)}
     if len(paths) > 2:
         table["comparison"] = compare(palettes, names).as_dict()
+    if out is not None:
+        from hueferry.reports.cost_page import write_cost_page
+
+        write_cost_page(table, out)
     return table
 
 

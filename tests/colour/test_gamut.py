@@ -39,6 +39,18 @@ def test_more_chroma_in_is_never_less_chroma_out() -> None:
     assert np.diff(chroma).max() < 2 * np.hypot(0.5, 0.2) / 399
 
 
+def test_compression_sets_in_without_a_kink() -> None:
+    """Its slope is 1 at the knee and falls from there, never below 0: no edge shows in a gradient."""
+    ray = np.stack([np.full(4000, 0.6), np.linspace(0, 0.4, 4000), np.zeros(4000)], axis=1)
+
+    chroma = compress(ray, SRGB, source=np.repeat([[0.6, 0.01, 0.0]], 4000, axis=0))[:, 1]
+    slope = np.diff(chroma) / np.diff(ray[:, 1])
+
+    assert slope[0] == pytest.approx(1)
+    assert np.abs(np.diff(slope)).max() < 0.01
+    assert slope.min() >= 0
+
+
 def test_neutrals_keep_no_colour_and_rise() -> None:
     grays = np.zeros((300, 3))
     grays[:, 0] = np.linspace(0, 1.4, 300)

@@ -10,6 +10,7 @@ from pathlib import Path
 
 import pytest
 
+from hueferry.api import cost_table
 from hueferry.errors import InputError
 from hueferry.record.record import read_record
 from hueferry.reports.page import render_page, write_report
@@ -125,3 +126,17 @@ def test_five_hundred_pictures_stay_small(run: Path) -> None:
 def test_without_a_record_there_is_no_page(tmp_path: Path) -> None:
     with pytest.raises(InputError, match="holds no record"):
         write_report(tmp_path)
+
+
+def test_a_cost_table_becomes_a_page(run: Path, tmp_path: Path) -> None:
+    shoot = sorted((run.parent / "shoot").glob("*.png"))
+
+    table = cost_table(shoot, out=tmp_path / "cost")
+    page = (tmp_path / "cost" / "cost.html").read_text(encoding="utf-8")
+
+    assert len(table["pairs"]) == 3
+    for pair in table["pairs"]:
+        assert f"<td>{pair['w2']:.3f}</td>" in page
+        assert f"<td>{pair['normal_kl']:.3f}</td>" in page
+    assert not elements(page).addresses
+    assert "https://" not in page

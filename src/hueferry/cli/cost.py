@@ -15,6 +15,7 @@ from hueferry.errors import InputError
 def cost(
     pictures: Annotated[list[Path], typer.Argument(help="Two pictures or more.", metavar="A B [C ...]")],
     *,
+    out: Annotated[Path | None, typer.Option("--out", help="Folder for a report page of the comparison.")] = None,
     json: options.Json = False,
 ) -> None:
     """Print what separates the palettes of pictures: how far colour must move, and how distinguishable they are."""
@@ -24,7 +25,7 @@ def cost(
     from hueferry.api import cost_table
     from hueferry.cli.cost_tables import show_cost
 
-    table = cost_table(pictures)
+    table = cost_table(pictures, out=out)
     if json:
         show_json(table)
     else:

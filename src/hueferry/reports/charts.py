@@ -158,7 +158,7 @@ def flows(plan: NDArray[np.float64], source: Sequence[str], target: Sequence[str
 
 
 def matrix(names: Sequence[str], distances: NDArray[np.float64], title: str) -> str:
-    """Draw distances as squares, darker ink for farther apart, with the number in every square.
+    """Draw distances as squares, stronger ink for farther apart, with the number in every square.
 
     Args:
         names: n pictures; numbered in the order given.

@@ -55,9 +55,9 @@ def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
     """
     from jinja2 import Environment, select_autoescape
 
-    style, script = _asset("report.css"), _asset("report.js")
+    style, script = asset("report.css"), asset("report.js")
     environment = Environment(autoescape=select_autoescape(default=True, default_for_string=True))
-    template = environment.from_string(_asset("report.html.j2"))
+    template = environment.from_string(asset("report.html.j2"))
     entries = record["entries"]
     return template.render(
         title=_title(record),
@@ -79,16 +79,18 @@ def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
         version=record["versions"].get("hueferry", ""),
         style=style,
         script=script,
-        style_hash=_content_hash(style),
-        script_hash=_content_hash(script),
+        style_hash=content_hash(style),
+        script_hash=content_hash(script),
     )
 
 
-def _asset(name: str) -> str:
+def asset(name: str) -> str:
+    """Return a template, style sheet or script that ships with the package."""
     return files("hueferry.reports").joinpath("templates", name).read_text(encoding="utf-8")
 
 
-def _content_hash(text: str) -> str:
+def content_hash(text: str) -> str:
+    """Return the source expression of a content policy that allows exactly this text."""
     return "sha256-" + base64.b64encode(hashlib.sha256(text.encode("utf-8")).digest()).decode("ascii")
 
 
@@ -189,7 +191,7 @@ def _series(overview: Json) -> list[dict[str, Any]]:
         drawn.append(
             {
                 "svg": charts.matrix(names, distances, f"How far the pictures are from each other {when}"),
-                "caption": f"Sliced W2 between the pictures {when}, ΔE*ab; darker is farther",
+                "caption": f"Sliced W2 between the pictures {when}, ΔE*ab; stronger is farther",
                 "columns": ("Picture", *(str(index) for index in range(1, len(names) + 1))),
                 "rows": [
                     (one, *(f"{value:.1f}" for value in row)) for one, row in zip(numbers, distances, strict=True)
