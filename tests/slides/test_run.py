@@ -156,7 +156,7 @@ def test_measuring_writes_nothing(slides, reference, tmp_path: Path) -> None:
     assert measure_slide(slides[0])["tissue_share"] == pytest.approx(done.numbers["before"]["tissue_share"])
 
 
-def test_a_brown_stain_is_measured_only_unless_asked(slides, reference, tmp_path: Path) -> None:
+def test_a_brown_stain_is_measured_only_unless_asked(reference, tmp_path: Path) -> None:
     brown = save(tmp_path / "brown.tif", rendered(5, HED[[0, 2]]))
     out = tmp_path / "out"
     out.mkdir()
@@ -175,7 +175,7 @@ def test_an_original_is_never_overwritten(slides, reference) -> None:
         stain_slide(slides[0], reference, slides[0].parent, settings=settings)
 
 
-def test_planted_identifiers_are_nowhere(slides, reference, tmp_path: Path) -> None:
+def test_planted_identifiers_are_nowhere(reference, tmp_path: Path) -> None:
     planted = [f"PLANTED-{n:02d}" for n in range(12)]
     path = tmp_path / "named.tif"
     text = ";".join(planted[:6])
@@ -302,7 +302,7 @@ def test_openslide_and_our_reader_see_the_same_slide(slides) -> None:
     ours.close()
 
 
-def test_fields_of_view_are_slides_too(slides, reference, tmp_path: Path) -> None:
+def test_fields_of_view_are_slides_too(reference, tmp_path: Path) -> None:
     path = write(Picture(rendered(14), SRGB), tmp_path / "field.png")
 
     done = stain_slide(path, reference, tmp_path)
@@ -310,7 +310,7 @@ def test_fields_of_view_are_slides_too(slides, reference, tmp_path: Path) -> Non
     assert done.output == tmp_path / "field.ome.tif"
 
 
-def test_too_little_tissue_changes_nothing_and_says_so(slides, reference, tmp_path: Path) -> None:
+def test_too_little_tissue_changes_nothing_and_says_so(reference, tmp_path: Path) -> None:
     pixels = np.full((300, 300, 3), 240, np.uint8)
     pixels[100:160, 100:160] = (180, 80, 160)
     path = save(tmp_path / "bare.tif", pixels)

@@ -121,7 +121,7 @@ def _shading(thumbnail: Planes, bare: Mask, flat: Mask) -> tuple[Planes, Mask]:
         used = np.flatnonzero(bare)
         used = used[:: max(1, len(used) // 20_000)]
         chosen = terms.reshape(-1, 6)[used]
-        keep = np.diag([0.0, 1.0, 1.0, 3.0, 3.0, 3.0]) * 1e-2 * len(used)  # slow unless the glass says otherwise
+        keep = np.diag([0.0, 1.0, 1.0, 3.0, 3.0, 3.0]) * 1e-3 * len(used)  # slow unless the glass says otherwise
         weights = np.linalg.solve(chosen.T @ chosen + keep, chosen.T @ logs.reshape(-1, 3)[used])
         fitted = terms @ weights
         bare = flat & (np.abs(logs - fitted).max(axis=2) < 0.015)
