@@ -5,7 +5,6 @@ Sources: DICOM PS3.3, A.32.8 (VL whole slide microscopy image), C.7.6.17.3 (dime
 
 from __future__ import annotations
 
-import threading
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from types import MappingProxyType
@@ -30,6 +29,8 @@ _SPREADS: Mapping[str, bool] = MappingProxyType({"RGB": False, "YBR_FULL_422": T
 
 @attrs.frozen(eq=False)
 class _Level:
+    file: Path
+    start: int
     data: Any
     height: int
     width: int
@@ -56,15 +57,17 @@ class DicomSlide:
         found = []
         for file in files:
             try:
-                data = pydicom.dcmread(file)
+                with file.open("rb") as stream:
+                    data = pydicom.dcmread(stream, stop_before_pixels=True)
+                    start = stream.tell()
             except (pydicom.errors.InvalidDicomError, OSError, ValueError, KeyError, EOFError) as error:
                 raise PictureError(file, f"this is not DICOM: {error}") from error
             if data.get("SOPClassUID") == _WHOLE_SLIDE and "VOLUME" in tuple(data.get("ImageType", ())):
-                found.append(data)
+                found.append((file, start, data))
         if not found:
             raise PictureError(path, "there is no whole-slide picture (SOP class VL whole slide microscopy, VOLUME)")
-        self._path, self._lock = path, threading.Lock()
-        self._levels = sorted((_level(path, data) for data in found), key=lambda level: -level.width)
+        self._path = path
+        self._levels = sorted((_level(*one) for one in found), key=lambda level: -level.width)
         first = self._levels[0].data
         self._encoding = encoding_of(path, _profile(first))
         texts = {name: str(first.get(name)) for name in _TEXTS if first.get(name)}
@@ -124,17 +127,18 @@ class DicomSlide:
     def _frame(self, level: _Level, frame: int) -> Pixels:
         from pydicom.encaps import get_frame
 
-        data = level.data
-        syntax = str(data.file_meta.TransferSyntaxUID)
+        data, syntax = level.data, str(level.data.file_meta.TransferSyntaxUID)
         try:
-            with self._lock:  # pydicom walks its buffer with one shared position
+            with level.file.open("rb") as stream:
                 if syntax in _NATIVE:
                     size = level.rows * level.columns * 3
-                    packed = bytes(data.PixelData[frame * size : (frame + 1) * size])
+                    stream.seek(level.start + frame * size)
+                    packed = stream.read(size)
                 else:
-                    packed = get_frame(data.PixelData, frame, number_of_frames=int(data.get("NumberOfFrames", 1)))
+                    stream.seek(level.start)
+                    packed = get_frame(stream, frame, number_of_frames=int(data.get("NumberOfFrames", 1)))
             return _unpack(packed, syntax, level)
-        except (ValueError, RuntimeError, IndexError) as error:
+        except (ValueError, RuntimeError, IndexError, OSError) as error:
             raise PictureError(self._path, f"frame {frame + 1} is broken: {error}") from error
 
     def close(self) -> None:
@@ -155,7 +159,7 @@ def _unpack(packed: bytes, syntax: str, level: _Level) -> Pixels:
     return np.asarray(imagecodecs.jpeg2k_decode(packed))
 
 
-def _level(path: Path, data: Any) -> _Level:  # noqa: ANN401 - a pydicom data set has no type
+def _level(path: Path, start: int, data: Any) -> _Level:  # noqa: ANN401 - a pydicom data set has no type
     syntax = str(data.file_meta.TransferSyntaxUID)
     if syntax not in (*_JPEG, *_JPEG2000, *_NATIVE) or data.get("BitsAllocated") != 8:
         raise RefusedError(
@@ -169,7 +173,9 @@ def _level(path: Path, data: Any) -> _Level:  # noqa: ANN401 - a pydicom data se
         raise RefusedError(path, "it holds several focal planes or optical paths, not one bright-field picture")
     rows, columns = int(data.Rows), int(data.Columns)
     height, width = int(data.TotalPixelMatrixRows), int(data.TotalPixelMatrixColumns)
-    return _Level(data, height, width, rows, columns, _places(data, -(-width // columns)))
+    # The header of the pixel data: tag, VR, two reserved bytes and a length; without VR where it is implicit.
+    start += 8 if syntax == _NATIVE[0] else 12
+    return _Level(path, start, data, height, width, rows, columns, _places(data, -(-width // columns)))
 
 
 def _places(data: Any, across: int) -> dict[tuple[int, int], int]:  # noqa: ANN401 - see above
