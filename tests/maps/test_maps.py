@@ -205,3 +205,14 @@ def test_one_map_after_another() -> None:
     first, second = AffineMap(2 * np.eye(3), np.ones(3)), AffineMap(np.eye(3), -np.ones(3))
 
     np.testing.assert_allclose(Composed(first, second)(SOURCE.colours), 2 * SOURCE.colours, atol=1e-12)
+
+
+@pytest.mark.parametrize("method", [Method.ENTROPIC, Method.EXACT])
+def test_a_third_of_the_range_away_the_palette_has_no_more_say(method: Method) -> None:
+    map_, affine = fit_map(SOURCE, TARGET, method=method), fit_gaussian(SOURCE, TARGET)
+    near, away = SOURCE.colours, SOURCE.colours + np.array([0.0, 0.35, 0.35])
+
+    said = np.linalg.norm(map_(near) - affine(near), axis=1).mean()
+    left = np.linalg.norm(map_(away) - affine(away), axis=1).mean()
+
+    assert left < 0.15 * said
