@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Sequence
+from collections.abc import Callable, Mapping, Sequence
 from datetime import datetime
 from enum import StrEnum
 from itertools import combinations
@@ -327,3 +327,39 @@ def drift_chart(
         "readings": len(found.readings),
         "drift": drift,
     }
+
+
+def stain_files(
+    slides: Sequence[Path],
+    *,
+    out: Path,
+    to: Sequence[Path] = (),
+    choices: Mapping[str, Any] | None = None,
+    on_done: Callable[[Any], None] | None = None,
+) -> Record:
+    """Bring slides and folders of slides together; slides, overlays and a record are left in `out`.
+
+    Args:
+        slides: slides, and folders of slides.
+        out: folder of the results.
+        to: reference slides; none means what the slides have in common.
+        choices: fields of `slides.run.StainSettings`, in plain words; "auto" for the packing chooses.
+        on_done: called with each outcome.
+
+    Raises:
+        InputError: it cannot be done as asked.
+    """
+    from hueferry.files.atomic import write_bytes
+    from hueferry.record.record import NAME, to_json
+    from hueferry.slides.record import record_of, settings_from_words
+    from hueferry.slides.run import stain
+
+    words = dict(choices or {})
+    settings = settings_from_words(words)
+    if (out / NAME).exists() and not settings.overwrite:
+        raise InputError(f"{out / NAME} exists already; choose another folder, or add --overwrite")
+    results = stain(slides, to=to, out=out, settings=settings, on_done=on_done)
+    record = record_of(results, to=to, out=out, words=words)
+    if record.entries:
+        write_bytes(out / NAME, to_json(record).encode(), overwrite=True)
+    return record

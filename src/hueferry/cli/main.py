@@ -13,7 +13,7 @@ from typing import Any
 import typer
 
 from hueferry import __version__
-from hueferry.cli import cost, demo, drift, match, report
+from hueferry.cli import cost, demo, drift, match, report, stain
 from hueferry.cli.terminal import remark, show_json
 from hueferry.errors import HueferryError, SolverError
 
@@ -33,6 +33,7 @@ app = typer.Typer(
     rich_markup_mode=None,
 )
 app.command("match")(match.match)
+app.command("stain")(stain.stain)
 app.command("cost")(cost.cost)
 app.add_typer(drift.app, name="drift")
 app.command("report")(report.report)
