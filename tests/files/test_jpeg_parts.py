@@ -10,7 +10,7 @@ import pytest
 from PIL import Image
 
 from hueferry.files import jpeg_parts
-from hueferry.files.jpeg_parts import encode_in_parts
+from hueferry.files.jpeg_parts import encode_in_parts, standing_alone
 
 
 def scene(height: int, width: int) -> np.ndarray:
@@ -55,3 +55,20 @@ def test_more_bands_than_restart_numbers_still_count_right(monkeypatch: pytest.M
         imagecodecs.jpeg8_decode(found),
         imagecodecs.jpeg8_decode(imagecodecs.jpeg8_encode(pixels, level=95, subsampling="420")),
     )
+
+
+@pytest.mark.parametrize("sampling", ["444", "422", "420"])
+def test_the_parts_of_a_stream_are_the_whole_picture(sampling: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(jpeg_parts, "_PART", 2048)
+    stream = encode_in_parts(scene(700, 96), quality=90, sampling=sampling)
+
+    parts = standing_alone(stream)
+    decoded = [np.asarray(Image.open(io.BytesIO(part))) for part in parts]
+
+    assert len(parts) > 2
+    apart = np.concatenate(decoded).astype(int) - np.asarray(Image.open(io.BytesIO(stream)))
+    seams = np.cumsum([len(rows) for rows in decoded])[:-1]
+    inside = np.ones(len(apart), dtype=bool)
+    for seam in seams:  # where chroma has half the rows, a decoder blends it over the seam
+        inside[seam - 2 : seam + 2] = sampling != "420"
+    assert not apart[inside].any()

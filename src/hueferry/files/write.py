@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import io
+import os
+from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
 import numpy as np
@@ -70,19 +73,43 @@ def encode(picture: Picture, format_: str, *, quality: int | None = None) -> byt
 
 def _verify(made: Path, path: Path, picture: Picture, format_: str) -> None:
     """Look at the written file with a second decoder: format, size, and that every pixel can be decoded."""
-    from PIL import Image
-
     try:
-        if format_ in _EIGHT_BIT:
-            with Image.open(made) as image:
-                shape, kind = (image.height, image.width), (image.format or "").lower()
-                image.draft(None, (1, 1))
-                image.load()
-        else:
-            from hueferry.files.read import read
-
-            shape, kind = read(made).shape, format_
+        shape, kind = _seen_by_pillow(made) if format_ in _EIGHT_BIT else _read_again(made)
     except (HueferryError, OSError, SyntaxError, ValueError) as error:
         raise OutputError(path, f"the file that was written cannot be read again: {error}") from error
     if shape != picture.shape or kind != format_:
         raise OutputError(path, f"the file that was written came back as {kind} of {shape}")
+
+
+def _read_again(made: Path) -> tuple[tuple[int, int], str]:
+    from hueferry.files.read import read
+
+    picture = read(made)
+    return picture.shape, picture.metadata.format
+
+
+def _seen_by_pillow(made: Path) -> tuple[tuple[int, int], str]:
+    from PIL import Image
+
+    from hueferry.files.jpeg_parts import standing_alone
+
+    with Image.open(made) as image:
+        shape, kind = (image.height, image.width), (image.format or "").lower()
+        if kind != "jpeg":
+            image.load()
+            return shape, kind
+    parts = standing_alone(made.read_bytes())
+    with ThreadPoolExecutor(min(len(parts), os.cpu_count() or 1)) as pool:
+        rows = sum(pool.map(_decoded_rows, parts))
+    return (rows, shape[1]), kind
+
+
+def _decoded_rows(stream: bytes) -> int:
+    """Decode a JPEG at an eighth of its size, which reads all of its data, and return its full height."""
+    from PIL import Image
+
+    with Image.open(io.BytesIO(stream)) as image:
+        height = image.height
+        image.draft(None, (1, 1))
+        image.load()
+    return height

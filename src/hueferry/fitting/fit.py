@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
+from functools import cached_property
 from types import MappingProxyType
 from typing import Any
 
@@ -24,7 +25,7 @@ from hueferry.maps.protocol import Map
 from hueferry.measure.cost import Cost, quick_cost
 from hueferry.palettes.build import palette_of
 from hueferry.palettes.palette import Palette
-from hueferry.picture import Picture
+from hueferry.picture import Encoding, Picture
 from hueferry.tables.certificate import Certificate
 from hueferry.tables.table import Table
 
@@ -43,12 +44,10 @@ class Fit:
         table: the lattice of the map for the picture's encoding, made safe; this is what is applied.
         certificate: what was measured on the table.
         evidence: what the correction rests on.
-        cost_before: transport cost from the picture's palette to the reference's, ΔE*ab (D50).
-        cost_after: the same for the palette that the table gives.
-        moved: mean ΔE00 by which the table moves the picture's colours.
+        encoding: of the picture.
         palette: the picture's colours.
         palette_after: the same colours through the table, in the same order.
-        view: what a report draws: palette groups, where colour went, tone and chroma curves; JSON values.
+        target: the palette it was brought towards.
         sentences: what was done and why, for people.
     """
 
@@ -56,13 +55,31 @@ class Fit:
     table: Table
     certificate: Certificate
     evidence: Evidence
-    cost_before: Cost
-    cost_after: Cost
-    moved: float
+    encoding: Encoding
     palette: Palette
     palette_after: Palette
-    view: Mapping[str, Any]
+    target: Palette
     sentences: tuple[str, ...]
+
+    @cached_property
+    def cost_before(self) -> Cost:
+        """Transport cost from the picture's palette to the reference's, ΔE*ab (D50); worked out when asked for."""
+        return quick_cost(self.palette, self.target)
+
+    @cached_property
+    def cost_after(self) -> Cost:
+        """The same for the palette that the table gives."""
+        return quick_cost(self.palette_after, self.target)
+
+    @cached_property
+    def moved(self) -> float:
+        """Mean ΔE00 by which the table moves the picture's colours."""
+        return mean_move(self.palette, self.palette_after)
+
+    @cached_property
+    def view(self) -> Mapping[str, Any]:
+        """What a report draws: palette groups, where colour went, tone and chroma curves; JSON values."""
+        return view_of(self.table, self.encoding, self.palette, self.palette_after, self.target)
 
     def apply(self, picture: Picture) -> Picture:
         """Apply the table to a picture in the encoding of the one that was fitted; depth and metadata stay."""
@@ -111,18 +128,15 @@ def fit_picture(
         wanted, evidence = _FITTERS[settings.aim](task)
         palette = task.palette
     result = tabulate(wanted, source.encoding, palette, settings, bits=source.bits)
-    after = carried(result.table, source.encoding, palette)
     return Fit(
         map=result.map,
         table=result.table,
         certificate=result.certificate,
         evidence=evidence,
-        cost_before=quick_cost(palette, target),
-        cost_after=quick_cost(after, target),
-        moved=mean_move(palette, after),
+        encoding=source.encoding,
         palette=palette,
-        palette_after=after,
-        view=view_of(result.table, source.encoding, palette, after, target),
+        palette_after=carried(result.table, source.encoding, palette),
+        target=target,
         sentences=_sentences(evidence, result, settings),
     )
 
