@@ -9,6 +9,9 @@ from numpy.typing import NDArray
 from hueferry.arrays import Colours, Mask
 from hueferry.evidence.reduced import Reduced
 
+_FINE = 1 << 20
+"""Steps of roughness, 0 … 1, that are told apart."""
+
 MOST = 3000
 """Pairs kept at most: rare colours first."""
 
@@ -169,7 +172,10 @@ def _spread_over_colours(
     """Pick at most `MOST` pixels: the flatter part of every cell of colours, each by the root of its share."""
     places = np.flatnonzero(valid)
     cells = np.floor(oklab.reshape(-1, 3)[places] / CELL).astype(np.int64)
-    order = np.lexsort((roughness.ravel()[places], (cells[:, 0] * 4096 + cells[:, 1]) * 4096 + cells[:, 2]))
+    # One key for cell and roughness sorts in half the time of two.
+    cell = (cells[:, 0] * 4096 + cells[:, 1]) * 4096 + cells[:, 2]
+    rough = np.minimum(roughness.ravel()[places] * _FINE, _FINE - 1).astype(np.int64)
+    order = np.argsort(cell * _FINE + rough, kind="stable")
     places, cells = places[order], cells[order]
     first = np.flatnonzero(np.r_[True, (np.diff(cells, axis=0) != 0).any(axis=1)])
     counts = np.diff(np.r_[first, len(places)])
