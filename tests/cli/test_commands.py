@@ -208,3 +208,11 @@ def test_help_loads_nothing_heavy() -> None:
 
     assert "match" in done.stdout
     assert done.stderr.strip() == "[]"
+
+
+def test_a_picture_in_which_nothing_is_to_change_is_copied_byte_for_byte(shoot: Path, tmp_path: Path) -> None:
+    other = tmp_path / "stranger.jpg"
+    Image.fromarray(photograph("rocket")).save(other, quality=80)
+
+    assert run(["match", str(other), "--to", str(shoot / "plain.png"), "--out", str(tmp_path / "o"), "--quiet"]) == 0
+    assert (tmp_path / "o" / "stranger.jpg").read_bytes() == other.read_bytes()

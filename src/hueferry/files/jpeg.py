@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
+from hueferry.files.probe import check_size
 from hueferry.picture import Metadata
 
 _SOI, _EOI, _SOS, _DQT, _COM = 0xD8, 0xD9, 0xDA, 0xDB, 0xFE
@@ -111,9 +112,10 @@ def read_jpeg(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Me
     if not accept_loss and any(m == _APP2 and p.startswith(_MULTI) for m, p in segments.parts):
         reason = "the file holds a gain map or further pictures, which would be lost; accept the loss to go on"
         raise RefusedError(path, reason)
+    check_size(path, segments.shape)
     try:
         pixels = imagecodecs.jpeg8_decode(data)
-    except (imagecodecs.Jpeg8Error, ValueError) as error:
+    except (imagecodecs.Jpeg8Error, ValueError, MemoryError) as error:
         raise PictureError(path, f"the JPEG stream cannot be decoded: {error}") from error
     return np.atleast_3d(pixels), _metadata(segments), _profile(segments)
 

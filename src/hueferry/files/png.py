@@ -10,6 +10,7 @@ import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
+from hueferry.files.probe import check_size
 from hueferry.picture import Metadata
 
 SIGNATURE = b"\x89PNG\r\n\x1a\n"
@@ -48,9 +49,11 @@ def read_png(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Met
         raise PictureError(path, "the PNG stream has no header; the file is broken")
     if not accept_loss and any(kind == b"acTL" for kind, _ in chunks):
         raise RefusedError(path, "this PNG is animated, and all frames but one would be lost; accept the loss to go on")
+    width, height = (int.from_bytes(chunks[0][1][start : start + 4], "big") for start in (0, 4))
+    check_size(path, (height, width))
     try:
         pixels = np.atleast_3d(imagecodecs.png_decode(data))
-    except (imagecodecs.PngError, ValueError) as error:
+    except (imagecodecs.PngError, ValueError, MemoryError) as error:
         raise PictureError(path, f"the PNG stream cannot be decoded: {error}") from error
     return pixels, _metadata(chunks), _profile(path, chunks)
 

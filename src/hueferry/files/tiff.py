@@ -10,6 +10,7 @@ import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
+from hueferry.files.probe import check_size
 from hueferry.picture import Metadata
 
 TiffPage: TypeAlias = Any
@@ -38,7 +39,16 @@ def read_tiff(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Me
             return pixels, _metadata(page), _bytes(page, _ICC) or None
     except RefusedError:
         raise
-    except (tifffile.TiffFileError, ValueError, KeyError, IndexError, RuntimeError, OSError, TypeError) as error:
+    except (
+        tifffile.TiffFileError,
+        ValueError,
+        KeyError,
+        IndexError,
+        RuntimeError,
+        OSError,
+        TypeError,
+        MemoryError,
+    ) as error:
         raise PictureError(path, f"the TIFF cannot be decoded: {error}") from error
 
 
@@ -52,6 +62,7 @@ def _pixels(path: Path, page: TiffPage) -> Pixels:
     kind = page.photometric.name
     if kind not in ("RGB", "MINISBLACK", "YCBCR"):
         raise RefusedError(path, f"this TIFF holds {kind} colour; convert it to RGB or gray first")
+    check_size(path, (int(page.imagelength), int(page.imagewidth)))
     array = page.asarray()
     if page.planarconfig == 2 and array.ndim == 3:
         array = np.moveaxis(array, 0, -1)

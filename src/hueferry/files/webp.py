@@ -8,6 +8,7 @@ import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
+from hueferry.files.probe import check_size, webp_shape
 from hueferry.picture import Metadata
 
 _ICC_FLAG, _ALPHA_FLAG, _EXIF_FLAG, _XMP_FLAG = 0x20, 0x10, 0x08, 0x04
@@ -42,9 +43,10 @@ def read_webp(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Me
         raise RefusedError(
             path, "this WebP is animated, and all frames but one would be lost; accept the loss to go on"
         )
+    check_size(path, webp_shape(data))
     try:
         pixels = np.atleast_3d(imagecodecs.webp_decode(data))
-    except (imagecodecs.WebpError, ValueError) as error:
+    except (imagecodecs.WebpError, ValueError, MemoryError) as error:
         raise PictureError(path, f"the WebP stream cannot be decoded: {error}") from error
     exif = chunks.get(b"EXIF", b"").removeprefix(b"Exif\0\0")
     metadata = Metadata(

@@ -49,6 +49,7 @@ class Fit:
         palette_after: the same colours through the table, in the same order.
         target: the palette it was brought towards.
         sentences: what was done and why, for people.
+        untouched: no part of the way was to be gone (strength 0).
     """
 
     map: Map
@@ -60,6 +61,12 @@ class Fit:
     palette_after: Palette
     target: Palette
     sentences: tuple[str, ...]
+    untouched: bool = False
+
+    @property
+    def leaves_alone(self) -> bool:
+        """Whether nothing is to be changed; the file may then be copied as it is."""
+        return self.evidence.basis is Basis.NONE or self.untouched
 
     @cached_property
     def cost_before(self) -> Cost:
@@ -138,6 +145,7 @@ def fit_picture(
         palette_after=carried(result.table, source.encoding, palette),
         target=target,
         sentences=_sentences(evidence, result, settings),
+        untouched=settings.strength == 0.0,
     )
 
 

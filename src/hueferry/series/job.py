@@ -43,6 +43,7 @@ def run_errand(
     longest: int = 480,
 ) -> Done | Failure:
     """Do one picture from file to file; a picture that cannot be done is a `Failure`, not an exception."""
+    from hueferry.files.atomic import write_bytes
     from hueferry.files.read import read
     from hueferry.files.thumbnail import thumbnail
     from hueferry.files.write import write
@@ -50,9 +51,13 @@ def run_errand(
     try:
         picture = read(errand.source)
         fitted = fit_picture(picture, references, settings, hold=hold)
-        result = fitted.apply(picture)
         errand.output.parent.mkdir(parents=True, exist_ok=True)
-        write(result, errand.output, overwrite=overwrite)
+        if fitted.leaves_alone:  # no second generation of loss for nothing
+            result = picture
+            write_bytes(errand.output, errand.source.read_bytes(), overwrite=overwrite)
+        else:
+            result = fitted.apply(picture)
+            write(result, errand.output, overwrite=overwrite)
         entry = entry_of(errand, fitted, picture)
         small = thumbnail(picture, longest), thumbnail(result, longest)
         return Done(entry, *small, thin(fitted.palette, _SMALL), thin(fitted.palette_after, _SMALL))
