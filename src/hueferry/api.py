@@ -14,7 +14,7 @@ import attrs
 import numpy as np
 from numpy.typing import NDArray
 
-from hueferry.errors import InputError
+from hueferry.errors import HueferryError, InputError
 from hueferry.fitting.fit import Fit, fit_picture
 from hueferry.fitting.reference import Reference, joint_palette
 from hueferry.fitting.settings import Aim, Only, Settings
@@ -22,8 +22,9 @@ from hueferry.maps.method import Method
 from hueferry.measure.cost import Cost
 from hueferry.palettes.palette import Palette
 from hueferry.picture import Picture
-from hueferry.record.record import Record
+from hueferry.record.record import Failure, Record
 from hueferry.series.match import MatchOrder, OnDone
+from hueferry.tables.certificate import Certificate
 from hueferry.tables.table import Table
 
 SAMPLE_FOLDER = Path("sample_images")
@@ -363,3 +364,91 @@ def stain_files(
     if record.entries:
         write_bytes(out / NAME, to_json(record).encode(), overwrite=True)
     return record
+
+
+def fit_file(picture: Path, *, to: Sequence[Path], out: Path, settings: Settings, overwrite: bool = False) -> Fit:
+    """Find the map that brings a picture towards its references and save it as CLF.
+
+    Raises:
+        InputError: a picture cannot be read, or the map cannot be written.
+    """
+    from hueferry.files.atomic import write_bytes
+    from hueferry.tables.clf import clf_text
+
+    if out.suffix.lower() != ".clf":
+        raise InputError(f"{out}: a map is saved as .clf")
+    source = read(picture)
+    fitted = fit_picture(source, [as_reference(path) for path in to], settings)
+    facts = {
+        "picture": picture.name,
+        "reference": ", ".join(path.name for path in to),
+        "aim": settings.aim.value,
+        "certificate": "; ".join(fitted.certificate.sentences()),
+        "evidence": fitted.evidence.decision,
+    }
+    text = clf_text(fitted.table, encoding=source.encoding.name, facts=facts)
+    write_bytes(out, text.encode("utf-8"), overwrite=overwrite)
+    return fitted
+
+
+def apply_file(
+    map_file: Path, pictures: Sequence[Path], *, out: Path, overwrite: bool = False
+) -> tuple[list[Path], list[Failure]]:
+    """Send pictures and folders of pictures through a saved map; what cannot be done is a `Failure`.
+
+    Raises:
+        MapFileError: the map cannot be used.
+        InputError: there is no picture.
+    """
+    from hueferry.files.walk import find_pictures
+    from hueferry.series.plan import plan_errands
+    from hueferry.tables.clf import read_clf
+
+    table = read_clf(map_file)
+    written, failures = [], []
+    for errand in plan_errands(pictures, out, find=find_pictures):
+        try:
+            result = apply(table, errand.source)
+            errand.output.parent.mkdir(parents=True, exist_ok=True)
+            written.append(write(result, errand.output, overwrite=overwrite))
+        except HueferryError as error:
+            failures.append(Failure(errand.source.as_posix(), str(error)))
+    return written, failures
+
+
+def check_map(map_file: Path) -> Certificate:
+    """Return the certificate of a saved map from its file alone: every cell counts as occupied, codes as sRGB.
+
+    Raises:
+        MapFileError: the map cannot be used.
+    """
+    from hueferry.colour.encoding import SRGB
+    from hueferry.tables.cells import Occupied
+    from hueferry.tables.certificate import certify
+    from hueferry.tables.clf import read_clf
+
+    grid = np.stack(np.meshgrid(*[np.linspace(0.0, 1.0, 33)] * 3, indexing="ij"), axis=-1).reshape(-1, 3)
+    everywhere = Occupied(grid, np.full(len(grid), 1 / len(grid)))
+    return certify(read_clf(map_file), occupied=everywhere, encoding=SRGB)
+
+
+def check_folder(folder: Path) -> list[str]:
+    """Compare every file of a run with its hash in the record; return a sentence for each that differs or is gone.
+
+    Raises:
+        InputError: there is no record in the folder.
+    """
+    from hueferry.record.record import FileFact, read_record
+
+    record = read_record(folder)
+    outputs = [(folder / entry["output"]["path"], entry["output"]) for entry in record["entries"] if entry["output"]]
+    inputs = [(Path(fact["path"]), fact) for fact in record["references"]]
+    inputs += [(Path(entry["source"]["path"]), entry["source"]) for entry in record["entries"]]
+    complaints = []
+    for kind, facts in (("output", outputs), ("input", inputs)):
+        for path, fact in facts:
+            if not path.is_file():
+                complaints.append(f"{kind} {path} is gone")
+            elif fact["sha256"] and FileFact.of(path).sha256 != fact["sha256"]:
+                complaints.append(f"{kind} {path} differs from the record")
+    return complaints

@@ -1,0 +1,107 @@
+"""`hueferry fit`, `apply` and `check`: maps that are saved, used again and verified."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from hueferry.cli import options
+from hueferry.cli.terminal import remark, show_json, show_lines
+from hueferry.fitting.settings import Aim, Settings
+
+DIFFERS = 1
+NOTHING_WRITTEN = 2
+
+MapFile = Annotated[Path, typer.Argument(help="A map in the Common LUT Format.", metavar="MAP.clf")]
+
+
+def fit(
+    picture: Annotated[Path, typer.Argument(help="Picture to correct.")],
+    to: Annotated[list[Path], typer.Option("--to", help="What it is brought towards; may be given again.")],
+    out: Annotated[Path, typer.Option("--out", help="Where the map is saved, as .clf.")],
+    *,
+    aim: options.AimOption = Aim.AGREE,
+    method: options.MethodOption = "auto",
+    strength: options.Strength = 1.0,
+    only: options.OnlyOption = None,
+    keep_neutrals: options.KeepNeutrals = False,
+    max_gain: options.MaxGain = None,
+    seed: options.Seed = 0,
+    json: options.Json = False,
+    overwrite: options.Overwrite = False,
+) -> None:
+    """Find the map that brings PICTURE towards its references, and save it; no picture is written."""
+    chosen = options.parse_method(method)
+
+    from hueferry.api import fit_file
+
+    settings = Settings(
+        aim=aim,
+        method=chosen,
+        strength=strength,
+        only=only,
+        keep_neutrals=keep_neutrals,
+        max_gain=max_gain,
+        seed=seed,
+    )
+    fitted = fit_file(picture, to=to, out=out, settings=settings, overwrite=overwrite)
+    if json:
+        show_json({"schema": "hueferry/fit-1", "map": out.as_posix(), **fitted.as_dict()})
+    else:
+        show_lines([*fitted.sentences, *fitted.certificate.sentences(), f"saved as {out}"])
+
+
+def apply(
+    map_file: MapFile,
+    pictures: options.Pictures,
+    out: options.Out,
+    *,
+    json: options.Json = False,
+    overwrite: options.Overwrite = False,
+) -> None:
+    """Send pictures through a saved map; nothing is measured or fitted."""
+    from hueferry.api import apply_file
+
+    written, failures = apply_file(map_file, pictures, out=out, overwrite=overwrite)
+    if json:
+        show_json(
+            {
+                "schema": "hueferry/apply-1",
+                "written": [path.as_posix() for path in written],
+                "failures": [{"path": failure.path, "reason": failure.reason} for failure in failures],
+            }
+        )
+    else:
+        show_lines([str(path) for path in written])
+    for failure in failures:
+        remark(f"failed: {failure.reason}")
+    if failures:
+        raise typer.Exit(DIFFERS if written else NOTHING_WRITTEN)
+
+
+def check(
+    target: Annotated[Path, typer.Argument(help="A map, or the folder of a run.", metavar="MAP.clf|DIR")],
+    *,
+    json: options.Json = False,
+) -> None:
+    """Certify a map from its file alone, or verify every file of a run against its record."""
+    from hueferry.api import check_folder, check_map
+
+    if target.is_dir():
+        complaints = check_folder(target)
+        if json:
+            show_json({"schema": "hueferry/check-1", "differences": complaints})
+        else:
+            show_lines(complaints or ["every file is as the record says"])
+        if complaints:
+            raise typer.Exit(DIFFERS)
+        return
+    certificate = check_map(target)
+    if json:
+        show_json({"schema": "hueferry/check-1", "certificate": certificate.as_dict()})
+    else:
+        show_lines(certificate.sentences())
+    if certificate.folds:
+        raise typer.Exit(DIFFERS)
