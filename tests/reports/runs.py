@@ -9,8 +9,8 @@ from typing import Any
 
 from PIL import Image
 
-from hueferry.api import match_files
 from hueferry.fitting.settings import Settings
+from hueferry.jobs import match_files
 from hueferry.record.record import read_record
 from hueferry.series.match import MatchOrder
 from photographs import in_other_light, photograph

@@ -10,8 +10,8 @@ from pathlib import Path
 
 import pytest
 
-from hueferry.api import cost_table
 from hueferry.errors import InputError
+from hueferry.jobs import cost_table
 from hueferry.record.record import read_record
 from hueferry.reports.page import render_page, write_report
 from reports.runs import HOSTILE, make_run, with_entries

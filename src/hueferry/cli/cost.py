@@ -22,8 +22,8 @@ def cost(
     if len(pictures) < 2:
         raise InputError("cost compares two pictures or more; only one was given")
 
-    from hueferry.api import cost_table
     from hueferry.cli.cost_tables import show_cost
+    from hueferry.jobs import cost_table
 
     table = cost_table(pictures, out=out)
     if json:

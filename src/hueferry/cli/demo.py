@@ -22,7 +22,7 @@ def demo(
     quiet: options.Quiet = False,
 ) -> None:
     """Do the whole job on the sample series of Marrowfield Tileworks: bring every frame to the hero frame."""
-    from hueferry.api import demo_samples, match_files
+    from hueferry.jobs import demo_samples, match_files
     from hueferry.series.match import MatchOrder
 
     samples = demo_samples(out)

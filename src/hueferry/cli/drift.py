@@ -27,7 +27,7 @@ def add(
     json: options.Json = False,
 ) -> None:
     """Measure a control frame against its reference and append the reading to LOG."""
-    from hueferry.api import drift_add
+    from hueferry.jobs import drift_add
 
     reading = drift_add(log, picture, to=to, device=device, when=when)
     if json:
@@ -49,7 +49,7 @@ def chart(
     overwrite: options.Overwrite = False,
 ) -> None:
     """Say since when, in which direction and how much a device has drifted."""
-    from hueferry.api import drift_chart
+    from hueferry.jobs import drift_chart
 
     found = drift_chart(log, device=device, out=out, overwrite=overwrite)
     if json:

@@ -35,7 +35,7 @@ def fit(
     """Find the map that brings PICTURE towards its references, and save it; no picture is written."""
     chosen = options.parse_method(method)
 
-    from hueferry.api import fit_file
+    from hueferry.jobs import fit_file
 
     settings = Settings(
         aim=aim,
@@ -62,7 +62,7 @@ def apply(
     overwrite: options.Overwrite = False,
 ) -> None:
     """Send pictures through a saved map; nothing is measured or fitted."""
-    from hueferry.api import apply_file
+    from hueferry.jobs import apply_file
 
     written, failures = apply_file(map_file, pictures, out=out, overwrite=overwrite)
     if json:
@@ -87,7 +87,7 @@ def check(
     json: options.Json = False,
 ) -> None:
     """Certify a map from its file alone, or verify every file of a run against its record."""
-    from hueferry.api import check_folder, check_map
+    from hueferry.jobs import check_folder, check_map
 
     if target.is_dir():
         complaints = check_folder(target)

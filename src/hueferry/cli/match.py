@@ -39,7 +39,7 @@ def match(
     """Bring pictures together in colour: towards references, or towards their own common palette."""
     chosen = options.parse_method(method)
 
-    from hueferry.api import match_files
+    from hueferry.jobs import match_files
     from hueferry.series.match import MatchOrder
 
     settings = Settings(

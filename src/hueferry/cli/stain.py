@@ -43,7 +43,7 @@ def stain(
     overwrite: options.Overwrite = False,
 ) -> None:
     """Bring stained bright-field sections together, in optical density. Research use only."""
-    from hueferry.api import stain_files
+    from hueferry.jobs import stain_files
     from hueferry.slides.cautions import CAUTIONS
 
     choices = {

@@ -1,0 +1,280 @@
+"""The whole jobs of the command line: runs on files and folders, and what they leave."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from datetime import datetime
+from itertools import combinations
+from pathlib import Path
+from typing import Any
+
+import attrs
+import numpy as np
+
+from hueferry.api import apply, as_reference, read, report, write
+from hueferry.errors import HueferryError, InputError
+from hueferry.fitting.fit import Fit, fit_picture
+from hueferry.fitting.settings import Settings
+from hueferry.record.record import Failure, Record
+from hueferry.series.match import MatchOrder, OnDone
+from hueferry.tables.certificate import Certificate
+
+SAMPLE_FOLDER = Path("sample_images")
+
+
+def match_files(order: MatchOrder, *, on_done: OnDone | None = None) -> Record:
+    """Bring files and folders together; pictures, record and contact sheet are left in the folder of the order.
+
+    Raises:
+        InputError: it cannot be done as asked; nothing was written.
+    """
+    from hueferry.reports.contact_sheet import write_contact_sheet
+    from hueferry.series.match import match_pictures
+
+    run = match_pictures(order, on_done=on_done)
+    if run.thumbnails:
+        write_contact_sheet(run.thumbnails, order.out)
+        report(order.out)
+    return run.record
+
+
+def cost_table(paths: Sequence[Path], *, out: Path | None = None) -> dict[str, Any]:
+    """Compare pictures each with each: every figure of every pair, units, noise, and a map of three or more.
+
+    Args:
+        paths: two pictures or more.
+        out: folder for a report page; None writes nothing.
+
+    Returns:
+        JSON values: `schema`, `pairs`, `units`, and `comparison` for three pictures or more.
+
+    Raises:
+        InputError: fewer than two pictures, or one that cannot be read.
+    """
+    from hueferry.measure.cost import SCHEMA, UNITS, measure
+    from hueferry.measure.matrix import compare
+    from hueferry.measure.noise import judge, noise_floor
+    from hueferry.palettes.build import palette_of
+
+    pictures = [read(path) for path in paths]
+    names = distinct_names(paths)
+    palettes = [palette_of(picture) for picture in pictures]
+    floors = [noise_floor(picture) for picture in pictures]
+    pairs = []
+    for i, j in combinations(range(len(paths)), 2):
+        figures = measure(palettes[i], palettes[j])
+        judgement = judge(figures.sliced_w2, floors[i], floors[j])
+        noise = {"sampling": judgement.sampling, "within": judgement.within}
+        pairs.append({"a": names[i], "b": names[j], **figures.as_dict(), "noise": noise, "verdict": judgement.sentence})
+    table: dict[str, Any] = {"schema": SCHEMA, "pairs": pairs, "units": dict(UNITS)}
+    if len(paths) > 2:
+        table["comparison"] = compare(palettes, names).as_dict()
+    if out is not None:
+        from hueferry.reports.cost_page import write_cost_page
+
+        write_cost_page(table, out)
+    return table
+
+
+def distinct_names(paths: Sequence[Path]) -> list[str]:
+    """Return short names for files: the last part of each path, or the whole path where that is not enough."""
+    short = [path.name for path in paths]
+    return [name if short.count(name) == 1 else path.as_posix() for name, path in zip(short, paths, strict=True)]
+
+
+@attrs.frozen
+class Samples:
+    """The sample series: the hero frame and the frames to bring to it."""
+
+    hero: Path
+    frames: tuple[Path, ...]
+
+
+def demo_samples(out: Path) -> Samples:
+    """Find the sample pictures in `sample_images/`, or render them into `out` where there is no such folder."""
+    folder = SAMPLE_FOLDER
+    if not (folder / "hero.jpg").is_file():
+        from hueferry.samples.photographs import render_samples
+
+        folder = out / SAMPLE_FOLDER
+        if not (folder / "hero.jpg").is_file():
+            render_samples(folder)
+    return Samples(folder / "hero.jpg", tuple(sorted(folder.glob("bench-*"))))
+
+
+def drift_add(log: Path, picture: Path, *, to: Path, device: str = "", when: datetime | None = None) -> dict[str, Any]:
+    """Measure a control frame against its reference, append the reading to a log, and return it as JSON values.
+
+    Raises:
+        InputError: a picture cannot be read, or the file is not a drift log.
+    """
+    from hueferry.drift.log import add_reading
+    from hueferry.drift.reading import Labels
+
+    labels = Labels(device=device, picture=picture.name, reference=to.name, when=when)
+    reading = add_reading(log, read(picture), as_reference(to).palette, labels)
+    return attrs.asdict(reading) | {"schema": "hueferry/drift-1", "when": reading.when.isoformat()}
+
+
+def drift_chart(
+    log: Path, *, device: str | None = None, out: Path | None = None, overwrite: bool = False
+) -> dict[str, Any]:
+    """Chart one device of a drift log, write the chart if asked, and return what it says as JSON values.
+
+    Args:
+        log: the drift log.
+        device: whose; None takes the only one.
+        out: where to write: `.svg` the chart, `.csv` its table.
+        overwrite: replace an earlier chart.
+
+    Raises:
+        InputError: there is no such log or device, several devices and none named, or a suffix that names no form.
+    """
+    from hueferry.drift.chart import chart
+    from hueferry.drift.drawing import as_svg
+    from hueferry.drift.log import list_devices, list_readings
+    from hueferry.drift.table import as_csv
+    from hueferry.files.atomic import write_bytes
+
+    devices = list_devices(log)
+    if device is None and len(devices) > 1:
+        raise InputError(f"{log} holds several devices; choose one with --device: " + ", ".join(devices))
+    found = chart(list_readings(log, device=device))
+    if out is not None:
+        forms = {".svg": as_svg, ".csv": as_csv}
+        if out.suffix.lower() not in forms:
+            raise InputError(f"{out}: the suffix names no form of a chart; use .svg or .csv")
+        write_bytes(out, forms[out.suffix.lower()](found).encode("utf-8"), overwrite=overwrite)
+    drift = None if found.drift is None else attrs.asdict(found.drift)
+    return {
+        "schema": "hueferry/drift-1",
+        "device": found.device,
+        "state": found.state.value,
+        "sentence": found.sentence,
+        "readings": len(found.readings),
+        "drift": drift,
+    }
+
+
+def stain_files(
+    slides: Sequence[Path],
+    *,
+    out: Path,
+    to: Sequence[Path] = (),
+    choices: Mapping[str, Any] | None = None,
+    on_done: Callable[[Any], None] | None = None,
+) -> Record:
+    """Bring slides and folders of slides together; slides, overlays and a record are left in `out`.
+
+    Args:
+        slides: slides, and folders of slides.
+        out: folder of the results.
+        to: reference slides; none means what the slides have in common.
+        choices: fields of `slides.run.StainSettings`, in plain words; "auto" for the packing chooses.
+        on_done: called with each outcome.
+
+    Raises:
+        InputError: it cannot be done as asked.
+    """
+    from hueferry.files.atomic import write_bytes
+    from hueferry.record.record import NAME, to_json
+    from hueferry.slides.record import record_of, settings_from_words
+    from hueferry.slides.run import stain
+
+    words = dict(choices or {})
+    settings = settings_from_words(words)
+    if (out / NAME).exists() and not settings.overwrite:
+        raise InputError(f"{out / NAME} exists already; choose another folder, or add --overwrite")
+    results = stain(slides, to=to, out=out, settings=settings, on_done=on_done)
+    record = record_of(results, to=to, out=out, words=words)
+    if record.entries:
+        write_bytes(out / NAME, to_json(record).encode(), overwrite=True)
+    return record
+
+
+def fit_file(picture: Path, *, to: Sequence[Path], out: Path, settings: Settings, overwrite: bool = False) -> Fit:
+    """Find the map that brings a picture towards its references and save it as CLF.
+
+    Raises:
+        InputError: a picture cannot be read, or the map cannot be written.
+    """
+    from hueferry.files.atomic import write_bytes
+    from hueferry.tables.clf import clf_text
+
+    if out.suffix.lower() != ".clf":
+        raise InputError(f"{out}: a map is saved as .clf")
+    source = read(picture)
+    fitted = fit_picture(source, [as_reference(path) for path in to], settings)
+    facts = {
+        "picture": picture.name,
+        "reference": ", ".join(path.name for path in to),
+        "aim": settings.aim.value,
+        "certificate": "; ".join(fitted.certificate.sentences()),
+        "evidence": fitted.evidence.decision,
+    }
+    text = clf_text(fitted.table, encoding=source.encoding.name, facts=facts)
+    write_bytes(out, text.encode("utf-8"), overwrite=overwrite)
+    return fitted
+
+
+def apply_file(
+    map_file: Path, pictures: Sequence[Path], *, out: Path, overwrite: bool = False
+) -> tuple[list[Path], list[Failure]]:
+    """Send pictures and folders of pictures through a saved map; what cannot be done is a `Failure`.
+
+    Raises:
+        MapFileError: the map cannot be used.
+        InputError: there is no picture.
+    """
+    from hueferry.files.walk import find_pictures
+    from hueferry.series.plan import plan_errands
+    from hueferry.tables.clf import read_clf
+
+    table = read_clf(map_file)
+    written, failures = [], []
+    for errand in plan_errands(pictures, out, find=find_pictures):
+        try:
+            result = apply(table, errand.source)
+            errand.output.parent.mkdir(parents=True, exist_ok=True)
+            written.append(write(result, errand.output, overwrite=overwrite))
+        except HueferryError as error:
+            failures.append(Failure(errand.source.as_posix(), str(error)))
+    return written, failures
+
+
+def check_map(map_file: Path) -> Certificate:
+    """Return the certificate of a saved map from its file alone: every cell counts as occupied, codes as sRGB.
+
+    Raises:
+        MapFileError: the map cannot be used.
+    """
+    from hueferry.colour.encoding import SRGB
+    from hueferry.tables.cells import Occupied
+    from hueferry.tables.certificate import certify
+    from hueferry.tables.clf import read_clf
+
+    grid = np.stack(np.meshgrid(*[np.linspace(0.0, 1.0, 33)] * 3, indexing="ij"), axis=-1).reshape(-1, 3)
+    everywhere = Occupied(grid, np.full(len(grid), 1 / len(grid)))
+    return certify(read_clf(map_file), occupied=everywhere, encoding=SRGB)
+
+
+def check_folder(folder: Path) -> list[str]:
+    """Compare every file of a run with its hash in the record; return a sentence for each that differs or is gone.
+
+    Raises:
+        InputError: there is no record in the folder.
+    """
+    from hueferry.record.record import FileFact, read_record
+
+    record = read_record(folder)
+    outputs = [(folder / entry["output"]["path"], entry["output"]) for entry in record["entries"] if entry["output"]]
+    inputs = [(Path(fact["path"]), fact) for fact in record["references"]]
+    inputs += [(Path(entry["source"]["path"]), entry["source"]) for entry in record["entries"]]
+    complaints = []
+    for kind, facts in (("output", outputs), ("input", inputs)):
+        for path, fact in facts:
+            if not path.is_file():
+                complaints.append(f"{kind} {path} is gone")
+            elif fact["sha256"] and FileFact.of(path).sha256 != fact["sha256"]:
+                complaints.append(f"{kind} {path} differs from the record")
+    return complaints
