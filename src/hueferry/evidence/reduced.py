@@ -148,7 +148,11 @@ def _shrink(pixels: Pixels, size: tuple[int, int]) -> Pixels:
 
     if pixels.shape[:2] == size:
         return pixels
-    shrunk = cv2.resize(np.ascontiguousarray(pixels), (size[1], size[0]), interpolation=cv2.INTER_AREA)
+    shrunk = np.ascontiguousarray(pixels)
+    # Halving has a path of its own that is far faster than averaging over 9.8 pixels, say, all at once.
+    while all(side % 2 == 0 and side >= 4 * wanted for side, wanted in zip(shrunk.shape[:2], size, strict=True)):
+        shrunk = cv2.resize(shrunk, (shrunk.shape[1] // 2, shrunk.shape[0] // 2), interpolation=cv2.INTER_AREA)
+    shrunk = cv2.resize(shrunk, (size[1], size[0]), interpolation=cv2.INTER_AREA)
     return shrunk if shrunk.ndim == 3 else shrunk[:, :, None]
 
 
