@@ -145,3 +145,16 @@ def test_a_thousand_mutated_maps_are_tables_or_typed_errors(tmp_path: Path) -> N
         except MapFileError:
             continue
         assert np.isfinite(found.lattice).all()
+
+
+@pytest.mark.parametrize("number", ["nan", "inf", "-inf", "1e99"])
+def test_numbers_of_others_that_are_not_finite_are_refused(tmp_path: Path, number: str) -> None:
+    path = tmp_path / "other.clf"
+    path.write_text(
+        '<?xml version="1.0" encoding="UTF-8"?>\n<ProcessList id="a" compCLFversion="3.0">'
+        '<LUT1D inBitDepth="32f" outBitDepth="32f">'
+        f'<Array dim="2 1">{number} 1</Array></LUT1D></ProcessList>\n',
+        encoding="utf-8",
+    )
+    with pytest.raises(MapFileError, match="not finite"):
+        read_clf(path)

@@ -99,6 +99,7 @@ def read_clf(path: Path) -> Table:
     names = [name for name, _ in nodes]
     own = any(_local(node) == "Schema" and (node.text or "") == SCHEMA for node in root.iter())
     if not own:
+        _check_finite(path, root)
         return _sampled(path)
     if names not in (["LUT3D"], ["LUT1D", "LUT3D"]):
         raise MapFileError(path, "it says that it is a map of ours, but its nodes are " + ", ".join(names))
@@ -148,7 +149,7 @@ def _array(path: Path, node: Element, kind: str) -> NDArray[np.float32]:
     if array is None:
         raise MapFileError(path, f"its {kind} has no array")
     try:
-        numbers = np.array((array.text or "").split(), dtype=np.float32)
+        numbers = _numbers(array)
         dim = [int(part) for part in (array.get("dim") or "").split()]
     except (ValueError, OverflowError) as error:
         raise MapFileError(path, f"its {kind} holds something that is no number: {error}") from error
@@ -157,6 +158,24 @@ def _array(path: Path, node: Element, kind: str) -> NDArray[np.float32]:
     if not np.isfinite(numbers).all():
         raise MapFileError(path, f"its {kind} holds numbers that are not finite")
     return numbers.reshape(-1, 3)
+
+
+def _numbers(node: Element) -> NDArray[np.float32]:
+    with np.errstate(over="ignore"):  # what float32 cannot hold becomes infinite, and is refused as such
+        return np.array((node.text or "").split(), dtype=np.float32)
+
+
+def _check_finite(path: Path, root: Element) -> None:
+    """Refuse arrays with numbers that are not finite: OpenColorIO would take NaN for 0 without a word."""
+    for node in root.iter():
+        if _local(node) != "Array":
+            continue
+        try:
+            numbers = _numbers(node)
+        except (ValueError, OverflowError) as error:
+            raise MapFileError(path, f"an array holds something that is no number: {error}") from error
+        if not np.isfinite(numbers).all():
+            raise MapFileError(path, "an array holds numbers that are not finite")
 
 
 def _sampled(path: Path) -> Table:
