@@ -144,7 +144,9 @@ def as_reference(value: ReferenceLike) -> Reference:
         return value
     if isinstance(value, Palette):
         return Reference("palette", value)
-    return Reference.of_picture(value if isinstance(value, Picture) else read(value))
+    if isinstance(value, Picture):
+        return Reference.of_picture(value)
+    return Reference.of_file(Path(value))
 
 
 def settings_from(choices: Choices) -> Settings:

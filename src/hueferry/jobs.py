@@ -278,3 +278,22 @@ def check_folder(folder: Path) -> list[str]:
             elif fact["sha256"] and FileFact.of(path).sha256 != fact["sha256"]:
                 complaints.append(f"{kind} {path} differs from the record")
     return complaints
+
+
+def palette_file(pictures: Sequence[Path], *, out: Path, overwrite: bool = False) -> dict[str, Any]:
+    """Save the palette of a picture, or the common palette of several, and return what it is as JSON values.
+
+    Raises:
+        InputError: a picture cannot be read, or the palette cannot be written as asked.
+    """
+    from hueferry.errors import OutputError
+    from hueferry.files.atomic import write_bytes
+    from hueferry.fitting.reference import PALETTE_SUFFIXES, joint_palette
+    from hueferry.palettes.cgats import cgats_text
+
+    if out.suffix.lower() not in PALETTE_SUFFIXES:
+        raise OutputError(out, "a palette is saved as CGATS text; let its name end in .txt or .cgats")
+    found = joint_palette([as_reference(path) for path in pictures])
+    write_bytes(out, cgats_text(found).encode(), overwrite=overwrite)
+    names = [path.as_posix() for path in pictures]
+    return {"schema": "hueferry/palette-1", "palette": out.as_posix(), "colours": len(found), "pictures": names}

@@ -13,7 +13,7 @@ from typing import Any
 import typer
 
 from hueferry import __version__
-from hueferry.cli import cost, demo, drift, maps, match, report, stain
+from hueferry.cli import cost, demo, drift, maps, match, palette, report, stain
 from hueferry.cli.terminal import remark, show_json
 from hueferry.errors import HueferryError, SolverError
 
@@ -35,6 +35,7 @@ app = typer.Typer(
 app.command("match")(match.match)
 app.command("stain")(stain.stain)
 app.command("cost")(cost.cost)
+app.command("palette")(palette.palette)
 app.command("fit")(maps.fit)
 app.command("apply")(maps.apply)
 app.command("check")(maps.check)

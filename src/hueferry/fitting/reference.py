@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 import attrs
@@ -13,6 +14,9 @@ from hueferry.picture import Picture
 
 if TYPE_CHECKING:
     from hueferry.evidence.reduced import Reduced
+
+PALETTE_SUFFIXES = frozenset({".txt", ".cgats"})
+"""How the names of saved palettes end."""
 
 
 @attrs.frozen(eq=False)
@@ -39,6 +43,21 @@ class Reference:
 
         shown = name if name is not None else (picture.path.name if picture.path is not None else "reference")
         return cls(shown, palette_of(picture), reduce_picture(picture))
+
+    @classmethod
+    def of_file(cls, path: Path) -> Reference:
+        """Read a reference: a saved palette where the name ends as one, else a picture.
+
+        Raises:
+            InputError: the file cannot be read as what its name says.
+        """
+        if path.suffix.lower() in PALETTE_SUFFIXES:
+            from hueferry.palettes.cgats import read_cgats
+
+            return cls(path.name, read_cgats(path))
+        from hueferry.files.read import read
+
+        return cls.of_picture(read(path), path.name)
 
 
 def joint_palette(references: Sequence[Reference]) -> Palette:

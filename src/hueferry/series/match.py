@@ -79,10 +79,8 @@ def load_references(to: Sequence[Path], errands: Sequence[Errand], settings: Set
     Raises:
         InputError: a named reference cannot be read, or no picture can serve as one.
     """
-    from hueferry.files.read import read
-
     if to:
-        references = [Reference.of_picture(read(path), path.name) for path in to]
+        references = [Reference.of_file(path) for path in to]
         return references, "towards " + ", ".join(reference.name for reference in references)
     found = [reference for errand in errands if (reference := _readable(errand.source)) is not None]
     if not found:

@@ -1,0 +1,28 @@
+"""`hueferry palette`: save a palette as a reference."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from hueferry.cli import options
+from hueferry.cli.terminal import show_json, show_lines
+
+
+def palette(
+    pictures: Annotated[list[Path], typer.Argument(help="Pictures, or palettes saved before.", metavar="PICTURE...")],
+    out: Annotated[Path, typer.Option("--out", help="Where the palette is saved, as .txt or .cgats.")],
+    *,
+    json: options.Json = False,
+    overwrite: options.Overwrite = False,
+) -> None:
+    """Save the palette of a picture, or the common palette of several, for use with --to."""
+    from hueferry.jobs import palette_file
+
+    saved = palette_file(pictures, out=out, overwrite=overwrite)
+    if json:
+        show_json(saved)
+    else:
+        show_lines([f"{saved['colours']} colours saved as {out}"])
