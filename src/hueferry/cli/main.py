@@ -13,7 +13,7 @@ from typing import Any
 import typer
 
 from hueferry import __version__
-from hueferry.cli import cost, demo, drift, maps, match, palette, report, stain
+from hueferry.cli import cost, demo, drift, export, maps, match, palette, report, stain
 from hueferry.cli.terminal import remark, show_json
 from hueferry.errors import HueferryError, SolverError
 
@@ -38,6 +38,7 @@ app.command("cost")(cost.cost)
 app.command("palette")(palette.palette)
 app.command("fit")(maps.fit)
 app.command("apply")(maps.apply)
+app.command("export")(export.export)
 app.command("check")(maps.check)
 app.add_typer(drift.app, name="drift")
 app.command("report")(report.report)
