@@ -185,6 +185,9 @@ def report(folder: PathLike) -> Path:
     Raises:
         InputError: there is no record in the folder.
     """
+    from hueferry.record.record import read_record
     from hueferry.reports.page import write_report
+    from hueferry.reports.slide_page import write_slide_page
 
-    return write_report(Path(folder))
+    record = read_record(Path(folder))
+    return write_slide_page(record, Path(folder)) if record["command"] == "stain" else write_report(Path(folder))

@@ -189,6 +189,7 @@ def stain_files(
     record = record_of(results, to=to, out=out, words=words)
     if record.entries:
         write_bytes(out / NAME, to_json(record).encode(), overwrite=True)
+        report(out)
     return record
 
 

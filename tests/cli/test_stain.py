@@ -47,6 +47,14 @@ def test_a_restained_section_comes_back_to_its_first_staining(slides: Path, caps
     assert "not validated for diagnosis" in captured.err
     assert any("not validated for diagnosis" in sentence for sentence in record["sentences"])
     assert max(len(line) for line in captured.out.splitlines()) <= 80
+    page = (out / "report.html").read_text(encoding="utf-8")
+    assert page.count("not validated for diagnosis") >= 2
+    assert f"<td>{record['entries'][0]['numbers']['cost_delta_e_after']:.2f}</td>" in page
+    assert "data:image/jpeg" in page
+    assert "https://" not in page
+    before = page
+    assert run(["report", str(out)]) == 0
+    assert (out / "report.html").read_text(encoding="utf-8") == before
     # Glass of the corner, within two codes of its target.
     assert np.abs(result[:12, :12].mean(axis=(0, 1)) - truth[:12, :12].mean(axis=(0, 1))).max() < 2
 
@@ -62,7 +70,7 @@ def test_measuring_writes_no_slide(slides: Path, capsys: pytest.CaptureFixture[s
     assert code == 0
     assert record["entries"][0]["output"] is None
     assert record["entries"][0]["numbers"]["before"]["tissue_share"] > 0.3
-    assert [path.name for path in out.iterdir()] == ["record.json"]
+    assert sorted(path.name for path in out.iterdir()) == ["record.json", "report.html"]
 
 
 @pytest.mark.parametrize(

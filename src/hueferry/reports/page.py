@@ -75,7 +75,7 @@ def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
         sources=SOURCES[record["settings"]["aim"]],
         settings=setting_facts(record["settings"]),
         versions=sorted(record["versions"].items()),
-        files=_files(record),
+        files=record_files(record),
         version=record["versions"].get("hueferry", ""),
         style=style,
         script=script,
@@ -255,6 +255,7 @@ def _curve(values: Json, caption: str, span: tuple[float, float], labels: tuple[
     }
 
 
-def _files(record: Json) -> list[Json]:
+def record_files(record: Json) -> list[Json]:
+    """Return the facts of every file that a record names: references, inputs, outputs."""
     outputs = [entry["output"] for entry in record["entries"] if entry["output"] is not None]
     return [*record["references"], *(entry["source"] for entry in record["entries"]), *outputs]

@@ -91,6 +91,13 @@ def largest_change(before: Picture, after: Picture) -> Window:
     return found
 
 
+def picture_address(picture: Picture, longest: int) -> str:
+    """Return a picture as a data address, at most `longest` pixels on a side."""
+    from hueferry.files.thumbnail import thumbnail
+
+    return _address(thumbnail(picture, longest).pixels)
+
+
 def _address(pixels: np.ndarray[Any, Any]) -> str:
     from hueferry.files.jpeg import jpeg_bytes
 
