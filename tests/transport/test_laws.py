@@ -60,19 +60,21 @@ def test_exact_plans_prove_themselves(seed: int) -> None:
     np.testing.assert_allclose(plan.coupling.sum(axis=0), b, atol=1e-12)
 
 
-@settings(max_examples=15, derandomize=True, deadline=None)
-@given(seeds, st.integers(1, 12))
-def test_the_gap_bounds_the_error_of_a_solve_cut_short(seed: int, pivots: int) -> None:
-    x, a, y, b = problem(seed, 40, 40)
-    cost = squared_distances(x, y)
-
-    try:
-        cut = solve_exact(a, b, cost, iterations=pivots)
-    except HueferryError:
-        return  # what was cut short before it was a plan is refused, not returned
-    best = solve_exact(a, b, cost)
-
-    assert cut.cost - best.cost <= cut.gap + 1e-12
+def test_the_gap_bounds_the_error_of_a_solve_cut_short() -> None:
+    """A solve cut short either is refused, being no plan yet, or its gap bounds how far it is from the best."""
+    open_gaps = 0
+    for seed in range(25):
+        x, a, y, b = problem(seed, 40, 40)
+        cost = squared_distances(x, y)
+        best = solve_exact(a, b, cost)
+        for pivots in (100, 150, 200, 300):
+            try:
+                cut = solve_exact(a, b, cost, iterations=pivots)
+            except HueferryError:
+                continue
+            open_gaps += cut.gap > 1e-9
+            assert cut.cost - best.cost <= cut.gap + 1e-12
+    assert open_gaps > 20
 
 
 @settings(max_examples=15, derandomize=True, deadline=None)

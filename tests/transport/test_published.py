@@ -141,6 +141,12 @@ def test_the_gaussian_map_is_cheaper_than_the_maps_it_is_mistaken_for() -> None:
 
     assert cost(gaussian_map(first, second)) == pytest.approx(0.9293118550, abs=1e-9)
     assert cost(cholesky) == pytest.approx(1.1923102302, abs=1e-9)
+    values, vectors = np.linalg.eigh(first)
+    other = np.linalg.eigh(second)
+    roots = (other[1] * np.sqrt(other[0])) @ other[1].T @ (vectors / np.sqrt(values)) @ vectors.T
+    assert cost(roots) == pytest.approx(0.9331709372, abs=1e-9)
+    diagonal = np.diag(np.sqrt(np.diag(second) / np.diag(first)))
+    assert (diagonal @ first @ diagonal)[0, 1] == pytest.approx(0.6123724357, abs=1e-9)  # not the −0.3 that is wanted
 
 
 def test_gaussian_w2_with_means() -> None:
@@ -190,7 +196,13 @@ def test_the_two_by_two_plan_in_closed_form(epsilon: float, corner: float) -> No
 
 @pytest.mark.parametrize(
     ("epsilon", "linear", "value"),
-    [(0.5, 10.2421951145, 10.7776703453), (2, 10.8768943744, 11.8175080165), (10, 12.5968757626, 13.2533871664)],
+    [
+        (0.1, 10.0496875122, 10.2347564686),
+        (0.5, 10.2421951145, 10.7776703453),
+        (2, 10.8768943744, 11.8175080165),
+        (10, 12.5968757626, 13.2533871664),
+        (1000, 13.9840002560, 13.9920000640),
+    ],
 )
 def test_entropic_transport_of_normals(epsilon: float, linear: float, value: float) -> None:
     """N(0, 1) to N(3, 2): Janati, Muzellec, Peyré & Cuturi (2020), theorem 1; a grid agrees to 1e-5."""
@@ -281,7 +293,7 @@ def test_two_points_with_loose_marginals(
     assert plan.value == pytest.approx(value, abs=1e-9)
 
 
-@pytest.mark.parametrize(("penalty", "crossing"), [(0.90, 0.0), (1.0, 0.0330990), (10.0, 0.3587204)])
+@pytest.mark.parametrize(("penalty", "crossing"), [(0.90, 0.0), (0.92, 0.0039095), (1.0, 0.0330990), (10.0, 0.3587204)])
 def test_proportions_are_left_alone_below_the_threshold(penalty: float, crossing: float) -> None:
     """(½, ½) to (.9, .1) at squared distance 1: nothing crosses while ρ < 1/ln 3 (own derivation, POT agrees)."""
     plan = solve_unbalanced(
@@ -333,7 +345,7 @@ def entropic_value(x: np.ndarray, a: np.ndarray, y: np.ndarray, b: np.ndarray, e
     return float(a @ f + b @ g)
 
 
-@pytest.mark.parametrize(("epsilon", "divergence"), [(0.5, 9.9980546189), (2, 9.9705794128)])
+@pytest.mark.parametrize(("epsilon", "divergence"), [(0.5, 9.9980546189), (2, 9.9705794128), (1e6, 9.0000090)])
 def test_the_sinkhorn_divergence_of_normals(epsilon: float, divergence: float) -> None:
     """S_ε(N(0, 1), N(3, 2)): Feydy et al. (2019) with the closed form of Janati et al. (2020)."""
     x, y = np.linspace(-7, 7, 301), np.linspace(-11, 17, 301)
@@ -447,3 +459,61 @@ def test_matching_on_a_line_is_what_scikit_image_does() -> None:
     x, y, shares = A([10.0, 20, 30, 40]), A([100.0, 110, 150, 200]), np.full(4, 0.25)
 
     np.testing.assert_allclose(rising_between(x, shares, y, shares, knots=4, steepest=1e6)(x), y, atol=1e-9)
+
+
+def test_the_self_term_is_what_makes_entropic_transport_biased() -> None:
+    """OT_ε(N(0, 1), N(0, 1)) at ε = 2 is 1.2451438476 and not 0 (Janati et al. 2020): the trap of the bare value."""
+    x = np.linspace(-7, 7, 301)
+
+    assert entropic_value(x, normal_on(x, 0, 1), x, normal_on(x, 0, 1), 2.0) == pytest.approx(1.2451438476, abs=1e-4)
+
+
+def test_half_the_cost_is_half_the_blur() -> None:
+    """With ½|x − y|² and ε/2 the plan is the same: the convention of Pooladian & Niles-Weed (2021)."""
+    x, y = A([0.0, 1.0, 2.5]), A([0.5, 2.0])
+    a, b, cost = np.full(3, 1 / 3), A([0.4, 0.6]), (x[:, None] - y[None, :]) ** 2
+
+    whole = solve_entropic(a, b, cost, epsilon=0.6, tolerance=1e-12).coupling
+    half = solve_entropic(a, b, cost / 2, epsilon=0.3, tolerance=1e-12).coupling
+
+    np.testing.assert_allclose(whole, half, atol=1e-10)
+
+
+def test_the_anti_monotone_pairing_costs_more() -> None:
+    """{0, 1, 3} to {1, 5, 9}: sorted costs 53/3, reversed 101/3, by hand."""
+    x, y = A([0.0, 1, 3]), A([1.0, 5, 9])
+
+    assert ((x - y) ** 2).mean() == pytest.approx(53 / 3)
+    assert ((x - y[::-1]) ** 2).mean() == pytest.approx(101 / 3)
+    assert wasserstein_1d(x, np.full(3, 1 / 3), y, np.full(3, 1 / 3)) == pytest.approx(53 / 3)
+
+
+def test_mixture_transport_is_never_below_the_distance_of_the_mixtures() -> None:
+    """MW2² = 9.625 ≥ W2² = 6.93203 of the same two mixtures (Delon & Desolneux 2020; POT on a grid)."""
+    x = np.linspace(-8, 12, 4001)
+
+    def mixed(parts: list[tuple[float, float, float]]) -> np.ndarray:
+        mass = sum(w / s * np.exp(-(((x - m) / s) ** 2) / 2) for w, m, s in parts)
+        return mass / mass.sum()
+
+    first, second = mixed([(0.5, 0, 1), (0.5, 4, 0.5)]), mixed([(0.3, 1, 1), (0.7, 6, 1)])
+
+    assert wasserstein_1d(x, first, x, second) == pytest.approx(6.93203, abs=1e-3)
+
+
+def test_unmeasurable_problems_are_refused_everywhere() -> None:
+    from hueferry.errors import InputError
+    from hueferry.transport.entropic import entropic_potentials
+    from hueferry.transport.points import potentials_between
+
+    two, nan = A([0.5, 0.5]), A([np.nan, 0.5])
+    with pytest.raises(InputError):
+        wasserstein_1d(A([0.0, 1]), np.zeros(2), A([0.0, 1]), two)
+    with pytest.raises(InputError):
+        wasserstein_1d(A([0.0, 1e200]), two, A([0.0, 1]), two)
+    with pytest.raises(InputError):
+        solve_unbalanced(A([np.inf]), A([1.0]), A([[1.0]]), penalty=1, epsilon=1)
+    with pytest.raises(InputError):
+        entropic_potentials(nan, two, np.zeros((2, 2)), epsilon=1.0)
+    with pytest.raises(InputError):
+        potentials_between(A([[np.nan, 0, 0]]), A([1.0]), A([[0.0, 0, 0]]), A([1.0]), epsilon=1.0)

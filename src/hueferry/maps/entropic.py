@@ -16,7 +16,7 @@ from hueferry.transport.entropic import entropic_potentials, self_potential
 BLUR = 0.03
 """Blur σ of the plan in Oklab (ε = 2 σ²)."""
 
-_BLOCK = 4096
+_BLOCK = 512
 
 
 @attrs.frozen(eq=False)
@@ -56,7 +56,8 @@ class SoftMean:
             x = colours[part].astype(np.float32)
             exponent = x @ (targets.T * np.float32(2 / self.epsilon)) + bias
             peak = exponent.max(axis=1)
-            np.exp(exponent - peak[:, None], out=exponent)
+            # What is below e^-60 of the peak cannot count in float32, and would turn into slow subnormal numbers.
+            np.exp(np.maximum(exponent - peak[:, None], -60), out=exponent)
             sums = exponent @ columns
             means[part] = sums[:, :3] / sums[:, 3:]
             soft[part] = (x.astype(np.float64) ** 2).sum(axis=1) - self.epsilon * (peak + np.log(sums[:, 3]))

@@ -17,7 +17,7 @@ from hueferry.transport.exact import solve_exact
 BANDWIDTH = 0.02
 """Oklab distance over which neighbouring displacements are averaged: what a lattice can follow."""
 
-_BLOCK = 4096
+_BLOCK = 512
 
 
 @attrs.frozen(eq=False)
@@ -59,7 +59,7 @@ class Displacements:
             x = colours[part].astype(np.float32)
             exponent = x @ (points.T * (2 * scale)) + bias
             peak = exponent.max(axis=1)
-            np.exp(exponent - peak[:, None], out=exponent)
+            np.exp(np.maximum(exponent - peak[:, None], -60), out=exponent)
             sums = exponent @ values
             shifts[part] = sums[:, :3] / sums[:, 3:]
             soft[part] = (x**2).sum(axis=1) - (peak + np.log(sums[:, 3])) / scale

@@ -153,6 +153,7 @@ class _Problem:
     ) -> _Problem:
         if not epsilon > 0 or not np.isfinite(epsilon):
             raise InputError(f"the blur ε must be positive, not {epsilon}")
+        check_problem(source, target, cost)
         rows, columns = source > 0, target > 0
         inner = np.ascontiguousarray(cost[np.ix_(rows, columns)], dtype=dtype)
         return cls(source[rows], target[columns], inner, epsilon, rows, columns)

@@ -43,7 +43,7 @@ def solve_exact(source: Weights, target: Weights, cost: Costs, *, iterations: in
     if not np.isfinite(value) or misplaced > 1e-6 or (coupling < -1e-12).any():
         raise SolverError(f"the exact solver misplaced {misplaced:.3g} of the mass")
     gap = max(value - float(a @ f + b @ g), 0.0)
-    return Plan(np.maximum(coupling, 0.0), value, (f, g), gap, misplaced, int(log.get("numItermax", iterations)))
+    return Plan(np.maximum(coupling, 0.0), value, (f, g), gap, misplaced, iterations)
 
 
 def feasible_potentials(

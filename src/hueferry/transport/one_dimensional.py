@@ -10,6 +10,8 @@ from hueferry.errors import InputError
 
 Line = NDArray[np.float64]
 
+_LARGEST = 1e100
+
 
 def monotone_coupling(
     source: Line, source_weights: Weights, target: Line, target_weights: Weights
@@ -38,6 +40,8 @@ def monotone_coupling(
             raise InputError(f"positions and weights must be one (n,) each, not {positions.shape}, {weights.shape}")
         if not np.isfinite(positions).all() or not np.isfinite(weights).all() or (weights < 0).any():
             raise InputError("positions and weights must be finite, and weights not negative")
+        if not weights.sum() > 0 or np.abs(positions).max() > _LARGEST:
+            raise InputError(f"weights must not all be 0, and positions lie within ±{_LARGEST:g}")
     rows, columns = np.argsort(source, kind="stable"), np.argsort(target, kind="stable")
     ends = np.cumsum(source_weights[rows]), np.cumsum(target_weights[columns])
     ends = ends[0] / ends[0][-1], ends[1] / ends[1][-1]

@@ -20,7 +20,7 @@ class Plan:
         potentials: dual potentials (n,) and (m,), in the unit of the costs.
         gap: cost less dual value, an upper bound of how far the cost is from the optimum; 0 proves optimality.
         misplaced: mass that is not where the marginals want it, as a share of 1 (L1, rows and columns together).
-        iterations: how many the solver took.
+        iterations: how many the solver took; for exact plans, how many it was allowed.
     """
 
     coupling: NDArray[np.float64] = attrs.field(converter=read_only)

@@ -49,8 +49,11 @@ def potentials_between(
     """
     if not epsilon > 0 or not ((source_weights > 0).all() and (target_weights > 0).all()):
         raise InputError("blur and weights must be positive; leave out colours without weight")
+    if not (np.isfinite(source).all() and np.isfinite(target).all()):
+        raise InputError("points must be finite")
     g = np.zeros(len(target))
-    level = float(((source.max(axis=0) - target.min(axis=0)) ** 2).sum()) + epsilon
+    every = np.concatenate([source, target])
+    level = float((np.ptp(every, axis=0) ** 2).sum()) + epsilon
     spent, misplaced = 0, np.inf
     while spent < iterations:
         level = max(level * _SHRINK, epsilon)

@@ -58,6 +58,8 @@ def solve_unbalanced(
     References:
         Chizat, Peyré, Schmitzer & Vialard (2018), Scaling algorithms for unbalanced optimal transport problems.
     """
+    if 0 in cost.shape or not (np.isfinite(source).all() and np.isfinite(target).all()):
+        raise InputError("masses must be finite, and there must be some on both sides")
     if cost.shape != (len(source), len(target)) or not np.isfinite(cost).all():
         raise InputError(f"costs {cost.shape} must be finite and fit masses {source.shape} and {target.shape}")
     if not (penalty > 0 and epsilon > 0 and (source > 0).all() and (target > 0).all()):
