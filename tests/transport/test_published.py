@@ -517,3 +517,68 @@ def test_unmeasurable_problems_are_refused_everywhere() -> None:
         entropic_potentials(nan, two, np.zeros((2, 2)), epsilon=1.0)
     with pytest.raises(InputError):
         potentials_between(A([[np.nan, 0, 0]]), A([1.0]), A([[0.0, 0, 0]]), A([1.0]), epsilon=1.0)
+
+
+def test_dantzigs_canneries_prove_their_cost() -> None:
+    """The duals of the demands are .225, .153 and .126 k$ a case where both plants' are 0 (GAMS library, TRNSPORT)."""
+    freight = 90 * A([[2.5, 1.7, 1.8, 0], [2.5, 1.8, 1.4, 0]]) / 1000
+    supply, demand = A([350, 600.0]) / 950, A([325, 300, 275, 50.0]) / 950
+    g = A([0.225, 0.153, 0.126, 0.0])
+
+    assert (freight - g >= -1e-12).all()
+    assert 950 * float(demand @ g) == pytest.approx(153.675, rel=1e-12)
+    assert 950 * solve_exact(supply, demand, freight).cost == pytest.approx(950 * float(demand @ g), rel=1e-12)
+
+
+@pytest.mark.parametrize(("epsilon", "distance"), [(0.1, 0.1078), (1, 0.02765), (10, 2.93e-3), (1000, 2.94e-5)])
+def test_the_plan_nears_the_product_as_blur_grows(epsilon: float, distance: float) -> None:
+    """max |P − a ⊗ b| of the cannery problem (Cuturi 2013; POT)."""
+    plan = solve_entropic(PT_SUPPLY, PT_DEMAND, PT_COSTS / 1000, epsilon=epsilon, tolerance=1e-11)
+
+    found = np.abs(plan.coupling - np.outer(PT_SUPPLY, PT_DEMAND)).max()
+
+    assert found == pytest.approx(distance, rel=2e-3)
+
+
+def test_entropy_bounds_what_blur_adds() -> None:
+    """OT ≤ ⟨P, C⟩ and OT ≤ OT_ε ≤ OT + ε min(H(a), H(b)), with H(a) = 1.0775563271 and H(b) = 1.3807247178."""
+    entropy = -float((PT_SUPPLY * np.log(PT_SUPPLY)).sum()), -float((PT_DEMAND * np.log(PT_DEMAND)).sum())
+    exact = solve_exact(PT_SUPPLY, PT_DEMAND, PT_COSTS / 1000).cost
+
+    assert entropy == pytest.approx((1.0775563271, 1.3807247178), abs=1e-9)
+    for epsilon in (0.01, 0.1, 1.0):
+        plan = solve_entropic(PT_SUPPLY, PT_DEMAND, PT_COSTS / 1000, epsilon=epsilon, tolerance=1e-10)
+        value = float(PT_SUPPLY @ plan.potentials[0] + PT_DEMAND @ plan.potentials[1])
+        assert exact <= plan.cost + 1e-9
+        assert exact <= value <= exact + epsilon * min(entropy) + 1e-9
+
+
+def test_the_barycentre_of_three_has_the_least_objective() -> None:
+    """Σ w W2² = 0.3564722989 over the covariances (POT); a shift of the covariance in any direction is worse."""
+    covariances, weights = [*GENERAL, A([[4, 1], [1, 0.5]])], A([0.5, 0.3, 0.2])
+    found = bures_barycentre([np.zeros(2)] * 3, covariances, weights).covariance
+
+    def objective(covariance: np.ndarray) -> float:
+        return float(weights @ [bures_squared(covariance, one) for one in covariances])
+
+    assert objective(found) == pytest.approx(0.3564722989, abs=1e-9)
+    for step in (A([[1, 0], [0, 0]]), A([[0, 1], [1, 0]]), A([[0, 0], [0, 1]])):
+        assert objective(found + 0.01 * step) > objective(found)
+        assert objective(found - 0.01 * step) > objective(found)
+
+
+def test_slices_never_see_more_than_their_share() -> None:
+    """SW2² ≤ W2² / d: 2.7475870474 ≤ 2.9646559275 for the general pair (Bonneel et al. 2015)."""
+    whole = gaussian_w2_squared(A([0.0, 0]), GENERAL[0], A([1.0, 2]), GENERAL[1]) / 2
+
+    assert whole == pytest.approx(2.9646559275, abs=1e-9)
+    assert whole > 2.7475870474
+
+
+def test_below_the_threshold_the_plan_keeps_to_its_colours() -> None:
+    """diag(√.45, √.05) while nothing crosses (own derivation, POT agrees)."""
+    plan = solve_unbalanced(
+        A([0.5, 0.5]), A([0.9, 0.1]), A([[0, 1.0], [1, 0]]), penalty=0.5, epsilon=1e-3, tolerance=1e-8
+    )
+
+    np.testing.assert_allclose(np.diag(plan.coupling), [0.6708203932, 0.2236067977], atol=1e-3)
