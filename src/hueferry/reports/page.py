@@ -17,6 +17,7 @@ from hueferry.reports.pictures import PicturePair, picture_pair
 from hueferry.reports.words import (
     CAUTIONS,
     METHODS,
+    REMAINS,
     SOURCES,
     evidence_facts,
     plain_verdict,
@@ -71,6 +72,7 @@ def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
             _picture(entry, pair, drawn=len(entries) <= _DRAWN_UP_TO)
             for entry, pair in zip(entries, pairs, strict=True)
         ],
+        remains=REMAINS[record["settings"]["aim"]],
         methods=METHODS[record["settings"]["aim"]],
         sources=SOURCES[record["settings"]["aim"]],
         settings=setting_facts(record["settings"]),

@@ -43,6 +43,13 @@ METHODS: Mapping[str, str] = MappingProxyType(
     }
 )
 
+REMAINS: Mapping[str, str] = MappingProxyType(
+    {
+        "agree": "Under the aim “agree” a cost may rightly remain: it is the difference of content, left alone.",
+        "adopt": "Under the aim “adopt” a cost remains where the gain cap forbids to stretch colours further.",
+    }
+)
+
 _COMMON_SOURCES = (
     "Ottosson, B. (2020). A perceptual color space for image processing.",
     "CIE 15:2018. Colorimetry. Sharma, G., Wu, W., Dalal, E. N. (2005). The CIEDE2000 color-difference formula. "

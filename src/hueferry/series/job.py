@@ -71,7 +71,7 @@ def entry_of(errand: Errand, fitted: Fit, picture: Picture) -> Entry:
         source=FileFact.of(errand.source),
         output=FileFact.of(errand.output),
         numbers=fitted.as_dict(),
-        sentences=(*picture.notes, *fitted.sentences),
+        sentences=(*(f"{note[0].upper()}{note[1:]}." for note in picture.notes), *fitted.sentences),
     )
 
 
