@@ -158,3 +158,18 @@ def test_numbers_of_others_that_are_not_finite_are_refused(tmp_path: Path, numbe
     )
     with pytest.raises(MapFileError, match="not finite"):
         read_clf(path)
+
+
+def test_a_file_that_is_written_anew_is_read_anew(tmp_path: Path) -> None:
+    """OpenColorIO remembers files by their path; a map that changed under its name must not come back as it was."""
+    path = tmp_path / "gain.clf"
+    found = []
+    for gain in ("0.5", "0.25"):
+        matrix = f"{gain} 0 0  0 {gain} 0  0 0 {gain}"
+        path.write_text(
+            '<?xml version="1.0" encoding="UTF-8"?><ProcessList id="gain" compCLFversion="3.0">'
+            f'<Matrix inBitDepth="32f" outBitDepth="32f"><Array dim="3 3">{matrix}</Array></Matrix></ProcessList>'
+        )
+        found.append(float(look_up(read_clf(path), np.full((1, 3), 0.8))[0, 0]))
+
+    np.testing.assert_allclose(found, [0.4, 0.2], atol=1e-6)

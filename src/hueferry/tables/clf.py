@@ -184,6 +184,7 @@ def _sampled(path: Path) -> Table:
 
     from hueferry.tables.build import sample_table
 
+    PyOpenColorIO.ClearAllCaches()  # it remembers files by their path, and this one may have been written anew
     transform = PyOpenColorIO.FileTransform(src=str(path.resolve()), interpolation=PyOpenColorIO.INTERP_TETRAHEDRAL)
     try:
         processor = PyOpenColorIO.Config.CreateRaw().getProcessor(transform).getDefaultCPUProcessor()
