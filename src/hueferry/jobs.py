@@ -16,25 +16,30 @@ from hueferry.errors import HueferryError, InputError
 from hueferry.fitting.fit import Fit, fit_picture
 from hueferry.fitting.settings import Settings
 from hueferry.record.record import Failure, Record
-from hueferry.series.match import MatchOrder, OnDone
+from hueferry.series.match import MatchOrder, OnDone, OnPlan
 from hueferry.tables.certificate import Certificate
 
 SAMPLE_FOLDER = Path("sample_images")
 
 
-def match_files(order: MatchOrder, *, on_done: OnDone | None = None) -> Record:
+def match_files(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done: OnDone | None = None) -> Record:
     """Bring files and folders together; pictures, record and contact sheet are left in the folder of the order.
+
+    Where an earlier run has finished just this, nothing is done.
 
     Raises:
         InputError: it cannot be done as asked; nothing was written.
     """
+    from hueferry.record.record import NAME
     from hueferry.reports.contact_sheet import write_contact_sheet
-    from hueferry.series.match import match_pictures
+    from hueferry.reports.page import write_report
+    from hueferry.series.match import match_pictures, seal_run
 
-    run = match_pictures(order, on_done=on_done)
-    if run.thumbnails:
-        write_contact_sheet(run.thumbnails, order.out)
-        report(order.out)
+    run = match_pictures(order, on_plan=on_plan, on_done=on_done)
+    if run.done:
+        glimpses = {one.entry.output.path: one.glimpse for one in run.done if one.entry.output is not None}
+        sheet = write_contact_sheet(list(glimpses.values()), order.out)
+        seal_run(order, run.schedule, [order.out / NAME, sheet, write_report(order.out, glimpses=glimpses)])
     return run.record
 
 

@@ -41,6 +41,7 @@ def test_match_writes_pictures_record_sheet_and_page(
         "record.json",
         "contact_sheet.jpg",
         "report.html",
+        ".hueferry",
     }
     assert "warm.jpg" in captured.out
     assert max(len(line) for line in captured.out.splitlines()) <= 80
@@ -75,8 +76,11 @@ def test_originals_and_earlier_results_are_not_overwritten(shoot: Path, tmp_path
 
     assert run(["match", str(shoot), "--to", hero, "--out", str(shoot), "--overwrite"]) == 2
     assert run(["match", str(shoot), "--to", hero, "--out", out]) == 0
+    (tmp_path / "out" / "warm.jpg").write_bytes(b"somebody's work")
     assert run(["match", str(shoot), "--to", hero, "--out", out]) == 2
+    assert (tmp_path / "out" / "warm.jpg").read_bytes() == b"somebody's work"
     assert run(["match", str(shoot), "--to", hero, "--out", out, "--overwrite"]) == 0
+    assert Image.open(tmp_path / "out" / "warm.jpg").size == Image.open(shoot / "warm.jpg").size
     assert (shoot / "warm.jpg").read_bytes() == before
 
 

@@ -8,7 +8,8 @@ from typing import Annotated
 import typer
 
 from hueferry.cli import options
-from hueferry.cli.match import say, show_costs
+from hueferry.cli.match import show_costs
+from hueferry.cli.progress import Progress
 from hueferry.cli.terminal import remark, show_json
 from hueferry.fitting.settings import Settings
 
@@ -27,7 +28,8 @@ def demo(
 
     samples = demo_samples(out)
     order = MatchOrder(inputs=samples.frames, to=[samples.hero], out=out, settings=Settings(), overwrite=True)
-    record = match_files(order, on_done=None if quiet else say)
+    progress = Progress()
+    record = match_files(order, on_plan=None if quiet else progress.begin, on_done=None if quiet else progress.step)
     if json:
         show_json(record.as_dict())
         return

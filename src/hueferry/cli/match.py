@@ -12,8 +12,8 @@ from hueferry.cli.terminal import remark, show_json, show_table
 from hueferry.fitting.settings import Aim, Settings
 
 if TYPE_CHECKING:
-    from hueferry.record.record import Entry, Failure, Record
-    from hueferry.series.job import Done
+    from hueferry.record.record import Entry, Record
+    from hueferry.series.match import MatchOrder
 
 SOME_FAILED = 1
 NOTHING_WRITTEN = 2
@@ -32,6 +32,8 @@ def match(
     hold: options.Hold = None,
     max_gain: options.MaxGain = None,
     seed: options.Seed = 0,
+    workers: options.Workers = None,
+    dry_run: options.DryRun = False,
     json: options.Json = False,
     quiet: options.Quiet = False,
     overwrite: options.Overwrite = False,
@@ -39,6 +41,7 @@ def match(
     """Bring pictures together in colour: towards references, or towards their own common palette."""
     chosen = options.parse_method(method)
 
+    from hueferry.cli.progress import Progress
     from hueferry.jobs import match_files
     from hueferry.series.match import MatchOrder
 
@@ -51,24 +54,26 @@ def match(
         max_gain=max_gain,
         seed=seed,
     )
-    order = MatchOrder(inputs=pictures, to=to or (), out=out, settings=settings, hold=hold, overwrite=overwrite)
-    record = match_files(order, on_done=None if quiet else say)
+    order = MatchOrder(
+        inputs=pictures,
+        to=to or (),
+        out=out,
+        settings=settings,
+        hold=hold,
+        overwrite=overwrite,
+        workers=workers,
+    )
+    if dry_run:
+        show_plan(order, as_json=json)
+        return
+    progress = Progress()
+    record = match_files(order, on_plan=None if quiet else progress.begin, on_done=None if quiet else progress.step)
     if json:
         show_json(record.as_dict())
     else:
         show_costs(record)
     if record.failures:
         raise typer.Exit(SOME_FAILED if record.entries else NOTHING_WRITTEN)
-
-
-def say(number: int, count: int, outcome: Done | Failure) -> None:
-    """Print one line of progress."""
-    from hueferry.record.record import Failure
-
-    if isinstance(outcome, Failure):
-        remark(f"{number}/{count}  failed: {outcome.reason}")
-        return
-    remark(f"{number}/{count}  {outcome.entry.source.path}: {' '.join(outcome.entry.sentences)}")
 
 
 def show_costs(record: Record) -> None:
@@ -80,6 +85,26 @@ def show_costs(record: Record) -> None:
     if record.failures:
         count = len(record.failures)
         remark(f"{count} of {count + len(record.entries)} pictures failed; the rest is done")
+
+
+def show_plan(order: MatchOrder, *, as_json: bool) -> None:
+    """Print what a run would do: every picture, where it would go, and what stands in the way.
+
+    Raises:
+        typer.Exit: the run could not be done as asked.
+    """
+    from hueferry.series.match import plan_match
+
+    plan = plan_match(order)
+    if as_json:
+        show_json(plan.as_dict())
+    else:
+        rows = [(step.fact.path, step.output, step.state) for step in plan.steps]
+        show_table(f"What would be done in {order.out}", ("picture", "goes to", "state"), rows, left=(0, 1, 2))
+        for sentence in plan.sentences:
+            remark(sentence)
+    if plan.taken and not order.overwrite:
+        raise typer.Exit(NOTHING_WRITTEN)
 
 
 def _row(entry: Entry) -> Sequence[str]:

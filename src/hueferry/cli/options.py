@@ -44,7 +44,12 @@ MaxGain = Annotated[
 Seed = Annotated[int, typer.Option("--seed", help="Same seed, same bytes.")]
 Json = Annotated[bool, typer.Option("--json", help="Print the result as JSON.")]
 Quiet = Annotated[bool, typer.Option("--quiet", help="Print nothing but the result.")]
-Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace results of an earlier run.")]
+Workers = Annotated[
+    int | None,
+    typer.Option("--workers", help="Pictures done at a time; chosen by cores and free memory if not given.", min=1),
+]
+DryRun = Annotated[bool, typer.Option("--dry-run", help="Print what would be done, and write nothing.")]
+Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace files of the same names.")]
 
 
 def parse_method(name: str) -> Method | None:

@@ -160,6 +160,13 @@ def jpeg_bytes(pixels: NDArray[np.uint8], *, quality: int = 96, sampling: str = 
     return bytes(imagecodecs.jpeg8_encode(np.ascontiguousarray(pixels[:, :, 0]), level=quality))
 
 
+def jpeg_pixels(data: bytes) -> Pixels:
+    """Decode what `jpeg_bytes` made: (h, w, 1 or 3) uint8."""
+    import imagecodecs
+
+    return np.atleast_3d(imagecodecs.jpeg8_decode(data))
+
+
 def write_jpeg(pixels: Pixels, metadata: Metadata, profile: bytes | None, *, quality: int | None) -> bytes:
     """Encode a JPEG with its metadata spliced in; never coarser than the JPEG that it came from.
 

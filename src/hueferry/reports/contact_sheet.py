@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.picture import Picture
+from hueferry.series.glimpse import Glimpse
 
 NAME = "contact_sheet.jpg"
 
@@ -16,6 +17,9 @@ SURROUND = 119
 """Code of the sheet's gray, L* = 50 (IEC 61966-2-1): colour is judged on a neutral surround of middle lightness."""
 
 MARGIN = 12
+
+_AREA = 16e6
+"""Pixels that the pictures before may take together."""
 
 Thumb = NDArray[np.uint8]
 
@@ -47,10 +51,25 @@ def _place(sheet: Thumb, thumb: Thumb, top: int, left: int) -> None:
     sheet[top : top + thumb.shape[0], left : left + thumb.shape[1]] = thumb
 
 
-def write_contact_sheet(thumbnails: Sequence[tuple[Picture, Picture]], folder: Path) -> Path:
-    """Write the sheet of (before, after) thumbnails, 8-bit sRGB, into the folder of a run and return its path."""
+def write_contact_sheet(glimpses: Sequence[Glimpse], folder: Path) -> Path:
+    """Write the sheet of a run's pictures, 8-bit sRGB, into its folder and return its path."""
     from hueferry.colour.encoding import SRGB
     from hueferry.files.write import write
 
-    sheet = contact_sheet([(before.pixels, after.pixels) for before, after in thumbnails])
-    return write(Picture(sheet, SRGB), folder / NAME, overwrite=True)
+    longest, columns = _layout(len(glimpses))
+    pairs = [(_small(one.before, longest), _small(one.after, longest)) for one in glimpses]
+    return write(Picture(contact_sheet(pairs, columns=columns), SRGB), folder / NAME, overwrite=True)
+
+
+def _layout(count: int) -> tuple[int, int]:
+    """Return the longest side of a picture in pixels, and how many stand next to each other: the sheet stays bounded."""
+    columns = max(4, round((2 * count) ** 0.5))
+    return int(np.clip((_AREA / count) ** 0.5, 64, 480)), columns
+
+
+def _small(jpeg: bytes, longest: int) -> Thumb:
+    from hueferry.colour.encoding import SRGB
+    from hueferry.files.jpeg import jpeg_pixels
+    from hueferry.files.thumbnail import thumbnail
+
+    return np.asarray(thumbnail(Picture(jpeg_pixels(jpeg), SRGB), longest).pixels, np.uint8)

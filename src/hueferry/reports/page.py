@@ -13,7 +13,7 @@ import numpy as np
 
 from hueferry.record.record import read_record
 from hueferry.reports import charts
-from hueferry.reports.pictures import PicturePair, picture_pair
+from hueferry.reports.pictures import glimpse_again, template_values
 from hueferry.reports.words import (
     CAUTIONS,
     METHODS,
@@ -25,6 +25,7 @@ from hueferry.reports.words import (
     setting_facts,
     summary,
 )
+from hueferry.series.glimpse import Glimpse
 
 NAME = "report.html"
 
@@ -34,8 +35,12 @@ _DRAWN_UP_TO = 100
 Json = Mapping[str, Any]
 
 
-def write_report(folder: Path) -> Path:
+def write_report(folder: Path, *, glimpses: Mapping[str, Glimpse] | None = None) -> Path:
     """Write the page of the run in `folder` and return its path.
+
+    Args:
+        folder: of the run.
+        glimpses: of results by their names in the record; what is not there is looked at again.
 
     Raises:
         InputError: there is no record in the folder.
@@ -43,16 +48,22 @@ def write_report(folder: Path) -> Path:
     from hueferry.files.atomic import write_bytes
 
     record = read_record(folder)
-    pairs = [picture_pair(folder, entry, count=len(record["entries"])) for entry in record["entries"]]
-    return write_bytes(folder / NAME, render_page(record, pairs).encode("utf-8"), overwrite=True)
+    shown = [_glimpse_of(entry, folder, glimpses or {}, len(record["entries"])) for entry in record["entries"]]
+    return write_bytes(folder / NAME, render_page(record, shown).encode("utf-8"), overwrite=True)
 
 
-def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
+def _glimpse_of(entry: Json, folder: Path, glimpses: Mapping[str, Glimpse], count: int) -> Glimpse | None:
+    output = entry["output"]
+    known = None if output is None else glimpses.get(output["path"])
+    return known if known is not None else glimpse_again(folder, entry, count=count)
+
+
+def render_page(record: Json, glimpses: Sequence[Glimpse | None]) -> str:
     """Return the page as HTML; every value of the record is escaped.
 
     Args:
         record: the JSON values of a record.
-        pairs: the pictures of each entry, or None where they are no longer at hand.
+        glimpses: the pictures of each entry, or None where they are no longer at hand.
     """
     from jinja2 import Environment, select_autoescape
 
@@ -69,8 +80,8 @@ def render_page(record: Json, pairs: Sequence[PicturePair | None]) -> str:
         outliers=_outliers(record.get("overview", {})),
         failures=record["failures"],
         pictures=[
-            _picture(entry, pair, drawn=len(entries) <= _DRAWN_UP_TO)
-            for entry, pair in zip(entries, pairs, strict=True)
+            _picture(entry, glimpse, drawn=len(entries) <= _DRAWN_UP_TO)
+            for entry, glimpse in zip(entries, glimpses, strict=True)
         ],
         remains=REMAINS[record["settings"]["aim"]],
         methods=METHODS[record["settings"]["aim"]],
@@ -132,7 +143,7 @@ def name_of(entry: Json) -> str:
     return str(entry["source"]["path"]).rsplit("/", 1)[-1]
 
 
-def _picture(entry: Json, pair: PicturePair | None, *, drawn: bool) -> dict[str, Any]:
+def _picture(entry: Json, glimpse: Glimpse | None, *, drawn: bool) -> dict[str, Any]:
     numbers = entry["numbers"]
     certificate = numbers["certificate"]
     picture: dict[str, Any] = {
@@ -144,7 +155,7 @@ def _picture(entry: Json, pair: PicturePair | None, *, drawn: bool) -> dict[str,
         "certificate": said(certificate),
         "evidence": evidence_facts(numbers["evidence"]),
     }
-    return picture | ({} if pair is None else pair.as_template_values())
+    return picture | ({} if glimpse is None else template_values(glimpse))
 
 
 def _charts(view: Json) -> list[dict[str, Any]]:

@@ -1,4 +1,4 @@
-"""One picture of a run: read, fit, apply, write, and what to put on record."""
+"""One picture of a run: read, fit, apply, write under a passing name, and what to put on record."""
 
 from __future__ import annotations
 
@@ -8,14 +8,15 @@ from pathlib import Path
 import attrs
 
 from hueferry.arrays import Mask
-from hueferry.errors import HueferryError
+from hueferry.errors import HueferryError, OutputError
 from hueferry.fitting.fit import Fit, fit_picture
 from hueferry.fitting.reference import Reference
 from hueferry.fitting.settings import Settings
-from hueferry.palettes.palette import Palette
 from hueferry.palettes.reduce import thin
 from hueferry.picture import Picture
-from hueferry.record.record import Entry, Failure, FileFact
+from hueferry.record.record import Entry, FileFact
+from hueferry.series.glimpse import take_glimpse
+from hueferry.series.keepsake import Done, Kept, pack
 from hueferry.series.plan import Errand
 
 _SMALL = 128
@@ -23,61 +24,85 @@ _SMALL = 128
 
 
 @attrs.frozen(eq=False)
-class Done:
-    """A picture that was done: its entry in the record, thumbnails for the contact sheet, palettes for the overview."""
+class Context:
+    """What all pictures of a run share.
 
-    entry: Entry
-    before: Picture
-    after: Picture
-    palette: Palette
-    palette_after: Palette
+    Attributes:
+        references: at least one.
+        settings: of every fit.
+        hold: (height, width), true where colours must stay, or None.
+        count: pictures of the run.
+    """
+
+    references: Sequence[Reference]
+    settings: Settings
+    hold: Mask | None = None
+    count: int = 1
 
 
-def run_errand(
-    errand: Errand,
-    references: Sequence[Reference],
-    settings: Settings,
-    *,
-    hold: Mask | None = None,
-    overwrite: bool = False,
-    longest: int = 480,
-) -> Done | Failure:
-    """Do one picture from file to file; a picture that cannot be done is a `Failure`, not an exception."""
+@attrs.frozen
+class Job:
+    """One picture to do.
+
+    Attributes:
+        errand: what to read, and the name that the result will have.
+        shown_as: that name below the folder of the run.
+        stage: the name under which it is written and verified first.
+    """
+
+    errand: Errand
+    shown_as: str
+    stage: Path
+
+
+@attrs.frozen
+class Failed:
+    """A picture that could not be done.
+
+    Attributes:
+        reason: a sentence that names the file.
+        lasting: it would fail again as long as the picture and the settings stay as they are.
+    """
+
+    reason: str
+    lasting: bool
+
+
+def run_job(context: Context, job: Job) -> Kept | Failed:
+    """Do one picture from file to file; a picture that cannot be done is `Failed`, not an exception."""
+    try:
+        return pack(_do(context, job))
+    except OutputError as error:
+        shown = OutputError(job.errand.output, error.reason) if error.path == job.stage else error
+        return Failed(str(shown), lasting=False)
+    except HueferryError as error:
+        return Failed(str(error), lasting=True)
+    except MemoryError:
+        return Failed(f"{job.errand.source}: memory ran out; use fewer --workers, or free memory", lasting=False)
+
+
+def _do(context: Context, job: Job) -> Done:
     from hueferry.files.atomic import write_bytes
     from hueferry.files.read import read
-    from hueferry.files.thumbnail import thumbnail
     from hueferry.files.write import write
 
-    try:
-        picture = read(errand.source)
-        fitted = fit_picture(picture, references, settings, hold=hold)
-        errand.output.parent.mkdir(parents=True, exist_ok=True)
-        if fitted.leaves_alone:  # no second generation of loss for nothing
-            result = picture
-            write_bytes(errand.output, errand.source.read_bytes(), overwrite=overwrite)
-        else:
-            result = fitted.apply(picture)
-            write(result, errand.output, overwrite=overwrite)
-        entry = entry_of(errand, fitted, picture)
-        small = thumbnail(picture, longest), thumbnail(result, longest)
-        return Done(entry, *small, thin(fitted.palette, _SMALL), thin(fitted.palette_after, _SMALL))
-    except HueferryError as error:
-        return Failure(errand.source.as_posix(), str(error))
+    picture = read(job.errand.source)
+    fitted = fit_picture(picture, context.references, context.settings, hold=context.hold)
+    if fitted.leaves_alone:  # no second generation of loss for nothing
+        result = picture
+        write_bytes(job.stage, job.errand.source.read_bytes())
+    else:
+        result = fitted.apply(picture)
+        write(result, job.stage)
+    glimpse = take_glimpse(picture, result, count=context.count)
+    palettes = thin(fitted.palette, _SMALL), thin(fitted.palette_after, _SMALL)
+    return Done(_entry_of(job, fitted, picture), glimpse, *palettes)
 
 
-def entry_of(errand: Errand, fitted: Fit, picture: Picture) -> Entry:
-    """Return what the record says of one picture."""
+def _entry_of(job: Job, fitted: Fit, picture: Picture) -> Entry:
     return Entry(
-        source=FileFact.of(errand.source),
-        output=FileFact.of(errand.output),
+        source=FileFact.of(job.errand.source),
+        output=FileFact.of(job.stage, shown_as=job.shown_as),
         numbers=fitted.as_dict(),
         sentences=(*(f"{note[0].upper()}{note[1:]}." for note in picture.notes), *fitted.sentences),
     )
-
-
-def relative_to_folder(entry: Entry, out: Path) -> Entry:
-    """Return the entry with its output named relative to the folder of the run."""
-    if entry.output is None:
-        return entry
-    below = Path(entry.output.path).relative_to(out).as_posix()
-    return attrs.evolve(entry, output=attrs.evolve(entry.output, path=below))

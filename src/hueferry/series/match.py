@@ -1,34 +1,49 @@
-"""The whole job on many pictures: plan, references, every picture, contact sheet, record."""
+"""The whole job on many pictures: plan, journal, references, every picture, record."""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
+from functools import partial
 from pathlib import Path
 
 import attrs
-import numpy as np
 
-from hueferry.arrays import Mask
-from hueferry.errors import HueferryError, InputError, OutputError
-from hueferry.fitting.reference import Reference, joint_palette
-from hueferry.fitting.settings import Aim, Settings
-from hueferry.palettes.palette import Palette
-from hueferry.picture import Picture
-from hueferry.record.record import NAME, Failure, FileFact, Record, to_json
-from hueferry.series.job import Done, relative_to_folder, run_errand
+from hueferry.errors import OutputError
+from hueferry.fitting.settings import Settings
+from hueferry.record.record import NAME, Failure, FileFact, Record, read_record, to_json
+from hueferry.series.job import Context, Failed, Job, run_job
+from hueferry.series.journal import Journal, Row
+from hueferry.series.keepsake import Done, Kept, entry_from, unpack
+from hueferry.series.memory import choose_workers, memory_of
 from hueferry.series.overview import overview
-from hueferry.series.plan import Errand, plan_errands
+from hueferry.series.plan import plan_errands
+from hueferry.series.publish import publish
+from hueferry.series.references import load_mask, load_references
+from hueferry.series.schedule import Schedule, Step, identity, is_sealed, make_schedule, seal_of
+from hueferry.series.workers import Died, run_tasks
+
+OnPlan = Callable[[Schedule], None]
+"""Called once, before anything is done."""
 
 OnDone = Callable[[int, int, Done | Failure], None]
-"""Called after each picture with its number (from 1), the count of all, and what became of it."""
+"""Called after each picture with its number (from 1), the count of all to do, and what became of it."""
 
 
 @attrs.frozen(eq=False)
 class Run:
-    """What came of an order: the record, and (before, after) thumbnails of every picture done, in order."""
+    """What came of an order.
+
+    Attributes:
+        record: of all pictures, done now or before.
+        done: what pages show, of every picture done; none if nothing had to be done.
+        schedule: what there was to do.
+        unchanged: an earlier run had finished just this, and nothing was written.
+    """
 
     record: Record
-    thumbnails: Sequence[tuple[Picture, Picture]]
+    done: Sequence[Done]
+    schedule: Schedule
+    unchanged: bool = False
 
 
 @attrs.frozen(eq=False, kw_only=True)
@@ -41,7 +56,8 @@ class MatchOrder:
         out: folder of the results.
         settings: settings of every fit.
         hold: picture whose white part must keep its colours, or None.
-        overwrite: replace results of an earlier run.
+        overwrite: replace files that are not results of an earlier run.
+        workers: pictures done at a time, each but the only one by a process of its own; None chooses.
     """
 
     inputs: Sequence[Path]
@@ -50,82 +66,139 @@ class MatchOrder:
     settings: Settings
     hold: Path | None = None
     overwrite: bool = False
+    workers: int | None = 1
 
 
-def match_pictures(order: MatchOrder, *, on_done: OnDone | None = None) -> Run:
+def plan_match(order: MatchOrder) -> Schedule:
+    """Return what a run would do, and write nothing.
+
+    Raises:
+        InputError: it could not be done as asked.
+    """
+    with _journal_of(order) as journal:
+        return _schedule(order, journal)
+
+
+def match_pictures(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done: OnDone | None = None) -> Run:
     """Bring pictures together and leave them and a record in the folder of the order.
+
+    What an earlier run has done there is taken over, if inputs, settings and results are as they were.
 
     Raises:
         InputError: nothing can be done as asked; nothing was written.
     """
+    with _journal_of(order) as journal:
+        schedule = _schedule(order, journal)
+        _check_names(order, schedule, journal)
+        if on_plan is not None:
+            on_plan(schedule)
+        if is_sealed(schedule, order.out, journal.read_seal()):
+            return Run(_recorded(order.out), (), schedule, unchanged=True)
+        references, sentence = load_references(order.to, [step.errand for step in schedule.steps], order.settings)
+        hold = load_mask(order.hold) if order.hold is not None else None
+        context = Context(references, order.settings, hold, len(schedule.steps))
+        work = _Work(schedule, journal, journal.begin(), overwrite=order.overwrite)
+        outcomes = dict(work.kept())
+        for number, (step, outcome) in enumerate(work.do(context), 1):
+            outcomes[step.output] = outcome
+            if on_done is not None:
+                on_done(number, len(schedule.to_do), outcome)
+        return _finish(order, schedule, [outcomes[step.output] for step in schedule.steps], sentence)
+
+
+def seal_run(order: MatchOrder, schedule: Schedule, files: Sequence[Path]) -> None:
+    """Say in the journal that all is done, `files` besides pictures among it: run again, there is nothing to do."""
+    with Journal(order.out) as journal:
+        if journal.exists:
+            journal.seal(seal_of(schedule, files))
+
+
+def _journal_of(order: MatchOrder) -> Journal:
+    if order.out.exists() and not order.out.is_dir():
+        raise OutputError(order.out, "this is a file; --out names a folder")
+    return Journal(order.out)
+
+
+def _schedule(order: MatchOrder, journal: Journal) -> Schedule:
     from hueferry.files.walk import find_pictures
 
     errands = plan_errands(order.inputs, order.out, find=find_pictures)
-    _check_folder(order, errands)
-    references, sentence = load_references(order.to, errands, order.settings)
-    hold = _load_mask(order.hold) if order.hold is not None else None
-    outcomes: list[Done | Failure] = []
-    for number, errand in enumerate(errands, 1):
-        outcome = run_errand(errand, references, order.settings, hold=hold, overwrite=order.overwrite)
-        outcomes.append(outcome)
-        if on_done is not None:
-            on_done(number, len(errands), outcome)
-    return _finish(order, outcomes, sentence)
+    wanted = identity(order.settings, order.to, order.hold)
+    schedule = make_schedule(errands, order.out, journal, wanted=wanted)
+    files = [step.errand.source for step in schedule.to_do]
+    workers = choose_workers(files, asked=order.workers)
+    return attrs.evolve(schedule, workers=workers, memory=workers * memory_of(files))
 
 
-def load_references(to: Sequence[Path], errands: Sequence[Errand], settings: Settings) -> tuple[list[Reference], str]:
-    """Return the references of a run and a sentence that says what they are.
-
-    Raises:
-        InputError: a named reference cannot be read, or no picture can serve as one.
-    """
-    if to:
-        references = [Reference.of_file(path) for path in to]
-        return references, "towards " + ", ".join(reference.name for reference in references)
-    found = [reference for errand in errands if (reference := _readable(errand.source)) is not None]
-    if not found:
-        raise InputError("none of the pictures could be read; there is nothing to bring together")
-    common = joint_palette(found)
-    if settings.aim is Aim.ADOPT:
-        return [Reference("common palette", common)], f"towards the common palette of {len(found)} pictures"
-    nearest = found[int(np.argmin([_distance(reference, common) for reference in found]))]
-    return [nearest], f"towards {nearest.name}, the picture nearest to the common palette of {len(found)}"
-
-
-def _readable(path: Path) -> Reference | None:
-    from hueferry.files.read import read
-
-    try:
-        return Reference.of_picture(read(path), path.name)
-    except HueferryError:
-        return None  # its own errand reports the reason
-
-
-def _distance(reference: Reference, common: Palette) -> float:
-    from hueferry.measure.cost import sliced_w2
-
-    return sliced_w2(reference.palette, common)
-
-
-def _check_folder(order: MatchOrder, errands: Sequence[Errand]) -> None:
-    if order.out.exists() and not order.out.is_dir():
-        raise OutputError(order.out, "this is a file; --out names a folder")
+def _check_names(order: MatchOrder, schedule: Schedule, journal: Journal) -> None:
     if order.overwrite:
         return
-    for path in (order.out / NAME, *(errand.output for errand in errands)):
-        if path.exists():
-            raise OutputError(path, "this exists already; choose another folder, or add --overwrite")
+    others = [order.out / NAME] if (order.out / NAME).exists() and not journal.exists else []
+    for path in (*others, *schedule.taken):
+        reason = "this exists already and is not an unchanged result of an earlier run"
+        raise OutputError(path, f"{reason}; choose another folder, or add --overwrite")
 
 
-def _load_mask(path: Path) -> Mask:
-    from hueferry.files.read import read
+@attrs.frozen(eq=False)
+class _Work:
+    """A run at work: what is to do, and where it is written down."""
 
-    picture = read(path)
-    colour = picture.pixels[:, :, : 1 if picture.is_gray else 3]
-    return np.asarray(colour.mean(axis=2) > picture.top_code / 2)
+    schedule: Schedule
+    journal: Journal
+    stage: Path
+    overwrite: bool = attrs.field(kw_only=True)
+
+    def kept(self) -> Iterator[tuple[str, Done | Failure]]:
+        for step in self.schedule.steps:
+            if step.known is not None and step.known.state == "failed":
+                yield step.output, Failure(step.fact.path, step.known.reason)
+            elif step.known is not None:
+                row = self.journal.whole(step.output)
+                yield step.output, unpack(Kept(row.entry, row.arrays))
+
+    def do(self, context: Context) -> Iterator[tuple[Step, Done | Failure]]:
+        steps = self.schedule.to_do
+        stages = (self.stage / f"{number}{step.errand.output.suffix}" for number, step in enumerate(steps))
+        jobs = [Job(step.errand, step.output, stage) for step, stage in zip(steps, stages, strict=True)]
+        for number, answer in run_tasks(partial(run_job, context), jobs, workers=self.schedule.workers):
+            yield steps[number], self._settle(steps[number], jobs[number], answer)
+
+    def _settle(self, step: Step, job: Job, answer: Kept | Failed | Died) -> Done | Failure:
+        path = step.fact.path
+        if isinstance(answer, Died):
+            return Failure(path, f"{path} ({step.fact.size:,} bytes): {answer}")
+        if isinstance(answer, Failed):
+            if answer.lasting and step.fact.sha256:
+                self.journal.store(self._row(step, state="failed", reason=answer.reason))
+            return Failure(path, answer.reason)
+        done = unpack(answer)
+        written = done.entry.output.sha256 if done.entry.output is not None else ""
+        row = self._row(step, state="done", output_sha256=written, entry=answer.entry, arrays=answer.arrays)
+        read = done.entry.source
+        # A picture that was replaced while the run was on its way to it: the journal speaks of what was read.
+        self.journal.store(row if read.sha256 == row.sha256 else attrs.evolve(row, sha256=read.sha256, changed=0))
+        try:
+            publish(job.stage, step.errand.output, replace=self.overwrite or bool(step.present))
+        except OutputError as error:
+            self.journal.forget(step.output)
+            return Failure(path, str(error))
+        return done
+
+    def _row(self, step: Step, *, state: str, **facts: str | bytes) -> Row:
+        return Row(
+            output=step.output,
+            source=step.fact.path,
+            size=step.fact.size,
+            changed=step.changed,
+            sha256=step.fact.sha256,
+            wanted=self.schedule.wanted,
+            state=state,
+            former_sha256=step.present,
+            **facts,  # type: ignore[arg-type]  # strings but for the arrays
+        )
 
 
-def _finish(order: MatchOrder, outcomes: Sequence[Done | Failure], sentence: str) -> Run:
+def _finish(order: MatchOrder, schedule: Schedule, outcomes: Sequence[Done | Failure], sentence: str) -> Run:
     from hueferry.files.atomic import write_bytes
 
     done = [outcome for outcome in outcomes if isinstance(outcome, Done)]
@@ -133,11 +206,20 @@ def _finish(order: MatchOrder, outcomes: Sequence[Done | Failure], sentence: str
         command="match",
         settings=order.settings.as_dict(),
         references=[FileFact.of(path) for path in order.to],
-        entries=[relative_to_folder(outcome.entry, order.out) for outcome in done],
+        entries=[outcome.entry for outcome in done],
         failures=[outcome for outcome in outcomes if isinstance(outcome, Failure)],
         sentences=(sentence,),
         overview=overview(done),
     )
     if done:
         write_bytes(order.out / NAME, to_json(record).encode(), overwrite=True)
-    return Run(record, [(outcome.before, outcome.after) for outcome in done])
+    return Run(record, done, schedule)
+
+
+def _recorded(out: Path) -> Record:
+    data = read_record(out)
+    data.pop("schema")
+    data["references"] = [FileFact(**fact) for fact in data["references"]]
+    data["entries"] = [entry_from(entry) for entry in data["entries"]]
+    data["failures"] = [Failure(**failure) for failure in data["failures"]]
+    return Record(**data)

@@ -31,9 +31,13 @@ def choose_workers(files: Sequence[Path], *, asked: int | None = None) -> int:
         return max(1, min(asked, len(files)))
     if len(files) <= FEW:
         return 1
-    largest = max((path.stat().st_size for path in files if path.is_file()), default=0)
-    fitting = int(_SHARE * free_memory() / (PER_WORKER + PER_FILE_BYTE * largest))
+    fitting = int(_SHARE * free_memory() / memory_of(files))
     return max(1, min(cores(), len(files), fitting))
+
+
+def memory_of(files: Sequence[Path]) -> int:
+    """Return the bytes that a worker takes for the largest of the pictures, at most."""
+    return PER_WORKER + PER_FILE_BYTE * max((path.stat().st_size for path in files if path.is_file()), default=0)
 
 
 def cores() -> int:

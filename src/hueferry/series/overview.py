@@ -11,7 +11,7 @@ import numpy as np
 from hueferry.colour.spaces import oklab_to_lab
 from hueferry.measure.matrix import compare
 from hueferry.palettes.palette import Palette
-from hueferry.series.job import Done
+from hueferry.series.keepsake import Done
 
 LEAST = 3
 """Pictures below which there is no series to look over."""

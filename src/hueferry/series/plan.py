@@ -31,6 +31,7 @@ def plan_errands(
 
     A file goes to `out` under its own name, and a file found in a folder keeps its place below that folder. Names that
     a file system could take for the same one (by case or by Unicode form) get a number, in the order of the inputs.
+    Where `out` lies in one of the folders, what is in it are results, not inputs.
 
     Args:
         inputs: files and folders as the caller named them.
@@ -43,7 +44,10 @@ def plan_errands(
     """
     sources: dict[Path, Path] = {}
     for path in inputs:
+        results = _results_below(path, out)
         for picture in find([path]):
+            if results is not None and picture.is_relative_to(results):
+                continue
             below = picture.relative_to(path) if path.is_dir() else Path(picture.name)
             sources.setdefault(picture, below)
     if not sources:
@@ -51,6 +55,12 @@ def plan_errands(
     errands = tuple(_without_collisions(sources.items(), out))
     _check_inputs_survive(errands)
     return errands
+
+
+def _results_below(path: Path, out: Path) -> Path | None:
+    """Return the output folder as a path below the input folder, if it lies there and is not that folder itself."""
+    folder, results = path.resolve(), out.resolve()
+    return path / results.relative_to(folder) if folder in results.parents else None
 
 
 def _without_collisions(placed: Iterable[tuple[Path, Path]], out: Path) -> Iterable[Errand]:
