@@ -62,7 +62,7 @@ def write_contact_sheet(glimpses: Sequence[Glimpse], folder: Path) -> Path:
 
 
 def _layout(count: int) -> tuple[int, int]:
-    """Return the longest side of a picture in pixels, and how many stand next to each other: the sheet stays bounded."""
+    """Return the longest side of a picture in pixels, and how many stand in a row, so that the sheet stays bounded."""
     columns = max(4, round((2 * count) ** 0.5))
     return int(np.clip((_AREA / count) ** 0.5, 64, 480)), columns
 

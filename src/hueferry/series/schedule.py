@@ -40,7 +40,7 @@ class Step:
 
     @property
     def state(self) -> str:
-        """ "to do", "done", or "failed" where an earlier run failed and would fail again."""
+        """One of "to do", "done" and, where an earlier run failed and would fail again, "failed"."""
         return "to do" if self.known is None else self.known.state
 
 
