@@ -208,7 +208,7 @@ def _finish(order: MatchOrder, schedule: Schedule, outcomes: Sequence[Done | Fai
         references=[FileFact.of(path) for path in order.to],
         entries=[outcome.entry for outcome in done],
         failures=[outcome for outcome in outcomes if isinstance(outcome, Failure)],
-        sentences=(sentence,),
+        sentences=[sentence],
         overview=overview(done),
     )
     if done:
