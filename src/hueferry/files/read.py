@@ -2,42 +2,19 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
 from pathlib import Path
-from types import MappingProxyType
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from hueferry.arrays import Pixels
-from hueferry.errors import InputError, PictureError
-from hueferry.picture import Encoding, Metadata, Picture
+from hueferry.errors import InputError, PictureError, RefusedError
+from hueferry.files.codec import Decoded
+from hueferry.files.formats import FORMATS, SUFFIXES, codec, refusal, sniff
+from hueferry.files.sniff import HEAD
+from hueferry.picture import Encoding, Picture
 
 if TYPE_CHECKING:
     from hueferry.picture import PictureSource
-
-Decoded = tuple[Pixels, Metadata, bytes | None]
-
-SUFFIXES: Mapping[str, tuple[str, ...]] = MappingProxyType(
-    {
-        "jpeg": (".jpg", ".jpeg", ".jpe"),
-        "png": (".png",),
-        "tiff": (".tif", ".tiff"),
-        "webp": (".webp",),
-    }
-)
-"""Formats that are read and written, with the suffixes they usually have."""
-
-
-def sniff(head: bytes) -> str:
-    """Return the format that the first bytes of a file announce, or an empty string."""
-    if head.startswith(b"\xff\xd8\xff"):
-        return "jpeg"
-    if head.startswith(b"\x89PNG\r\n\x1a\n"):
-        return "png"
-    if head[:4] in (b"II*\0", b"MM\0*", b"II+\0", b"MM\0+"):
-        return "tiff"
-    return "webp" if head[:4] == b"RIFF" and head[8:12] == b"WEBP" else ""
 
 
 def read(path: Path, *, accept_loss: bool = False) -> Picture:
@@ -52,15 +29,25 @@ def read(path: Path, *, accept_loss: bool = False) -> Picture:
         RefusedError: understood, but reading would lose something; the message says the way round.
     """
     data = _bytes_of(path)
-    format_ = sniff(data[:16])
+    format_ = sniff(data[:HEAD])
     if not format_:
-        raise PictureError(path, "this is not a JPEG, PNG, TIFF or WebP file, whatever its name says")
-    pixels, metadata, profile = _decoder(format_)(path, data, accept_loss=accept_loss)
-    encoding, notes = _encoding(path, profile)
+        raise _unknown(path, data[:HEAD])
+    decoded = codec(format_).read(path, data, accept_loss=accept_loss)
+    encoding, notes = _encoding(path, decoded)
     if path.suffix.lower() not in SUFFIXES[format_]:
-        notes += (f"named {path.suffix or 'without a suffix'}, but it is {format_.upper()}",)
-    bits = {np.dtype(np.uint8): 8, np.dtype(np.uint16): 16}.get(pixels.dtype, 32)
-    return Picture(pixels, encoding, metadata, bits=bits, path=path, notes=notes)
+        notes += (f"named {path.suffix or 'without a suffix'}, but it is {FORMATS[format_].title}",)
+    bits = {np.dtype(np.uint8): 8, np.dtype(np.uint16): 16}.get(decoded.pixels.dtype, 32)
+    return Picture(
+        decoded.pixels, encoding, decoded.metadata, bits=decoded.bits or bits, path=path, notes=decoded.notes + notes
+    )
+
+
+def _unknown(path: Path, head: bytes) -> PictureError:
+    refused = refusal(head)
+    if refused:
+        return RefusedError(path, refused)
+    *first, last = [one.title for one in FORMATS.values()]
+    return PictureError(path, f"this is not a {', '.join(first)} or {last} file, whatever its name says")
 
 
 def open_source(path: Path) -> PictureSource:
@@ -82,26 +69,16 @@ def _bytes_of(path: Path) -> bytes:
     return data
 
 
-def _decoder(format_: str) -> Callable[..., Decoded]:
-    from hueferry.files import jpeg, png, tiff, webp
-
-    decoders: Mapping[str, Callable[..., Decoded]] = {
-        "jpeg": jpeg.read_jpeg,
-        "png": png.read_png,
-        "tiff": tiff.read_tiff,
-        "webp": webp.read_webp,
-    }
-    return decoders[format_]
-
-
-def _encoding(path: Path, profile: bytes | None) -> tuple[Encoding, tuple[str, ...]]:
+def _encoding(path: Path, decoded: Decoded) -> tuple[Encoding, tuple[str, ...]]:
     from hueferry.colour.encoding import SRGB
 
-    if profile is None:
+    if decoded.encoding is not None:
+        return decoded.encoding, ()
+    if decoded.profile is None:
         return SRGB, ("no profile: taken as sRGB",)
     from hueferry.colour.profile import read_profile
 
     try:
-        return read_profile(profile), ()
+        return read_profile(decoded.profile), ()
     except InputError as error:
         raise PictureError(path, f"its colour profile cannot be used: {error}") from error

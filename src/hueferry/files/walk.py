@@ -7,8 +7,9 @@ from collections.abc import Iterator, Sequence
 from pathlib import Path
 
 from hueferry.errors import PictureError
+from hueferry.files.formats import SUFFIXES
 
-SUFFIXES = frozenset({".jpg", ".jpeg", ".jpe", ".png", ".tif", ".tiff", ".webp"})
+_SUFFIXES = frozenset(suffix for suffixes in SUFFIXES.values() for suffix in suffixes)
 
 
 def find_pictures(paths: Sequence[Path]) -> list[Path]:
@@ -35,5 +36,5 @@ def _under(folder: Path) -> Iterator[Path]:
     for place, folders, names in os.walk(folder):
         folders[:] = sorted(name for name in folders if not name.startswith("."))
         for name in sorted(names):
-            if not name.startswith(".") and Path(name).suffix.lower() in SUFFIXES:
+            if not name.startswith(".") and Path(name).suffix.lower() in _SUFFIXES:
                 yield Path(place) / name

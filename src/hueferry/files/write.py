@@ -4,17 +4,19 @@ from __future__ import annotations
 
 import io
 import os
+from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
+import attrs
 import numpy as np
 
-from hueferry.errors import HueferryError, OutputError
+from hueferry.errors import HueferryError, InputError, OutputError
 from hueferry.files.atomic import write_bytes
-from hueferry.files.read import SUFFIXES
+from hueferry.files.formats import FORMATS, Format, codec, named
 from hueferry.picture import Picture
 
-_EIGHT_BIT = frozenset({"jpeg", "webp"})
+_SEEN_BY_PILLOW = frozenset({"jpeg", "webp", "avif"})
 
 
 def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int | None = None) -> Path:
@@ -32,19 +34,39 @@ def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int
         OutputError: the suffix names no format, the format cannot hold the picture, the name is taken or is that of
             the original, or nothing can be written there.
     """
-    format_ = next((name for name, suffixes in SUFFIXES.items() if path.suffix.lower() in suffixes), "")
-    if not format_:
-        raise OutputError(path, "the suffix names no format; use .jpg, .png, .tif or .webp")
+    format_ = named(path)
+    if format_ is None:
+        usual = [one.suffixes[0] for one in FORMATS.values() if one.writes]
+        raise OutputError(path, f"the suffix names no format; use {', '.join(usual[:-1])} or {usual[-1]}")
     if picture.path is not None and path.exists() and picture.path.exists() and path.samefile(picture.path):
         raise OutputError(path, "this is the original; choose another folder")
-    if format_ in _EIGHT_BIT and picture.pixels.dtype != np.uint8:
-        raise OutputError(path, f"{format_.upper()} holds 8 bits and the picture is deeper; write TIFF or PNG instead")
-    if format_ == "jpeg" and picture.has_alpha:
-        raise OutputError(path, "JPEG holds no alpha and the picture has some; write TIFF, PNG or WebP instead")
-    if format_ == "png" and picture.pixels.dtype == np.float32:
-        raise OutputError(path, "PNG holds integers and the picture is float; write TIFF instead")
-    data = encode(picture, format_, quality=quality)
-    return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, picture, format_))
+    _check_holds(path, picture, format_)
+    data = encode(picture, format_.name, quality=quality)
+    return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, picture, format_.name))
+
+
+def _check_holds(path: Path, picture: Picture, format_: Format) -> None:
+    is_float = picture.pixels.dtype == np.float32
+    if is_float and 32 not in format_.depths:
+        others = _titles(lambda one: 32 in one.depths)
+        raise OutputError(path, f"{format_.title} holds integers and the picture is float; write {others} instead")
+    if not is_float and _depth(format_, picture.bits) is None:
+        others = _titles(lambda one: _depth(one, picture.bits) is not None)
+        most = max(format_.depths)
+        raise OutputError(path, f"{format_.title} holds {most} bits and the picture is deeper; write {others} instead")
+    if picture.has_alpha and not format_.alpha:
+        others = _titles(lambda one: one.alpha and (32 in one.depths or not is_float))
+        raise OutputError(path, f"{format_.title} holds no alpha and the picture has some; write {others} instead")
+
+
+def _titles(holds: Callable[[Format], bool]) -> str:
+    found = [one.title for one in FORMATS.values() if one.writes and holds(one)]
+    return " or ".join([", ".join(found[:-1]), found[-1]] if len(found) > 1 else found)
+
+
+def _depth(format_: Format, bits: int) -> int | None:
+    """Return the least depth of a format that holds integers of so many bits."""
+    return next((depth for depth in format_.depths if bits <= depth < 32), None)
 
 
 def encode(picture: Picture, format_: str, *, quality: int | None = None) -> bytes:
@@ -54,27 +76,25 @@ def encode(picture: Picture, format_: str, *, quality: int | None = None) -> byt
         from hueferry.colour.make_profile import profile_of
 
         profile = profile_of(picture.encoding)
-    if format_ == "jpeg":
-        from hueferry.files.jpeg import write_jpeg
+    write_format = codec(format_).write
+    if write_format is None:
+        raise InputError(f"{FORMATS[format_].title} is read only; name another format")
+    return write_format(_at_depth(picture, FORMATS[format_]), profile, quality=quality)
 
-        return write_jpeg(picture.pixels, picture.metadata, profile, quality=quality)
-    if format_ == "webp":
-        from hueferry.files.webp import write_webp
 
-        return write_webp(picture.pixels, picture.metadata, profile, quality=quality)
-    if format_ == "png":
-        from hueferry.files.png import write_png
-
-        return write_png(picture.pixels, picture.metadata, profile)
-    from hueferry.files.tiff import write_tiff
-
-    return write_tiff(picture.pixels, picture.metadata, profile)
+def _at_depth(picture: Picture, format_: Format) -> Picture:
+    """Return the picture with codes that fill a depth of the format: 10 bits in a 16-bit file become 16."""
+    depth = None if picture.pixels.dtype == np.float32 else _depth(format_, picture.bits)
+    if depth is None or depth == picture.bits:
+        return picture
+    codes = np.rint(picture.pixels * ((2.0**depth - 1) / picture.top_code))
+    return attrs.evolve(picture, pixels=codes.astype(np.uint8 if depth == 8 else np.uint16), bits=depth)
 
 
 def _verify(made: Path, path: Path, picture: Picture, format_: str) -> None:
     """Look at the written file with a second decoder: format, size, and that every pixel can be decoded."""
     try:
-        shape, kind = _seen_by_pillow(made) if format_ in _EIGHT_BIT else _read_again(made)
+        shape, kind = _seen_by_pillow(made) if format_ in _SEEN_BY_PILLOW else _read_again(made)
     except (HueferryError, OSError, SyntaxError, ValueError) as error:
         raise OutputError(path, f"the file that was written cannot be read again: {error}") from error
     if shape != picture.shape or kind != format_:
