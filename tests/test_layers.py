@@ -41,6 +41,7 @@ HOMES = {
     "ot": {"transport"},
     "tifffile": {"files", "slides"},
     "imagecodecs": {"files", "slides", "colour"},
+    "pyjpegxl": {"files"},
     "PIL": {"files", "colour", "samples"},
     "PyOpenColorIO": {"tables", "applying"},
     "cv2": {"evidence", "palettes", "files"},

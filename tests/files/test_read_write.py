@@ -13,13 +13,15 @@ import cv2
 import numpy as np
 import pytest
 import tifffile
-from PIL import Image, ImageCms
+from PIL import Image, ImageCms, ImageOps
 
+from hueferry.colour.encoding import SRGB
 from hueferry.errors import HueferryError, OutputError, PictureError, RefusedError
 from hueferry.files.read import SUFFIXES, read, sniff
 from hueferry.files.thumbnail import thumbnail, upright
 from hueferry.files.walk import find_pictures
 from hueferry.files.write import write
+from hueferry.picture import Metadata, Picture
 from photographs import photograph
 
 PROFILE = ImageCms.ImageCmsProfile(ImageCms.createProfile("sRGB")).tobytes()
@@ -249,8 +251,6 @@ def test_what_a_format_cannot_hold_is_refused(source: str, name: str, complaint:
 @pytest.mark.parametrize("orientation", range(1, 9))
 def test_thumbnails_stand_upright(orientation: int, tmp_path: Path) -> None:
     """Pillow's own transposition is the oracle."""
-    from PIL import ImageOps
-
     stored = photograph("china", step=16)
     with Image.open(save(tmp_path / "a.png", exif=exif(orientation))) as image:
         expected = np.asarray(ImageOps.exif_transpose(image))
@@ -282,5 +282,25 @@ def test_folders_are_walked_in_order_without_hidden_names(tmp_path: Path) -> Non
 
 def test_every_format_is_recognised_by_its_first_bytes(tmp_path: Path) -> None:
     for format_, suffixes in SUFFIXES.items():
-        path = save(tmp_path / f"a{suffixes[0]}")
-        assert sniff(path.read_bytes()[:16]) == format_
+        path = write(Picture(photograph("china", step=16), SRGB), tmp_path / f"a{suffixes[0]}")
+        assert sniff(path.read_bytes()[:64]) == format_
+
+
+@pytest.mark.parametrize("name", ["a.jpg", "a.png", "a.webp", "a.tif", "a.avif", "a.jxl"])
+@pytest.mark.parametrize("block", [b"", exif(1)[6:], "without"])
+def test_a_turn_that_exif_does_not_state_is_kept_in_every_format(name: str, block: object, tmp_path: Path) -> None:
+    """As from a TIFF or an AVIF, which state it in a field of their own; Pillow's transposition is the oracle."""
+    bare = Image.Exif()
+    bare[0x0131] = "made by hand"
+    metadata = Metadata("tiff", exif=bare.tobytes()[6:] if block == "without" else block, orientation=6)
+    stored = np.full((8, 16, 3), 40, np.uint8)
+    stored[:4, :8] = 200
+
+    path = write(Picture(stored, SRGB, metadata), tmp_path / name)
+
+    again = read(path)
+    shown = upright(again.pixels, again.metadata.orientation)
+    assert np.abs(shown.astype(int) - upright(stored, 6)).max() < 12
+    if path.suffix != ".jxl":
+        with Image.open(path) as image:
+            np.testing.assert_allclose(np.asarray(ImageOps.exif_transpose(image)), upright(stored, 6), atol=12)

@@ -2,17 +2,22 @@
 
 from __future__ import annotations
 
+import importlib.util
 from collections.abc import Callable, Mapping
 from pathlib import Path
 from types import MappingProxyType
+from typing import Literal
 
 import attrs
 
 from hueferry.files import sniff as signs
 from hueferry.files.codec import Codec, LoadCodec
-from hueferry.files.load import load_avif, load_jpeg, load_png, load_tiff, load_webp
+from hueferry.files.load import load_avif, load_jpeg, load_jxl, load_png, load_tiff, load_webp
 
-_ALL = frozenset({"profile", "exif", "xmp", "orientation"})
+_ALL = frozenset({"profile", "exif", "xmp"})
+
+Turn = Literal["exif", "own", "upright"]
+"""Where a file states how it is to be turned: in EXIF, in a field of its own, or nowhere: its pixels are upright."""
 
 
 @attrs.frozen
@@ -29,9 +34,11 @@ class Format:
         alpha: whether it holds alpha.
         gray: whether it holds gray as such.
         lossless: whether pictures come back to the bit by default; if not, at least 45 dB.
-        keeps: what comes back as it was: "profile", "exif", "xmp", "iptc", "orientation".
+        keeps: what comes back as it was: "profile", "exif", "xmp", "iptc".
+        turn: where it states its orientation.
         writes: whether it is written.
-        extra: the optional dependency that it needs, or an empty string.
+        needs: the module of an optional package without which it is not read, or an empty string.
+        extra: the name under which hueferry's installation brings that package.
         remark: what else a user should know.
     """
 
@@ -45,7 +52,9 @@ class Format:
     gray: bool
     lossless: bool
     keeps: frozenset[str]
+    turn: Turn = "exif"
     writes: bool = True
+    needs: str = ""
     extra: str = ""
     remark: str = ""
 
@@ -104,7 +113,8 @@ FORMATS: Mapping[str, Format] = MappingProxyType(
                 alpha=True,
                 gray=True,
                 lossless=True,
-                keeps=frozenset({"profile", "xmp", "iptc", "orientation"}),
+                keeps=frozenset({"profile", "xmp", "iptc"}),
+                turn="own",
             ),
             Format(
                 "webp",
@@ -130,7 +140,24 @@ FORMATS: Mapping[str, Format] = MappingProxyType(
                 gray=True,
                 lossless=True,
                 keeps=_ALL,
+                turn="own",
                 remark="lossless, unless the source was a lossy AVIF or a quality is given",
+            ),
+            Format(
+                "jxl",
+                "JPEG XL",
+                (".jxl",),
+                signs.starts(b"\xff\x0a", b"\0\0\0\x0cJXL \r\n\x87\n"),
+                load_jxl,
+                depths=(8, 16, 32),
+                alpha=True,
+                gray=True,
+                lossless=True,
+                keeps=_ALL,
+                turn="upright",
+                needs="pyjpegxl",
+                extra="jxl",
+                remark="lossless, unless a quality is given; turned upright, since its turn is not EXIF's",
             ),
         )
     }
@@ -175,6 +202,13 @@ def refusal(head: bytes) -> str:
     """Return why a file that its first bytes announce is not read, or an empty string if it is unknown."""
     refused = next((one for one in REFUSED if one.announced(head)), None)
     return "" if refused is None else f"this is {refused.title}, which is not read: {refused.reason}"
+
+
+def missing(format_: Format) -> str:
+    """Return what is to be installed before a format can be read and written, or an empty string."""
+    if not format_.needs or importlib.util.find_spec(format_.needs) is not None:
+        return ""
+    return f"{format_.title} needs the optional package {format_.needs}; install hueferry[{format_.extra}]"
 
 
 def named(path: Path) -> Format | None:

@@ -61,3 +61,10 @@ def load_avif() -> Codec:
     from hueferry.files.avif import read_avif, write_avif
 
     return Codec(read_avif, write_avif)
+
+
+def load_jxl() -> Codec:
+    """JPEG XL."""
+    from hueferry.files.jxl import read_jxl, write_jxl
+
+    return Codec(read_jxl, write_jxl)

@@ -9,7 +9,7 @@ import numpy as np
 
 from hueferry.errors import InputError, PictureError, RefusedError
 from hueferry.files.codec import Decoded
-from hueferry.files.formats import FORMATS, SUFFIXES, codec, refusal, sniff
+from hueferry.files.formats import FORMATS, SUFFIXES, codec, missing, refusal, sniff
 from hueferry.files.sniff import HEAD
 from hueferry.picture import Encoding, Picture
 
@@ -32,6 +32,9 @@ def read(path: Path, *, accept_loss: bool = False) -> Picture:
     format_ = sniff(data[:HEAD])
     if not format_:
         raise _unknown(path, data[:HEAD])
+    lacking = missing(FORMATS[format_])
+    if lacking:
+        raise RefusedError(path, lacking)
     decoded = codec(format_).read(path, data, accept_loss=accept_loss)
     encoding, notes = _encoding(path, decoded)
     if path.suffix.lower() not in SUFFIXES[format_]:

@@ -4,19 +4,20 @@ from __future__ import annotations
 
 import io
 import os
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
+from types import MappingProxyType
 
 import attrs
 import numpy as np
 
 from hueferry.errors import HueferryError, InputError, OutputError
 from hueferry.files.atomic import write_bytes
-from hueferry.files.formats import FORMATS, Format, codec, named
+from hueferry.files.exif import with_orientation
+from hueferry.files.formats import FORMATS, Format, codec, missing, named
+from hueferry.files.thumbnail import upright
 from hueferry.picture import Picture
-
-_SEEN_BY_PILLOW = frozenset({"jpeg", "webp", "avif"})
 
 
 def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int | None = None) -> Path:
@@ -41,11 +42,15 @@ def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int
     if picture.path is not None and path.exists() and picture.path.exists() and path.samefile(picture.path):
         raise OutputError(path, "this is the original; choose another folder")
     _check_holds(path, picture, format_)
-    data = encode(picture, format_.name, quality=quality)
-    return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, picture, format_.name))
+    shown = fitted(picture, format_)
+    data = encode(shown, format_.name, quality=quality)
+    return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, shown, format_.name))
 
 
 def _check_holds(path: Path, picture: Picture, format_: Format) -> None:
+    lacking = missing(format_)
+    if lacking:
+        raise OutputError(path, lacking)
     is_float = picture.pixels.dtype == np.float32
     if is_float and 32 not in format_.depths:
         others = _titles(lambda one: 32 in one.depths)
@@ -79,7 +84,27 @@ def encode(picture: Picture, format_: str, *, quality: int | None = None) -> byt
     write_format = codec(format_).write
     if write_format is None:
         raise InputError(f"{FORMATS[format_].title} is read only; name another format")
-    return write_format(_at_depth(picture, FORMATS[format_]), profile, quality=quality)
+    return write_format(fitted(picture, FORMATS[format_]), profile, quality=quality)
+
+
+def fitted(picture: Picture, format_: Format) -> Picture:
+    """Return the picture as a format stores it: at a depth that it has, and upright where it keeps no orientation."""
+    return _at_depth(_turned(picture, format_), format_)
+
+
+def _turned(picture: Picture, format_: Format) -> Picture:
+    """Return the picture with EXIF that says what its orientation is, and upright where the file could not say it."""
+    metadata = picture.metadata
+    said = None if format_.turn == "upright" else with_orientation(metadata.exif, metadata.orientation)
+    if said is None and format_.turn == "own":
+        return picture
+    if said is not None:
+        # A file with a field of its own needs no EXIF for that.
+        exif = said if metadata.exif or format_.turn == "exif" else b""
+        return attrs.evolve(picture, metadata=attrs.evolve(metadata, exif=exif))
+    exif = with_orientation(metadata.exif, 1) or b""
+    pixels = upright(picture.pixels, metadata.orientation)
+    return attrs.evolve(picture, pixels=pixels, metadata=attrs.evolve(metadata, exif=exif, orientation=1))
 
 
 def _at_depth(picture: Picture, format_: Format) -> Picture:
@@ -93,9 +118,10 @@ def _at_depth(picture: Picture, format_: Format) -> Picture:
 
 def _verify(made: Path, path: Path, picture: Picture, format_: str) -> None:
     """Look at the written file with a second decoder: format, size, and that every pixel can be decoded."""
+    look: Callable[[Path], tuple[tuple[int, int], str]] = _SECOND.get(format_, _read_again)
     try:
-        shape, kind = _seen_by_pillow(made) if format_ in _SEEN_BY_PILLOW else _read_again(made)
-    except (HueferryError, OSError, SyntaxError, ValueError) as error:
+        shape, kind = look(made)
+    except (HueferryError, OSError, SyntaxError, ValueError, RuntimeError) as error:
         raise OutputError(path, f"the file that was written cannot be read again: {error}") from error
     if shape != picture.shape or kind != format_:
         raise OutputError(path, f"the file that was written came back as {kind} of {shape}")
@@ -133,3 +159,16 @@ def _decoded_rows(stream: bytes) -> int:
         image.draft(None, (1, 1))
         image.load()
     return height
+
+
+def _seen_by_another_binding(made: Path) -> tuple[tuple[int, int], str]:
+    import imagecodecs
+
+    pixels = imagecodecs.jpegxl_decode(made.read_bytes())
+    return (int(pixels.shape[0]), int(pixels.shape[1])), "jxl"
+
+
+_SECOND: Mapping[str, Callable[[Path], tuple[tuple[int, int], str]]] = MappingProxyType(
+    {"jpeg": _seen_by_pillow, "webp": _seen_by_pillow, "avif": _seen_by_pillow, "jxl": _seen_by_another_binding}
+)
+"""Decoders other than the reader's own; without one, the reader reads again."""
