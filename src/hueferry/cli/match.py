@@ -33,6 +33,10 @@ def match(
     max_gain: options.MaxGain = None,
     seed: options.Seed = 0,
     workers: options.Workers = None,
+    cluster: options.ClusterAddress = None,
+    tls_ca: options.TlsCa = None,
+    tls_certificate: options.TlsCertificate = None,
+    tls_key: options.TlsKey = None,
     dry_run: options.DryRun = False,
     json: options.Json = False,
     quiet: options.Quiet = False,
@@ -43,6 +47,7 @@ def match(
 
     from hueferry.cli.progress import Progress
     from hueferry.jobs import match_files
+    from hueferry.series.cluster import Cluster
     from hueferry.series.match import MatchOrder
 
     settings = Settings(
@@ -62,6 +67,7 @@ def match(
         hold=hold,
         overwrite=overwrite,
         workers=workers,
+        cluster=None if cluster is None else Cluster(cluster, tls_ca, tls_certificate, tls_key),
     )
     if dry_run:
         show_plan(order, as_json=json)

@@ -48,6 +48,13 @@ Workers = Annotated[
     int | None,
     typer.Option("--workers", help="Pictures done at a time; chosen by cores and free memory if not given.", min=1),
 ]
+ClusterAddress = Annotated[
+    str | None,
+    typer.Option("--cluster", help="Let the Dask workers of this scheduler do it.", metavar="ADDRESS"),
+]
+TlsCa = Annotated[Path | None, typer.Option("--tls-ca", help="Certificates of the cluster's authority (PEM).")]
+TlsCertificate = Annotated[Path | None, typer.Option("--tls-certificate", help="Our certificate (PEM).")]
+TlsKey = Annotated[Path | None, typer.Option("--tls-key", help="Its private key (PEM).")]
 DryRun = Annotated[bool, typer.Option("--dry-run", help="Print what would be done, and write nothing.")]
 Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace files of the same names.")]
 

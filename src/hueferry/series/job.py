@@ -8,7 +8,7 @@ from pathlib import Path
 import attrs
 
 from hueferry.arrays import Mask
-from hueferry.errors import HueferryError, OutputError
+from hueferry.errors import HueferryError, OutputError, PictureError
 from hueferry.fitting.fit import Fit, fit_picture
 from hueferry.fitting.reference import Reference
 from hueferry.fitting.settings import Settings
@@ -17,7 +17,6 @@ from hueferry.picture import Picture
 from hueferry.record.record import Entry, FileFact
 from hueferry.series.glimpse import take_glimpse
 from hueferry.series.keepsake import Done, Kept, pack
-from hueferry.series.plan import Errand
 
 _SMALL = 128
 """Colours that the overview of a series compares."""
@@ -45,14 +44,16 @@ class Job:
     """One picture to do.
 
     Attributes:
-        errand: what to read, and the name that the result will have.
-        shown_as: that name below the folder of the run.
-        stage: the name under which it is written and verified first.
+        source: the picture, by its absolute path: a worker may live in another folder.
+        source_name: its path as the caller gave it.
+        stage: absolute path under which the result is written and verified first.
+        output_name: the name below the folder of the run that it will have.
     """
 
-    errand: Errand
-    shown_as: str
+    source: Path
+    source_name: str
     stage: Path
+    output_name: str
 
 
 @attrs.frozen
@@ -72,13 +73,18 @@ def run_job(context: Context, job: Job) -> Kept | Failed:
     """Do one picture from file to file; a picture that cannot be done is `Failed`, not an exception."""
     try:
         return pack(_do(context, job))
-    except OutputError as error:
-        shown = OutputError(job.errand.output, error.reason) if error.path == job.stage else error
-        return Failed(str(shown), lasting=False)
     except HueferryError as error:
-        return Failed(str(error), lasting=True)
+        return Failed(_named(error, job), lasting=not isinstance(error, OutputError))
     except MemoryError:
-        return Failed(f"{job.errand.source}: memory ran out; use fewer --workers, or free memory", lasting=False)
+        return Failed(f"{job.source_name}: memory ran out; use fewer --workers, or free memory", lasting=False)
+
+
+def _named(error: HueferryError, job: Job) -> str:
+    """Return what an error says, with the files named as the caller knows them."""
+    names = {job.source: job.source_name, job.stage: job.output_name}
+    if isinstance(error, PictureError | OutputError) and error.path in names:
+        return f"{names[error.path]}: {error.reason}"
+    return str(error)
 
 
 def _do(context: Context, job: Job) -> Done:
@@ -86,14 +92,14 @@ def _do(context: Context, job: Job) -> Done:
     from hueferry.files.read import read
     from hueferry.files.write import write
 
-    picture = read(job.errand.source)
+    picture = read(job.source)
     fitted = fit_picture(picture, context.references, context.settings, hold=context.hold)
     if fitted.leaves_alone:  # no second generation of loss for nothing
         result = picture
-        write_bytes(job.stage, job.errand.source.read_bytes())
+        write_bytes(job.stage, job.source.read_bytes(), overwrite=True)
     else:
         result = fitted.apply(picture)
-        write(result, job.stage)
+        write(result, job.stage, overwrite=True)  # a worker that died may have left one
     glimpse = take_glimpse(picture, result, count=context.count)
     palettes = thin(fitted.palette, _SMALL), thin(fitted.palette_after, _SMALL)
     return Done(_entry_of(job, fitted, picture), glimpse, *palettes)
@@ -101,8 +107,8 @@ def _do(context: Context, job: Job) -> Done:
 
 def _entry_of(job: Job, fitted: Fit, picture: Picture) -> Entry:
     return Entry(
-        source=FileFact.of(job.errand.source),
-        output=FileFact.of(job.stage, shown_as=job.shown_as),
+        source=FileFact.of(job.source, shown_as=job.source_name),
+        output=FileFact.of(job.stage, shown_as=job.output_name),
         numbers=fitted.as_dict(),
         sentences=(*(f"{note[0].upper()}{note[1:]}." for note in picture.notes), *fitted.sentences),
     )

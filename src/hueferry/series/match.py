@@ -11,6 +11,7 @@ import attrs
 from hueferry.errors import OutputError
 from hueferry.fitting.settings import Settings
 from hueferry.record.record import NAME, Failure, FileFact, Record, read_record, to_json
+from hueferry.series.cluster import Cluster, run_on_cluster
 from hueferry.series.job import Context, Failed, Job, run_job
 from hueferry.series.journal import Journal, Row
 from hueferry.series.keepsake import Done, Kept, entry_from, unpack
@@ -58,6 +59,7 @@ class MatchOrder:
         hold: picture whose white part must keep its colours, or None.
         overwrite: replace files that are not results of an earlier run.
         workers: pictures done at a time, each but the only one by a process of its own; None chooses.
+        cluster: who does them instead, or None.
     """
 
     inputs: Sequence[Path]
@@ -67,6 +69,7 @@ class MatchOrder:
     hold: Path | None = None
     overwrite: bool = False
     workers: int | None = 1
+    cluster: Cluster | None = None
 
 
 def plan_match(order: MatchOrder) -> Schedule:
@@ -97,7 +100,7 @@ def match_pictures(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done:
         references, sentence = load_references(order.to, [step.errand for step in schedule.steps], order.settings)
         hold = load_mask(order.hold) if order.hold is not None else None
         context = Context(references, order.settings, hold, len(schedule.steps))
-        work = _Work(schedule, journal, journal.begin(), overwrite=order.overwrite)
+        work = _Work(schedule, journal, journal.begin(), cluster=order.cluster, overwrite=order.overwrite)
         outcomes = dict(work.kept())
         for number, (step, outcome) in enumerate(work.do(context), 1):
             outcomes[step.output] = outcome
@@ -146,6 +149,7 @@ class _Work:
     schedule: Schedule
     journal: Journal
     stage: Path
+    cluster: Cluster | None = attrs.field(kw_only=True)
     overwrite: bool = attrs.field(kw_only=True)
 
     def kept(self) -> Iterator[tuple[str, Done | Failure]]:
@@ -158,10 +162,18 @@ class _Work:
 
     def do(self, context: Context) -> Iterator[tuple[Step, Done | Failure]]:
         steps = self.schedule.to_do
-        stages = (self.stage / f"{number}{step.errand.output.suffix}" for number, step in enumerate(steps))
-        jobs = [Job(step.errand, step.output, stage) for step, stage in zip(steps, stages, strict=True)]
-        for number, answer in run_tasks(partial(run_job, context), jobs, workers=self.schedule.workers):
+        jobs = [self._job(number, step) for number, step in enumerate(steps)]
+        do = partial(run_job, context)
+        if self.cluster is None:
+            answers = run_tasks(do, jobs, workers=self.schedule.workers)
+        else:
+            answers = run_on_cluster(do, jobs, cluster=self.cluster, folder=self.stage)
+        for number, answer in answers:
             yield steps[number], self._settle(steps[number], jobs[number], answer)
+
+    def _job(self, number: int, step: Step) -> Job:
+        stage = self.stage.absolute() / f"{number}{step.errand.output.suffix}"
+        return Job(step.errand.source.absolute(), step.fact.path, stage, step.output)
 
     def _settle(self, step: Step, job: Job, answer: Kept | Failed | Died) -> Done | Failure:
         path = step.fact.path

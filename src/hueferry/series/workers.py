@@ -33,12 +33,16 @@ class Died:
     """A process ended before it answered.
 
     Attributes:
-        exit_code: as the system gave it; the negative number of a signal where one killed it.
+        exit_code: as the system gave it; the negative number of a signal where one killed it; None if not known.
+        said: what is known besides, in words.
     """
 
     exit_code: int | None
+    said: str = ""
 
     def __str__(self) -> str:
+        if self.said:
+            return self.said
         if self.exit_code is None or self.exit_code >= 0:
             return f"the process that did it stopped with exit code {self.exit_code}"
         try:
