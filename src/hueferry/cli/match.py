@@ -18,6 +18,9 @@ if TYPE_CHECKING:
 SOME_FAILED = 1
 NOTHING_WRITTEN = 2
 
+LOOK_EVERY = 1.0
+"""Seconds between two looks at watched folders."""
+
 
 def match(
     pictures: options.Pictures,
@@ -37,6 +40,7 @@ def match(
     tls_ca: options.TlsCa = None,
     tls_certificate: options.TlsCertificate = None,
     tls_key: options.TlsKey = None,
+    watch: options.Watch = False,
     dry_run: options.DryRun = False,
     json: options.Json = False,
     quiet: options.Quiet = False,
@@ -72,6 +76,9 @@ def match(
     if dry_run:
         show_plan(order, as_json=json)
         return
+    if watch:
+        watch_folders(order, quiet=quiet)
+        return
     progress = Progress()
     record = match_files(order, on_plan=None if quiet else progress.begin, on_done=None if quiet else progress.step)
     if json:
@@ -80,6 +87,27 @@ def match(
         show_costs(record)
     if record.failures:
         raise typer.Exit(SOME_FAILED if record.entries else NOTHING_WRITTEN)
+
+
+def watch_folders(order: MatchOrder, *, quiet: bool) -> None:
+    """Do pictures as they arrive, until a signal says stop."""
+    from hueferry.cli.progress import Progress
+    from hueferry.cli.stopping import stop_on_signal
+    from hueferry.jobs import match_files
+    from hueferry.series.watch import Patience
+    from hueferry.series.watch import watch as watch_order
+
+    progress = Progress()
+
+    def run(part: MatchOrder) -> None:
+        match_files(part, on_done=None if quiet else progress.step)
+
+    with stop_on_signal() as stop:
+        if not quiet:
+            remark(f"watching {', '.join(str(path) for path in order.inputs)}; stop with Ctrl+C")
+        watch_order(order, run, patience=Patience(lambda: not stop.wait(LOOK_EVERY)))
+    if not quiet:
+        remark(f"stopped; {order.out} is complete as far as pictures arrived")
 
 
 def show_costs(record: Record) -> None:

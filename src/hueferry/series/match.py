@@ -60,6 +60,7 @@ class MatchOrder:
         overwrite: replace files that are not results of an earlier run.
         workers: pictures done at a time, each but the only one by a process of its own; None chooses.
         cluster: who does them instead, or None.
+        arrived: those of the pictures that are complete and may be read, or None for all.
     """
 
     inputs: Sequence[Path]
@@ -70,6 +71,7 @@ class MatchOrder:
     overwrite: bool = False
     workers: int | None = 1
     cluster: Cluster | None = None
+    arrived: frozenset[Path] | None = None
 
 
 def plan_match(order: MatchOrder) -> Schedule:
@@ -123,14 +125,18 @@ def _journal_of(order: MatchOrder) -> Journal:
 
 
 def _schedule(order: MatchOrder, journal: Journal) -> Schedule:
-    from hueferry.files.walk import find_pictures
-
-    errands = plan_errands(order.inputs, order.out, find=find_pictures)
+    errands = plan_errands(order.inputs, order.out, find=partial(_find, arrived=order.arrived))
     wanted = identity(order.settings, order.to, order.hold)
     schedule = make_schedule(errands, order.out, journal, wanted=wanted)
     files = [step.errand.source for step in schedule.to_do]
     workers = choose_workers(files, asked=order.workers)
     return attrs.evolve(schedule, workers=workers, memory=workers * memory_of(files))
+
+
+def _find(paths: Sequence[Path], *, arrived: frozenset[Path] | None) -> list[Path]:
+    from hueferry.files.walk import find_pictures
+
+    return [path for path in find_pictures(paths) if arrived is None or path in arrived]
 
 
 def _check_names(order: MatchOrder, schedule: Schedule, journal: Journal) -> None:
