@@ -305,6 +305,36 @@ def palette_file(pictures: Sequence[Path], *, out: Path, overwrite: bool = False
     return {"schema": "hueferry/palette-1", "palette": out.as_posix(), "colours": len(found), "pictures": names}
 
 
+def house_palette_file(
+    slides: Sequence[Path], *, out: Path, light: str = "encoded", overwrite: bool = False
+) -> dict[str, Any]:
+    """Save what slides have in common as a house palette, and return what it is as JSON values.
+
+    Raises:
+        InputError: no slide can be used, or the palette cannot be written as asked.
+    """
+    from hueferry.errors import OutputError
+    from hueferry.files.atomic import write_bytes
+    from hueferry.slides.gather import reference_from
+    from hueferry.slides.house import SUFFIX, house_text
+    from hueferry.slides.readers import find_slides
+    from hueferry.slides.record import settings_from_words
+
+    if out.suffix.lower() != SUFFIX:
+        raise OutputError(out, f"a house palette of slides is saved as JSON text; let its name end in {SUFFIX}")
+    chosen = settings_from_words({"light": light}).light
+    found = reference_from(find_slides(slides), light=chosen)
+    write_bytes(out, house_text(found).encode("ascii"), overwrite=overwrite)
+    return {
+        "schema": "hueferry/palette-1",
+        "palette": out.as_posix(),
+        "colours": len(found.codes),
+        "pictures": [path.as_posix() for path in slides],
+        "shares": list(found.shares),
+        "stain_vectors": None if found.stains is None else found.stains.vectors.tolist(),
+    }
+
+
 def export_decision_list(map_file: Path, *, out: Path, over: Path, overwrite: bool = False) -> dict[str, Any]:
     """Save the decision list nearest to a map over the colours of a picture, and return it with its distance.
 

@@ -71,7 +71,9 @@ def codec_time(path: Path) -> float:
 
 def run_job(source: Path, reference: Path, out: Path) -> None:
     """Do the job in this process; print seconds, peak MB, and the slope of memory over the last 80 %."""
-    from hueferry.slides.run import StainSettings, reference_from, stain_slide
+    from hueferry.slides.gather import reference_from
+    from hueferry.slides.run import stain_slide
+    from hueferry.slides.settings import StainSettings
 
     target = reference_from([reference])
     seen: list[tuple[float, float]] = []

@@ -16,9 +16,11 @@ from hueferry.colour.make_profile import profile_of
 from hueferry.errors import PictureError, RefusedError
 from hueferry.picture import Window
 from hueferry.slides.codecs import CODECS, Packing
+from hueferry.slides.gather import reference_from
 from hueferry.slides.levels import tiles_of
 from hueferry.slides.readers import open_slide
-from hueferry.slides.run import StainSettings, reference_from, stain_slide
+from hueferry.slides.run import stain_slide
+from hueferry.slides.settings import StainSettings
 from slides.sections import rendered
 
 SIDE = 128

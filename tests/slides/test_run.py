@@ -18,18 +18,11 @@ from hueferry.picture import Picture, Window
 from hueferry.slides.cautions import CAUTIONS
 from hueferry.slides.codecs import Packing
 from hueferry.slides.fit import SlideAim
+from hueferry.slides.gather import reference_from
 from hueferry.slides.readers import find_slides, open_slide
 from hueferry.slides.reference import SlideReference
-from hueferry.slides.run import (
-    Container,
-    SlideFailure,
-    SlideOutcome,
-    StainSettings,
-    measure_slide,
-    reference_from,
-    stain,
-    stain_slide,
-)
+from hueferry.slides.run import SlideFailure, SlideOutcome, measure_slide, stain, stain_slide
+from hueferry.slides.settings import Container, StainSettings
 from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
 from hueferry.slides.zarr_writer import write_zarr_slide
 from slides.sections import HED, rendered, restain

@@ -13,15 +13,27 @@ from hueferry.cli.terminal import show_json, show_lines
 
 def palette(
     pictures: Annotated[list[Path], typer.Argument(help="Pictures, or palettes saved before.", metavar="PICTURE...")],
-    out: Annotated[Path, typer.Option("--out", help="Where the palette is saved, as .txt or .cgats.")],
+    out: Annotated[
+        Path, typer.Option("--out", help="Where the palette is saved, as .txt or .cgats; of slides, as .json.")
+    ],
     *,
+    stain: Annotated[bool, typer.Option("--stain", help="They are slides: save their house palette.")] = False,
+    light: Annotated[
+        str, typer.Option("--light", help="Of slides: optical density of encoded or linear values.")
+    ] = "encoded",
     json: options.Json = False,
     overwrite: options.Overwrite = False,
 ) -> None:
-    """Save the palette of a picture, or the common palette of several, for use with --to."""
-    from hueferry.jobs import palette_file
+    """Save the palette of a picture, or the common palette of several, for use with --to.
 
-    saved = palette_file(pictures, out=out, overwrite=overwrite)
+    With --stain, the palette is that of slides, for `stain --to`.
+    """
+    from hueferry.jobs import house_palette_file, palette_file
+
+    if stain:
+        saved = house_palette_file(pictures, out=out, light=light, overwrite=overwrite)
+    else:
+        saved = palette_file(pictures, out=out, overwrite=overwrite)
     if json:
         show_json(saved)
     else:

@@ -10,11 +10,10 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, Pixels
 from hueferry.colour.spaces import xyz_to_oklab
-from hueferry.errors import InputError
 from hueferry.slides.look import Look
 from hueferry.slides.reference import SlideReference
 from hueferry.slides.register import FALLBACK
-from hueferry.slides.stains import Stains, robust_plane
+from hueferry.slides.stains import Stains, stains_of
 
 _LEVELS = np.linspace(0.005, 0.995, 100)
 _MOST = 1024
@@ -38,12 +37,12 @@ def describe_slide(look: Look) -> dict[str, Any]:
     }
 
 
-def stains_of(density: Colours) -> Stains | None:
-    """Return the stains of tissue densities, or None where they cannot be told."""
-    try:
-        return robust_plane(density)
-    except (InputError, np.linalg.LinAlgError):
+def stains_apart(first: Stains | None, second: Stains | None) -> list[float] | None:
+    """Return the angle in degrees between either stain's vectors; None where one of them cannot be told."""
+    if first is None or second is None:
         return None
+    cosines = np.clip((first.vectors * second.vectors).sum(axis=1), -1.0, 1.0)
+    return [float(angle) for angle in np.degrees(np.arccos(cosines))]
 
 
 def density_cost(first: Colours, second: Colours) -> float:
@@ -90,6 +89,8 @@ def compare(before: Look, after: Look, reference: SlideReference) -> dict[str, A
         "after": describe_slide(after),
         "glass_off_target_codes": float(drift.max()),
         "clipped_share": clipped_share(after.thumbnail, before),
+        "stains_off_reference_degrees_before": stains_apart(stains_of(before.density), reference.stains),
+        "stains_off_reference_degrees_after": stains_apart(stains_of(after.density), reference.stains),
     }
     if not before.empty and not after.empty:
         numbers |= {

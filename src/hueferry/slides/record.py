@@ -13,7 +13,8 @@ from hueferry.slides.cautions import CAUTIONS
 from hueferry.slides.codecs import Packing
 from hueferry.slides.density import Light
 from hueferry.slides.fit import SlideAim
-from hueferry.slides.run import Container, SlideFailure, SlideOutcome, StainSettings
+from hueferry.slides.run import SlideFailure, SlideOutcome
+from hueferry.slides.settings import Container, StainSettings
 
 _Word = TypeVar("_Word", bound=StrEnum)
 

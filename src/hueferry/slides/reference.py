@@ -16,6 +16,7 @@ from hueferry.picture import Encoding, Picture
 from hueferry.slides.density import Density, Light
 from hueferry.slides.look import Look
 from hueferry.slides.register import Sample
+from hueferry.slides.stains import Stains, common_stains, stains_of
 
 _EACH = 20_000
 _OF_PALETTE = 256
@@ -34,6 +35,7 @@ class SlideReference:
         light: what Beer–Lambert's law is applied to.
         picture: the thumbnail, where there is one slide only: the same field may be seen in it.
         shares: (k,) how much each slide counts.
+        stains: the stains of the slides, as most of them have them; None where they cannot be told.
     """
 
     codes: Codes = attrs.field(converter=read_only)
@@ -44,16 +46,17 @@ class SlideReference:
     light: Light
     picture: Picture | None
     shares: tuple[float, ...]
+    stains: Stains | None = None
 
     def scale(self, encoding: Encoding) -> Density:
         """Return the density scale of the reference for slides in `encoding`."""
         return Density(
-            np.clip(_between(self.glass[None, :], self.encoding, encoding)[0], 0.02, 1.0), encoding, self.light
+            np.clip(between(self.glass[None, :], self.encoding, encoding)[0], 0.02, 1.0), encoding, self.light
         )
 
     def sample(self, encoding: Encoding) -> Sample:
         """Return the reference's tissue densities as a slide in `encoding` would show them."""
-        return Sample(self.scale(encoding).of(_between(self.codes, self.encoding, encoding)), self.blocks)
+        return Sample(self.scale(encoding).of(between(self.codes, self.encoding, encoding)), self.blocks)
 
 
 def reference_of(looks: Sequence[Look]) -> SlideReference:
@@ -73,7 +76,7 @@ def reference_of(looks: Sequence[Look]) -> SlideReference:
     if len(useful) == 1:
         return SlideReference(
             first.codes, first.blocks, first.scale.glass, first.regions.glass.seen,
-            first.scale.encoding, first.scale.light, first.picture, (1.0,),
+            first.scale.encoding, first.scale.light, first.picture, (1.0,), stains_of(first.density),
         )  # fmt: skip
     even = np.full(len(useful), 1 / len(useful))
     palettes = [density_palette(look.density) for look in useful]
@@ -89,6 +92,7 @@ def reference_of(looks: Sequence[Look]) -> SlideReference:
         np.concatenate([codes for codes, _ in parts]), np.concatenate([blocks for _, blocks in parts]),
         scale.glass, all(look.regions.glass.seen for look in useful),
         first.scale.encoding, first.scale.light, None, tuple(float(share) for share in shares),
+        common_stains([found for look in useful if (found := stains_of(look.density)) is not None]),
     )  # fmt: skip
 
 
@@ -101,7 +105,7 @@ def density_palette(density: NDArray[np.float64], size: int = _OF_PALETTE) -> Pa
 
 
 def _glass_in(look: Look, encoding: Encoding) -> NDArray[np.float64]:
-    return np.asarray(_between(look.scale.glass[None, :], look.scale.encoding, encoding)[0])
+    return np.asarray(between(look.scale.glass[None, :], look.scale.encoding, encoding)[0])
 
 
 def _weighted_median(values: NDArray[np.float64], shares: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -111,7 +115,8 @@ def _weighted_median(values: NDArray[np.float64], shares: NDArray[np.float64]) -
     return np.asarray(np.take_along_axis(np.take_along_axis(values, order, axis=0), place[None, :], axis=0)[0])
 
 
-def _between(codes: Codes, given: Encoding, wanted: Encoding) -> Codes:
+def between(codes: Codes, given: Encoding, wanted: Encoding) -> Codes:
+    """Return (n, 3) codes of one encoding in another, clipped to what it holds."""
     if given is wanted or given.profile == wanted.profile:
         return codes
     return np.clip(wanted.from_xyz(given.to_xyz(codes)), 0.0, 1.0)

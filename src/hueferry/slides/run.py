@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections import deque
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import Future, ThreadPoolExecutor
-from enum import StrEnum
 from pathlib import Path
 from typing import Any
 
@@ -13,69 +12,24 @@ import attrs
 import numpy as np
 
 from hueferry.arrays import Mask, Pixels
-from hueferry.errors import HueferryError, InputError, OutputError, RefusedError
-from hueferry.maps.method import Method
+from hueferry.errors import HueferryError, OutputError
 from hueferry.picture import Picture, Window
 from hueferry.slides.cautions import AMOUNT_IS_MEASURED, CAUTIONS
 from hueferry.slides.codecs import Packing
 from hueferry.slides.density import Light
-from hueferry.slides.fit import SlideAim, SlideFit, fit_slide
-from hueferry.slides.look import Look, look_at
+from hueferry.slides.fit import SlideFit, fit_slide
+from hueferry.slides.gather import find_reference, look_at_slide
+from hueferry.slides.look import Look
 from hueferry.slides.quality import compare, describe_slide, overlay, within
 from hueferry.slides.readers import find_slides, open_slide
-from hueferry.slides.reference import SlideReference, reference_of
-from hueferry.slides.refuse import amount_is_measured, reason_against
-from hueferry.slides.source import SlideSource, thumbnail_of
+from hueferry.slides.reference import SlideReference
+from hueferry.slides.refuse import amount_is_measured
+from hueferry.slides.settings import Container, StainSettings, check_names, output_path, stem_of
+from hueferry.slides.source import SlideSource
 from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
 
 _WIDE = 1 << 16
 """Columns above which one band at a time is read ahead, so that memory stays bounded."""
-
-
-class Container(StrEnum):
-    """What a slide is written as."""
-
-    OME = "ome"
-    FLAT = "flat"
-    ZARR = "zarr"
-
-
-SUFFIXES = {Container.OME: ".ome.tif", Container.FLAT: ".tif", Container.ZARR: ".ome.zarr"}
-
-
-@attrs.frozen(kw_only=True)
-class StainSettings:
-    """Settings of a run on slides; equal settings and inputs give equal bytes.
-
-    Attributes:
-        aim: `agree` or `adopt`.
-        light: what Beer–Lambert's law is applied to.
-        strength: share of the way, 0 … 1.
-        max_gain: largest stretch in code values; None means the default for slides.
-        method: transport under `adopt`.
-        layout: "ome" (SubIFDs), "flat" (pages, for OpenSlide) or "zarr".
-        packing: compression of tiles; None means JPEG 4:4:4 for 8 bit and deflate for deeper slides.
-        quality: of JPEG, 1 … 100.
-        measure_only: write no slide.
-        correct_measured: correct also where the amount of a stain is likely to be the measurement (DAB).
-        keep_texts: carry the file's free text and identifiers over.
-        overwrite: replace outputs of the same name.
-        threads: windows at the same time; the bytes do not depend on it.
-    """
-
-    aim: SlideAim = SlideAim.AGREE
-    light: Light = Light.ENCODED
-    strength: float = attrs.field(default=1.0, validator=[attrs.validators.ge(0.0), attrs.validators.le(1.0)])
-    max_gain: float | None = None
-    method: Method = Method.ENTROPIC
-    layout: Container = Container.OME
-    packing: Packing | None = None
-    quality: int = attrs.field(default=90, validator=[attrs.validators.ge(1), attrs.validators.le(100)])
-    measure_only: bool = False
-    correct_measured: bool = False
-    keep_texts: bool = False
-    overwrite: bool = False
-    threads: int = 2
 
 
 @attrs.frozen(eq=False)
@@ -107,20 +61,6 @@ class SlideFailure:
 
     source: Path
     reason: str
-
-
-def look_at_slide(path: Path, source: SlideSource, *, light: Light, mask: Mask | None = None) -> Look:
-    """Look at a slide's thumbnail, or refuse it.
-
-    Raises:
-        RefusedError: it is no bright-field slide.
-    """
-    look = look_at(thumbnail_of(source), source.encoding, bits=source.bits, light=light, mask=mask)
-    top = 1.0 if look.thumbnail.dtype == np.float32 else float(2**look.bits - 1)
-    reason = reason_against(look.thumbnail.astype(np.float64) / top, look.regions)
-    if reason is not None:
-        raise RefusedError(path, reason)
-    return look
 
 
 def stain_slide(
@@ -189,7 +129,7 @@ def stain(
 
     Args:
         paths: slides, and folders of slides.
-        to: reference slides; several make a house palette.
+        to: reference slides, of which several make a house palette; or one house palette saved before.
         out: folder that outputs go to; made if it does not exist.
         settings: how.
         on_done: called after each slide.
@@ -199,8 +139,8 @@ def stain(
     """
     chosen = settings or StainSettings()
     slides = find_slides(paths)
-    _check_names(slides, out, chosen.layout)
-    reference = reference_from(find_slides(to) if to else slides, light=chosen.light)
+    check_names(slides, out, chosen.layout)
+    reference = find_reference(to or slides, light=chosen.light)
     out.mkdir(parents=True, exist_ok=True)
     results: list[SlideOutcome | SlideFailure] = []
     for path in slides:
@@ -211,50 +151,6 @@ def stain(
         if on_done is not None:
             on_done(results[-1])
     return results
-
-
-def reference_from(paths: Sequence[Path], *, light: Light = Light.ENCODED) -> SlideReference:
-    """Make a reference from slides; those that cannot be read are left out unless none can.
-
-    Raises:
-        InputError: no slide can be used; the message says why the last could not.
-    """
-    looks, last = [], ""
-    for path in paths:
-        try:
-            source = open_slide(path)
-            try:
-                looks.append(look_at_slide(path, source, light=light))
-            finally:
-                source.close()
-        except InputError as error:
-            last = str(error)
-    if not looks:
-        raise InputError(f"no reference slide can be used; {last}")
-    return reference_of(looks)
-
-
-def stem_of(path: Path) -> str:
-    """Return the name of a slide without its suffixes."""
-    name = path.name
-    for suffix in (".ome.zarr", ".ome.tif", ".ome.tiff", ".zarr", path.suffix):
-        if suffix and name.lower().endswith(suffix):
-            return name[: -len(suffix)] or name
-    return name
-
-
-def output_path(path: Path, out: Path, layout: Container) -> Path:
-    """Return where the output of a slide goes."""
-    return out / (stem_of(path) + SUFFIXES[layout])
-
-
-def _check_names(slides: Sequence[Path], out: Path, layout: Container) -> None:
-    taken: dict[str, Path] = {}
-    for path in slides:
-        name = output_path(path, out, layout).name.casefold()
-        if name in taken:
-            raise InputError(f"{taken[name]} and {path} would both become {name}; run them into different folders")
-        taken[name] = path
 
 
 def _numbers(look: Look, fit: SlideFit, reference: SlideReference) -> dict[str, Any]:

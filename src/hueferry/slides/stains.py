@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from types import MappingProxyType
 
 import attrs
@@ -22,6 +22,8 @@ EXTREME = 1.0
 """Percent of directions left out at either end of the fan."""
 
 _SPARSITY, _ROUNDS = 0.1, 60
+_LOG_STRENGTH = 0.3
+"""What a log strength counts for beside a component of a vector: staining runs change it three times as much."""
 
 
 @attrs.frozen(eq=False)
@@ -60,7 +62,7 @@ def robust_plane(density: Colours, *, least: float = LEAST_DENSITY, extreme: flo
 
     Args:
         density: (n, 3) of tissue.
-        least: densities with a channel below are left out.
+        least: densities whose mean over the channels is below are left out.
         extreme: percentiles taken as edges: this one, and 100 minus it.
 
     Raises:
@@ -69,7 +71,7 @@ def robust_plane(density: Colours, *, least: float = LEAST_DENSITY, extreme: flo
     References:
         Macenko et al. (2009), A method for normalizing histology slides for quantitative analysis, ISBI, 1107–1110.
     """
-    strong = density[(density >= least).all(axis=1)]
+    strong = density[density.mean(axis=1) >= least]
     if len(strong) < 16:
         raise InputError(f"only {len(strong)} pixels are stained strongly enough to tell stains apart")
     _, axes = np.linalg.eigh(np.cov(strong, rowvar=False))
@@ -123,6 +125,36 @@ def _named(vectors: Vectors, density: Colours) -> Stains:
     amounts = density @ np.linalg.pinv(vectors)
     strengths = np.maximum(np.percentile(amounts, 99, axis=0), 1e-3)
     return Stains(vectors, strengths)
+
+
+def stains_of(density: Colours) -> Stains | None:
+    """Return the stains of tissue densities, or None where they cannot be told."""
+    try:
+        return robust_plane(density)
+    except (InputError, np.linalg.LinAlgError):
+        return None
+
+
+def common_stains(found: Sequence[Stains]) -> Stains | None:
+    """Return the stains that most of several slides have: the geometric median of vectors and log strengths.
+
+    No minority of slides, however far off, can carry it away. None where there is nothing to choose from.
+
+    References:
+        Weiszfeld (1937); Vardi & Zhang (2000), The multivariate L1-median.
+    """
+    if not found:
+        return None
+    points = np.array([np.append(one.vectors, np.log(one.strengths)) for one in found])
+    scaled = points * np.append(np.ones(6), np.full(2, _LOG_STRENGTH))
+    shares = np.full(len(points), 1 / len(points))
+    for _ in range(_ROUNDS):
+        away = np.linalg.norm(scaled - shares @ scaled, axis=1)
+        pull = 1 / np.maximum(away, max(0.1 * float(np.median(away)), 1e-9))
+        shares = pull / pull.sum()
+    middle = shares @ points
+    vectors = middle[:6].reshape(2, 3)
+    return Stains(vectors / np.linalg.norm(vectors, axis=1, keepdims=True), np.exp(middle[6:]))
 
 
 def exchange(density: Colours, own: Stains, reference: Stains) -> Colours:
