@@ -15,6 +15,7 @@ _LONGEST = ((12, 900), (60, 640), (200, 420))
 _SMALLEST = 200
 _SPOTS_UP_TO = 40
 _QUALITY = 86
+_STEP = 6
 
 
 @attrs.frozen
@@ -64,18 +65,20 @@ def _spot(before: Picture, after: Picture) -> Spot:
 
 
 def largest_change(before: Picture, after: Picture) -> Window:
-    """Return the window, at most `SPOT` pixels square, whose code values changed most on average."""
-    height, width = before.shape
-    side_down, side_right = min(SPOT, height), min(SPOT, width)
-    best, found = -1.0, Window(0, 0, side_down, side_right)
-    for top in range(0, height - side_down + 1, side_down):
-        for left in range(0, width - side_right + 1, side_right):
-            window = Window(top, left, side_down, side_right)
-            one, two = before.read(window)[::3, ::3, :3], after.read(window)[::3, ::3, :3]
-            change = float(np.abs(one.astype(np.float32) - two.astype(np.float32)).mean())
-            if change > best:
-                best, found = change, window
-    return found
+    """Return the window, at most `SPOT` pixels square, whose code values changed most on average.
+
+    Windows lie side by side from the top left; large ones are judged by every sixth pixel of every sixth row.
+    """
+    import cv2
+
+    down, right = (min(SPOT, side) for side in before.shape)
+    step_down, step_right = (_STEP if side == SPOT else 1 for side in (down, right))
+    rows, columns = before.shape[0] // down, before.shape[1] // right
+    looked_at = np.s_[: rows * down : step_down, : columns * right : step_right, :3]
+    change = cv2.absdiff(*(np.ascontiguousarray(picture.pixels[looked_at]) for picture in (before, after)))
+    blocks = change.reshape(rows, down // step_down, columns, right // step_right, -1)
+    row, column = divmod(int(np.argmax(np.nan_to_num(blocks.mean(axis=(1, 3, 4), dtype=np.float64)))), columns)
+    return Window(row * down, column * right, down, right)
 
 
 def _jpeg(pixels: np.ndarray[tuple[int, ...], np.dtype[np.uint8]]) -> bytes:
