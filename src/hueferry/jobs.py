@@ -264,8 +264,12 @@ def check_map(map_file: Path) -> Certificate:
     return certify(read_clf(map_file), occupied=everywhere, encoding=SRGB)
 
 
-def check_folder(folder: Path) -> list[str]:
+def check_folder(folder: Path, *, recreated: str | None = None) -> list[str]:
     """Compare every file of a run with its hash in the record; return a sentence for each that differs or is gone.
+
+    Args:
+        folder: of the run.
+        recreated: name of a result to make again and compare too.
 
     Raises:
         InputError: there is no record in the folder.
@@ -283,6 +287,10 @@ def check_folder(folder: Path) -> list[str]:
                 complaints.append(f"{kind} {path} is gone")
             elif fact["sha256"] and FileFact.of(path).sha256 != fact["sha256"]:
                 complaints.append(f"{kind} {path} differs from the record")
+    if recreated is not None and not complaints:
+        from hueferry.series.recreate import recreate
+
+        complaints += recreate(folder, recreated)
     return complaints
 
 

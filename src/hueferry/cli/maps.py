@@ -84,20 +84,26 @@ def apply(
 def check(
     target: Annotated[Path, typer.Argument(help="A map, or the folder of a run.", metavar="MAP.clf|DIR")],
     *,
+    recreate: Annotated[
+        str | None,
+        typer.Option("--recreate", help="Make this result of the run again and compare its bytes.", metavar="NAME"),
+    ] = None,
     json: options.Json = False,
 ) -> None:
     """Certify a map from its file alone, or verify every file of a run against its record."""
     from hueferry.jobs import check_folder, check_map
 
     if target.is_dir():
-        complaints = check_folder(target)
+        complaints = check_folder(target, recreated=recreate)
         if json:
             show_json({"schema": "hueferry/check-1", "differences": complaints})
         else:
-            show_lines(complaints or ["every file is as the record says"])
+            show_lines(complaints or [_all_well(recreate)])
         if complaints:
             raise typer.Exit(DIFFERS)
         return
+    if recreate is not None:
+        raise typer.BadParameter("--recreate is for the folder of a run")
     certificate = check_map(target)
     if json:
         show_json({"schema": "hueferry/check-1", "certificate": certificate.as_dict()})
@@ -105,3 +111,9 @@ def check(
         show_lines(certificate.sentences())
     if certificate.folds:
         raise typer.Exit(DIFFERS)
+
+
+def _all_well(recreated: str | None) -> str:
+    if recreated is None:
+        return "every file is as the record says"
+    return f"every file is as the record says, and {recreated} came out the same when it was made again"

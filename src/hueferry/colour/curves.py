@@ -33,7 +33,8 @@ class Curve(Protocol):
 class Parametric:
     """The ICC's parametric curve of type 4, which holds the others.
 
-    decode(x) = (a x + b) ** gamma + e for x >= d, and c x + f below (ICC.1:2022, clause 10.18).
+    decode(x) = (a x + b) ** gamma + e for x >= d, and c x + f below (ICC.1:2022, clause 10.18). There is no light below
+    none: where offsets e or f are negative, small codes stand for 0.
     """
 
     gamma: float
@@ -54,7 +55,7 @@ class Parametric:
         magnitude = np.abs(np.asarray(codes, dtype=np.float64))
         power = np.maximum(self.a * magnitude + self.b, 0.0) ** self.gamma + self.e
         linear = np.where(magnitude >= self.d, power, self.c * magnitude + self.f)
-        return np.asarray(np.copysign(linear, codes))
+        return np.asarray(np.copysign(np.maximum(linear, 0.0), codes))
 
     def encode(self, linear: NDArray[Any]) -> Values:
         """Turn linear light into codes; light between the two pieces of a curve with a jump goes to the joint."""

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Mapping
 from enum import StrEnum
 from typing import Any
 
 import attrs
 
+from hueferry.errors import InputError
 from hueferry.maps.method import Method
 
 
@@ -56,6 +58,24 @@ class Settings:
         if self.max_gain is not None:
             return self.max_gain
         return 2.5 if bits <= 8 else 4.0
+
+    @classmethod
+    def from_dict(cls, values: Mapping[str, Any]) -> Settings:
+        """Return the settings that `as_dict` gave.
+
+        Raises:
+            InputError: these are not settings.
+        """
+        kinds: Mapping[str, Callable[[Any], Any]] = {"aim": Aim, "method": Method, "only": Only}
+        try:
+            return cls(
+                **{
+                    name: kinds[name](value) if name in kinds and value is not None else value
+                    for name, value in values.items()
+                }
+            )
+        except (TypeError, ValueError) as error:
+            raise InputError(f"these are not the settings of a fit: {error}") from error
 
     def as_dict(self) -> dict[str, Any]:
         """Return the settings as JSON values."""

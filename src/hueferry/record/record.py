@@ -81,7 +81,19 @@ class Failure:
 
 @attrs.frozen(eq=False)
 class Record:
-    """Everything that ran."""
+    """Everything that ran.
+
+    Attributes:
+        command: "match", "stain".
+        settings: of every fit.
+        references: what the pictures were brought towards; none means what they have in common.
+        entries: the pictures that were done.
+        failures: those that could not be done.
+        sentences: what a person should know of the run.
+        overview: the series as a whole.
+        versions: of Python and of the packages whose code touches a colour.
+        hold: the mask of what had to keep its colours, or None.
+    """
 
     command: str
     settings: Mapping[str, Any]
@@ -91,6 +103,7 @@ class Record:
     sentences: Sequence[str] = ()
     overview: Mapping[str, Any] = attrs.field(factory=dict)
     versions: Mapping[str, str] = attrs.field(factory=installed_versions)
+    hold: FileFact | None = None
 
     def as_dict(self) -> dict[str, Any]:
         """Return the record as JSON values."""

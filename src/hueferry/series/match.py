@@ -228,6 +228,7 @@ def _finish(order: MatchOrder, schedule: Schedule, outcomes: Sequence[Done | Fai
         failures=[outcome for outcome in outcomes if isinstance(outcome, Failure)],
         sentences=[sentence],
         overview=overview(done),
+        hold=None if order.hold is None else FileFact.of(order.hold),
     )
     if done:
         write_bytes(order.out / NAME, to_json(record).encode(), overwrite=True)
@@ -240,4 +241,5 @@ def _recorded(out: Path) -> Record:
     data["references"] = [FileFact(**fact) for fact in data["references"]]
     data["entries"] = [entry_from(entry) for entry in data["entries"]]
     data["failures"] = [Failure(**failure) for failure in data["failures"]]
+    data["hold"] = None if data["hold"] is None else FileFact(**data["hold"])
     return Record(**data)
