@@ -42,6 +42,8 @@ HOMES = {
     "tifffile": {"files", "slides"},
     "imagecodecs": {"files", "slides", "colour"},
     "pyjpegxl": {"files"},
+    "OpenEXR": {"files"},
+    "pi_heif": {"files"},
     "PIL": {"files", "colour", "samples"},
     "PyOpenColorIO": {"tables", "applying"},
     "cv2": {"evidence", "palettes", "files"},

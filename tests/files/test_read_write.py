@@ -16,8 +16,10 @@ import tifffile
 from PIL import Image, ImageCms, ImageOps
 
 from hueferry.colour.encoding import SRGB
+from hueferry.colour.scene import REC_709, scene_linear
 from hueferry.errors import HueferryError, OutputError, PictureError, RefusedError
-from hueferry.files.read import SUFFIXES, read, sniff
+from hueferry.files.formats import FORMATS, sniff
+from hueferry.files.read import read
 from hueferry.files.thumbnail import thumbnail, upright
 from hueferry.files.walk import find_pictures
 from hueferry.files.write import write
@@ -281,9 +283,12 @@ def test_folders_are_walked_in_order_without_hidden_names(tmp_path: Path) -> Non
 
 
 def test_every_format_is_recognised_by_its_first_bytes(tmp_path: Path) -> None:
-    for format_, suffixes in SUFFIXES.items():
-        path = write(Picture(photograph("china", step=16), SRGB), tmp_path / f"a{suffixes[0]}")
-        assert sniff(path.read_bytes()[:64]) == format_
+    plain = Picture(photograph("china", step=16), SRGB)
+    light = Picture(photograph("china", step=16) / np.float32(255), scene_linear(REC_709), bits=32)
+    for name, one in FORMATS.items():
+        if one.writes:
+            path = write(light if one.scene_linear else plain, tmp_path / f"a{one.suffixes[0]}")
+            assert sniff(path.read_bytes()[:64]) == name
 
 
 @pytest.mark.parametrize("name", ["a.jpg", "a.png", "a.webp", "a.tif", "a.avif", "a.jxl"])

@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, Mask, Pixels
+from hueferry.colour.scene import white_code
 from hueferry.colour.spaces import xyz_to_oklab
 from hueferry.errors import InputError
 from hueferry.evidence.blocks import Content, content_of
@@ -39,7 +40,8 @@ class Reduced:
             searched on, so that a change of light leaves them where they are.
         usable: (height, width), true where a pixel counts: inside the mask, opaque, finite.
         low: (height, width, 3), true where a channel stands at the lower end of its range: it may have been less.
-        high: (height, width, 3), true where a channel stands at the upper end: it may have been more.
+        high: (height, width, 3), true where a channel stands at the upper end: it may have been more. Of
+            scene-linear light that is diffuse white, beyond which `BeyondWhite` carries on.
         shape: (rows, columns) of the picture at full size.
         exposure: exposure value in stops at ISO 100 (log2 of f-number² ÷ time, less log2 of ISO ÷ 100), or None
             where the file does not say.
@@ -125,7 +127,7 @@ def reduce_picture(picture: Picture, *, mask: Mask | None = None, max_pixels: in
         gray=even_out(oklab[:, :, 0]),
         usable=usable,
         low=codes < CLIPPED,
-        high=codes > 1 - CLIPPED,
+        high=codes > white_code(picture.encoding) - CLIPPED,
         shape=picture.shape,
         exposure=exposure_value(picture.metadata.exif),
     )

@@ -16,12 +16,11 @@ import numpy as np
 
 from hueferry.errors import InputError, PictureError, RefusedError
 from hueferry.files.codec import Decoded
+from hueferry.files.iso_pictures import UNSPECIFIED, XMP_TYPE, check_single, colours_of, encoding_of, exif_and_xmp
 from hueferry.files.isobmff import Item, Items, assemble, boxes, read_items
 from hueferry.files.probe import check_size
-from hueferry.picture import Encoding, Metadata, Picture
+from hueferry.picture import Metadata, Picture
 
-_XMP_TYPE = b"application/rdf+xml"
-_ALPHA = (b"urn:mpeg:mpegB:cicp:systems:auxiliary:alpha", b"urn:mpeg:hevc:2015:auxid:1")
 _QUALITY = 97
 """Where the source is a lossy AVIF and no quality is asked for; always without chroma subsampling."""
 
@@ -32,9 +31,6 @@ TURNS: Mapping[int, tuple[int | None, int | None]] = MappingProxyType(
     {1: (None, None), 2: (None, 1), 3: (2, None), 4: (None, 0), 5: (1, 0), 6: (3, None), 7: (3, 0), 8: (1, None)}
 )
 """EXIF orientation to quarter turns, counterclockwise, and the mirror after them: 0 top to bottom, 1 left to right."""
-
-_UNSPECIFIED = 2
-_TRANSFERS = frozenset({1, 6, 13, 14, 15, _UNSPECIFIED})
 
 
 def read_avif(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
@@ -49,11 +45,11 @@ def read_avif(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
     try:
         items = read_items(data)
         if not accept_loss:
-            _check_single(path, data, items)
+            check_single(path, data, items)
         for extent in items.of(items.primary, b"ispe")[:1]:
             check_size(path, (int.from_bytes(extent[8:12], "big"), int.from_bytes(extent[4:8], "big")))
-        profile, colours = _colours(items)
-        encoding = None if profile else _encoding(path, colours)
+        profile, colours = colours_of(items)
+        encoding = None if profile else encoding_of(path, colours)
         pixels = np.asarray(imagecodecs.avif_decode(_without_film(data, items)))
     except RefusedError:
         raise
@@ -65,55 +61,12 @@ def read_avif(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
     return Decoded(shaped, _metadata(data, items, colours), profile, bits=_bits(items), encoding=encoding)
 
 
-def _check_single(path: Path, data: bytes, items: Items) -> None:
-    way_round = "accept the loss to go on"
-    if items.sequence and any(body[:4] == b"avis" for kind, body, _ in boxes(data) if kind == b"ftyp"):
-        raise RefusedError(path, f"this AVIF is a film, and all frames but one would be lost; {way_round}")
-    if any(item.kind == b"tmap" for item in items.items.values()):
-        raise RefusedError(path, f"the file holds a gain map, which would be lost; {way_round}")
-    for number in items.items:
-        kinds = [payload[4:].split(b"\0")[0] for payload in items.of(number, b"auxC")]
-        if any(kind not in _ALPHA for kind in kinds):
-            raise RefusedError(path, f"the file holds a depth map or the like, which would be lost; {way_round}")
-
-
 def _without_film(data: bytes, items: Items) -> bytes:
     """Return a file of the items alone, where there is a track beside them: the decoder would take its frames."""
     if not items.sequence:
         return data
     bodies = {number: items.bytes_of(data, number) for number in items.items}
     return assemble(b"avif\0\0\0\0avifmif1miaf", items, bodies)
-
-
-def _colours(items: Items) -> tuple[bytes | None, tuple[int, int, int]]:
-    """Return the ICC profile, and primaries, transfer and matrix numbers (ITU-T H.273)."""
-    held = items.of(items.primary, b"colr")
-    profile = next((payload[4:] for payload in held if payload[:4] in (b"prof", b"rICC")), None)
-    numbers = next((payload[4:10] for payload in held if payload[:4] == b"nclx" and len(payload) >= 10), b"")
-    if not numbers:
-        return profile or None, (_UNSPECIFIED,) * 3
-    first, second, third = (int.from_bytes(numbers[start : start + 2], "big") for start in (0, 2, 4))
-    return profile or None, (first, second, third)
-
-
-def _encoding(path: Path, colours: tuple[int, int, int]) -> Encoding | None:
-    from hueferry.colour.encoding import BT2020, DISPLAY_P3, SRGB
-
-    primaries, transfer, _ = colours
-    if primaries == transfer == _UNSPECIFIED:
-        return None
-    if transfer in (16, 18):
-        name = "PQ" if transfer == 16 else "HLG"
-        raise RefusedError(
-            path, f"its light is coded in {name}, for displays of high range; convert it to a profile, or to OpenEXR"
-        )
-    known: Mapping[int, Encoding] = {1: SRGB, _UNSPECIFIED: SRGB, 9: BT2020, 12: DISPLAY_P3}
-    if primaries not in known or transfer not in _TRANSFERS:
-        reason = f"its colours are stated by numbers that are not known here (primaries {primaries}, curve {transfer})"
-        raise RefusedError(path, f"{reason}; embed an ICC profile")
-    if primaries == 9 and transfer == 13:
-        return attrs.evolve(BT2020, name="BT.2020 with the curve of sRGB", curves=SRGB.curves)
-    return known[primaries]
 
 
 def _bits(items: Items) -> int:
@@ -123,13 +76,12 @@ def _bits(items: Items) -> int:
 
 
 def _metadata(data: bytes, items: Items, colours: tuple[int, int, int]) -> Metadata:
-    exif = next((items.bytes_of(data, number) for number, item in items.items.items() if item.kind == b"Exif"), b"")
-    xmp = next((items.bytes_of(data, number) for number, item in items.items.items() if item.content == _XMP_TYPE), b"")
+    exif, xmp = exif_and_xmp(data, items)
     turn = next((payload[0] & 3 for payload in items.of(items.primary, b"irot") if payload), None) or None
     mirror = next((payload[0] & 1 for payload in items.of(items.primary, b"imir") if payload), None)
     return Metadata(
         format="avif",
-        exif=exif[4 + int.from_bytes(exif[:4], "big") :],
+        exif=exif,
         xmp=xmp,
         orientation=_orientation(turn, mirror),
         container={
@@ -166,7 +118,7 @@ def write_avif(picture: Picture, profile: bytes | None, *, quality: int | None) 
     facts = picture.metadata.container if picture.metadata.format == "avif" else {}
     level = quality or (100 if facts.get("lossless", True) else _QUALITY)
     plain = picture.pixels[:, :, 0] if picture.pixels.shape[2] == 1 else picture.pixels
-    primaries, transfer = _numbers(facts) or (_UNSPECIFIED, _UNSPECIFIED)
+    primaries, transfer = _numbers(facts) or (UNSPECIFIED, UNSPECIFIED)
     stream = bytes(
         imagecodecs.avif_encode(
             np.ascontiguousarray(plain),
@@ -185,7 +137,7 @@ def write_avif(picture: Picture, profile: bytes | None, *, quality: int | None) 
 def _numbers(facts: Mapping[str, Any]) -> tuple[int, int] | None:
     """Return the primaries and transfer that the source stated, if it did."""
     numbers = facts.get("numbers")
-    if not isinstance(numbers, tuple) or numbers[:2] == (_UNSPECIFIED, _UNSPECIFIED):
+    if not isinstance(numbers, tuple) or numbers[:2] == (UNSPECIFIED, UNSPECIFIED):
         return None
     return int(numbers[0]), int(numbers[1])
 
@@ -204,7 +156,7 @@ def _spliced(stream: bytes, metadata: Metadata, profile: bytes | None, facts: Ma
     references = items.references
     for kind, content, body in (
         (b"Exif", b"", bytes(4) + metadata.exif if metadata.exif else b""),
-        (b"mime", _XMP_TYPE, metadata.xmp),
+        (b"mime", XMP_TYPE, metadata.xmp),
     ):
         if body:
             number = max(held) + 1

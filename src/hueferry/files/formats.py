@@ -12,7 +12,17 @@ import attrs
 
 from hueferry.files import sniff as signs
 from hueferry.files.codec import Codec, LoadCodec
-from hueferry.files.load import load_avif, load_jpeg, load_jxl, load_png, load_tiff, load_webp
+from hueferry.files.load import (
+    load_avif,
+    load_exr,
+    load_hdr,
+    load_heic,
+    load_jpeg,
+    load_jxl,
+    load_png,
+    load_tiff,
+    load_webp,
+)
 
 _ALL = frozenset({"profile", "exif", "xmp"})
 
@@ -34,8 +44,9 @@ class Format:
         alpha: whether it holds alpha.
         gray: whether it holds gray as such.
         lossless: whether pictures come back to the bit by default; if not, at least 45 dB.
-        keeps: what comes back as it was: "profile", "exif", "xmp", "iptc".
+        keeps: what comes back as it was: "profile", "exif", "xmp", "iptc", …
         turn: where it states its orientation.
+        scene_linear: whether it holds light that goes on beyond diffuse white, and nothing else.
         writes: whether it is written.
         needs: the module of an optional package without which it is not read, or an empty string.
         extra: the name under which hueferry's installation brings that package.
@@ -53,6 +64,7 @@ class Format:
     lossless: bool
     keeps: frozenset[str]
     turn: Turn = "exif"
+    scene_linear: bool = False
     writes: bool = True
     needs: str = ""
     extra: str = ""
@@ -158,6 +170,55 @@ FORMATS: Mapping[str, Format] = MappingProxyType(
                 needs="pyjpegxl",
                 extra="jxl",
                 remark="lossless, unless a quality is given; turned upright, since its turn is not EXIF's",
+            ),
+            Format(
+                "exr",
+                "OpenEXR",
+                (".exr",),
+                signs.starts(b"\x76\x2f\x31\x01"),
+                load_exr,
+                depths=(32,),
+                alpha=True,
+                gray=True,
+                lossless=True,
+                keeps=frozenset({"attributes"}),
+                turn="upright",
+                scene_linear=True,
+                needs="OpenEXR",
+                extra="exr",
+                remark="one part of R, G, B or Y, with or without A, half or float; lossy packings become ZIP",
+            ),
+            Format(
+                "hdr",
+                "Radiance HDR",
+                (".hdr",),
+                signs.starts(b"#?RADIANCE", b"#?RGBE"),
+                load_hdr,
+                depths=(32,),
+                alpha=False,
+                gray=False,
+                lossless=True,
+                keeps=frozenset({"header lines"}),
+                turn="upright",
+                scene_linear=True,
+                remark="eight bits of mantissa a channel: what is changed is rounded to them",
+            ),
+            Format(
+                "heic",
+                "HEIC",
+                (".heic", ".heif", ".hif"),
+                signs.is_heic,
+                load_heic,
+                depths=(8, 10, 12),
+                alpha=True,
+                gray=False,
+                lossless=False,
+                keeps=_ALL,
+                turn="upright",
+                writes=False,
+                needs="pi_heif",
+                extra="heic",
+                remark="read only, upright; its encoders are under the GPL: write AVIF, which is built alike",
             ),
         )
     }

@@ -68,3 +68,27 @@ def load_jxl() -> Codec:
     from hueferry.files.jxl import read_jxl, write_jxl
 
     return Codec(read_jxl, write_jxl)
+
+
+def load_exr() -> Codec:
+    """OpenEXR."""
+    from hueferry.files.exr import read_exr, write_exr
+
+    return Codec(read_exr, lambda picture, *_, **__: write_exr(picture))
+
+
+def load_hdr() -> Codec:
+    """Radiance HDR."""
+    from hueferry.files.hdr import read_hdr, write_hdr
+
+    return Codec(
+        lambda path, data, **_: read_hdr(path, data),
+        lambda picture, *_, **__: write_hdr(picture),
+    )
+
+
+def load_heic() -> Codec:
+    """HEIC, which is read only."""
+    from hueferry.files.heic import read_heic
+
+    return Codec(read_heic, None)

@@ -12,10 +12,12 @@ from types import MappingProxyType
 import attrs
 import numpy as np
 
+from hueferry.colour.scene import is_scene_linear
 from hueferry.errors import HueferryError, InputError, OutputError
 from hueferry.files.atomic import write_bytes
 from hueferry.files.exif import with_orientation
 from hueferry.files.formats import FORMATS, Format, codec, missing, named
+from hueferry.files.light import light_of
 from hueferry.files.thumbnail import upright
 from hueferry.picture import Picture
 
@@ -37,20 +39,26 @@ def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int
     """
     format_ = named(path)
     if format_ is None:
+        readable = next((one for one in FORMATS.values() if path.suffix.lower() in one.suffixes), None)
+        if readable is not None:
+            raise OutputError(path, f"{readable.title} is not written ({readable.remark})")
         usual = [one.suffixes[0] for one in FORMATS.values() if one.writes]
         raise OutputError(path, f"the suffix names no format; use {', '.join(usual[:-1])} or {usual[-1]}")
     if picture.path is not None and path.exists() and picture.path.exists() and path.samefile(picture.path):
         raise OutputError(path, "this is the original; choose another folder")
     _check_holds(path, picture, format_)
-    shown = fitted(picture, format_)
-    data = encode(shown, format_.name, quality=quality)
-    return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, shown, format_.name))
+    data = encode(picture, format_.name, quality=quality)
+    shape = fitted(picture, format_).shape
+    return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, shape, format_.name))
 
 
 def _check_holds(path: Path, picture: Picture, format_: Format) -> None:
     lacking = missing(format_)
     if lacking:
         raise OutputError(path, lacking)
+    if format_.scene_linear and not is_scene_linear(picture.encoding):
+        reason = f"{format_.title} holds scene-linear light and the picture is coded in {picture.encoding.name}"
+        raise OutputError(path, f"{reason}; write {_titles(lambda one: not one.scene_linear)} instead")
     is_float = picture.pixels.dtype == np.float32
     if is_float and 32 not in format_.depths:
         others = _titles(lambda one: 32 in one.depths)
@@ -76,20 +84,31 @@ def _depth(format_: Format, bits: int) -> int | None:
 
 def encode(picture: Picture, format_: str, *, quality: int | None = None) -> bytes:
     """Return the file of a picture in a format that can hold it."""
-    profile = picture.encoding.profile
-    if profile is None:
-        from hueferry.colour.make_profile import profile_of
-
-        profile = profile_of(picture.encoding)
     write_format = codec(format_).write
     if write_format is None:
         raise InputError(f"{FORMATS[format_].title} is read only; name another format")
-    return write_format(fitted(picture, FORMATS[format_]), profile, quality=quality)
+    stored = fitted(picture, FORMATS[format_])
+    profile = stored.encoding.profile
+    if profile is None and not FORMATS[format_].scene_linear:
+        from hueferry.colour.make_profile import profile_of
+
+        profile = profile_of(stored.encoding)
+    return write_format(stored, profile, quality=quality)
 
 
 def fitted(picture: Picture, format_: Format) -> Picture:
     """Return the picture as a format stores it: at a depth that it has, and upright where it keeps no orientation."""
-    return _at_depth(_turned(picture, format_), format_)
+    return _at_depth(_turned(_as_light(picture, format_), format_), format_)
+
+
+def _as_light(picture: Picture, format_: Format) -> Picture:
+    """Return light itself, for a float format that states it by a profile of straight curves."""
+    from hueferry.colour.scene import SceneLinear
+
+    encoding = picture.encoding
+    if format_.scene_linear or not isinstance(encoding, SceneLinear):
+        return picture
+    return attrs.evolve(picture, pixels=light_of(picture, associated=False), encoding=encoding.light)
 
 
 def _turned(picture: Picture, format_: Format) -> Picture:
@@ -116,14 +135,14 @@ def _at_depth(picture: Picture, format_: Format) -> Picture:
     return attrs.evolve(picture, pixels=codes.astype(np.uint8 if depth == 8 else np.uint16), bits=depth)
 
 
-def _verify(made: Path, path: Path, picture: Picture, format_: str) -> None:
+def _verify(made: Path, path: Path, wanted: tuple[int, int], format_: str) -> None:
     """Look at the written file with a second decoder: format, size, and that every pixel can be decoded."""
     look: Callable[[Path], tuple[tuple[int, int], str]] = _SECOND.get(format_, _read_again)
     try:
         shape, kind = look(made)
     except (HueferryError, OSError, SyntaxError, ValueError, RuntimeError) as error:
         raise OutputError(path, f"the file that was written cannot be read again: {error}") from error
-    if shape != picture.shape or kind != format_:
+    if shape != wanted or kind != format_:
         raise OutputError(path, f"the file that was written came back as {kind} of {shape}")
 
 

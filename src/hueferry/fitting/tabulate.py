@@ -6,8 +6,10 @@ import attrs
 import numpy as np
 
 from hueferry.colour.difference import delta_e_2000
+from hueferry.colour.scene import is_scene_linear
 from hueferry.colour.spaces import oklab_to_lab, oklab_to_xyz, xyz_to_oklab
-from hueferry.fitting.settings import Settings
+from hueferry.fitting.settings import Aim, Settings
+from hueferry.maps.beyond import BeyondWhite
 from hueferry.maps.compose import Partial
 from hueferry.maps.protocol import Map
 from hueferry.palettes.palette import Palette
@@ -47,6 +49,8 @@ def tabulate(wanted: Map, encoding: Encoding, palette: Palette, settings: Settin
         settings: strength, gain cap and table size.
         bits: significant bits a channel of the picture.
     """
+    if settings.aim is Aim.AGREE and is_scene_linear(encoding):
+        wanted = BeyondWhite(wanted)
     map_ = wanted if settings.strength == 1.0 else Partial(wanted, settings.strength)
     made = make_table(
         map_,
