@@ -34,7 +34,7 @@ def look_up(table: Table, codes: Codes) -> Codes:
     lattice = table.lattice.astype(np.float64).reshape(-1, 3)
     for start in range(0, len(flat), _BLOCK):
         block = slice(start, start + _BLOCK)
-        result[block] = _interpolate(lattice, table.size, lattice_positions(table, flat[block]))
+        result[block] = tetrahedral(lattice, table.size, lattice_positions(table, flat[block]))
     return result.reshape(codes.shape)
 
 
@@ -58,7 +58,14 @@ def node_codes(table_size: int, curves: NDArray[np.float32] | None) -> NDArray[n
     return np.stack([np.interp(even, curve.astype(np.float64), knots) for curve in curves])
 
 
-def _interpolate(lattice: Codes, size: int, positions: Codes) -> Codes:
+def tetrahedral(lattice: Codes, size: int, positions: Codes) -> Codes:
+    """Read a lattice by tetrahedral interpolation.
+
+    Args:
+        lattice: (size³, 3) values, the third channel changing fastest.
+        size: nodes along each axis.
+        positions: (n, 3), in steps between nodes, 0 … size − 1.
+    """
     cell = np.minimum(positions.astype(np.int64), size - 2)
     fractions = positions - cell
     strides = np.array([size * size, size, 1])

@@ -18,13 +18,13 @@ def _frozen_float32(array: object) -> NDArray[np.float32]:
 
 @attrs.frozen(eq=False)
 class Table:
-    """A lattice read by tetrahedral interpolation, after one increasing curve a channel.
+    """A lattice read by tetrahedral interpolation, after one curve a channel that never falls.
 
     Attributes:
         lattice: (n, n, n, 3) float32 output codes, 0 … 1 with room beyond (results are clipped after interpolation);
             indexed [red, green, blue]; 2 <= n <= 129, all finite.
-        curves: (3, k) float32 input curves over k equal steps of 0 … 1, each increasing from 0 to 1, read by linear
-            interpolation; None where the lattice is spaced evenly in code values.
+        curves: (3, k) float32 input curves over k equal steps of 0 … 1, none falling anywhere, from 0 to 1, read by
+            linear interpolation; None where the lattice is spaced evenly in code values.
     """
 
     lattice: Lattice = attrs.field(converter=_frozen_float32)
@@ -44,8 +44,8 @@ class Table:
             return
         if value.ndim != 2 or value.shape[0] != 3 or value.shape[1] < 2:
             raise InputError(f"input curves are (3, k) with k >= 2, not {value.shape}")
-        if not (np.diff(value, axis=1) > 0).all() or (value[:, 0] != 0).any() or (value[:, -1] != 1).any():
-            raise InputError("input curves must increase from 0 to 1")
+        if not (np.diff(value, axis=1) >= 0).all() or (value[:, 0] != 0).any() or (value[:, -1] != 1).any():
+            raise InputError("input curves must rise from 0 to 1")
 
     @property
     def size(self) -> int:
