@@ -18,6 +18,7 @@ from hueferry.fitting.settings import Settings
 from hueferry.record.record import Failure, Record
 from hueferry.series.match import MatchOrder, OnDone, OnPlan
 from hueferry.tables.certificate import Certificate
+from hueferry.tables.saved_map import SavedMap
 
 SAMPLE_FOLDER = Path("sample_images")
 
@@ -224,9 +225,23 @@ def fit_file(picture: Path, *, to: Sequence[Path], out: Path, settings: Settings
 
 
 def apply_file(
-    map_file: Path, pictures: Sequence[Path], *, out: Path, overwrite: bool = False
+    map_file: Path,
+    pictures: Sequence[Path],
+    *,
+    out: Path,
+    correction: str | None = None,
+    on_map: Callable[[SavedMap], None] | None = None,
+    overwrite: bool = False,
 ) -> tuple[list[Path], list[Failure]]:
     """Send pictures and folders of pictures through a saved map; what cannot be done is a `Failure`.
+
+    Args:
+        map_file: the map: CLF of ours or of others, or a decision list.
+        pictures: pictures and folders of pictures.
+        out: folder of the results.
+        correction: id of the correction, in a file with several.
+        on_map: called with the map before any picture is read.
+        overwrite: replace earlier results.
 
     Raises:
         MapFileError: the map cannot be used.
@@ -234,9 +249,12 @@ def apply_file(
     """
     from hueferry.files.walk import find_pictures
     from hueferry.series.plan import plan_errands
-    from hueferry.tables.clf import read_clf
+    from hueferry.tables.saved_map import read_map
 
-    table = read_clf(map_file)
+    saved = read_map(map_file, correction=correction)
+    if on_map is not None:
+        on_map(saved)
+    table = saved.table
     written, failures = [], []
     for errand in plan_errands(pictures, out, find=find_pictures):
         try:
@@ -248,8 +266,26 @@ def apply_file(
     return written, failures
 
 
-def check_map(map_file: Path) -> Certificate:
-    """Return the certificate of a saved map from its file alone: every cell counts as occupied, codes as sRGB.
+@attrs.frozen(eq=False)
+class CheckedMap:
+    """A saved map and what was measured on it.
+
+    Attributes:
+        saved: the map.
+        certificate: measured on its table; every cell counts as occupied, and codes as sRGB.
+    """
+
+    saved: SavedMap
+    certificate: Certificate
+
+    @property
+    def sentences(self) -> tuple[str, ...]:
+        """What a person should know of it."""
+        return (*self.saved.sentences, *self.certificate.sentences())
+
+
+def check_map(map_file: Path, *, correction: str | None = None) -> CheckedMap:
+    """Measure a saved map from its file alone.
 
     Raises:
         MapFileError: the map cannot be used.
@@ -257,11 +293,12 @@ def check_map(map_file: Path) -> Certificate:
     from hueferry.colour.encoding import SRGB
     from hueferry.tables.cells import Occupied
     from hueferry.tables.certificate import certify
-    from hueferry.tables.clf import read_clf
+    from hueferry.tables.saved_map import read_map
 
     grid = np.stack(np.meshgrid(*[np.linspace(0.0, 1.0, 33)] * 3, indexing="ij"), axis=-1).reshape(-1, 3)
     everywhere = Occupied(grid, np.full(len(grid), 1 / len(grid)))
-    return certify(read_clf(map_file), occupied=everywhere, encoding=SRGB)
+    saved = read_map(map_file, correction=correction)
+    return CheckedMap(saved, certify(saved.table, occupied=everywhere, encoding=SRGB))
 
 
 def check_folder(folder: Path, *, recreated: str | None = None) -> list[str]:

@@ -127,7 +127,11 @@ def _own(path: Path, root: Element) -> Table:
     if process.names not in (("LUT3D",), ("LUT1D", "LUT3D")):
         raise MapFileError(path, "it says that it is a map of ours, but its nodes are " + ", ".join(process.names))
     curves, lattice = (None, *process.operations)[-2:]
-    if not isinstance(lattice, Cube) or not lattice.is_tetrahedral or not (curves is None or isinstance(curves, Curves)):
+    if (
+        not isinstance(lattice, Cube)
+        or not lattice.is_tetrahedral
+        or not (curves is None or isinstance(curves, Curves))
+    ):
         raise MapFileError(path, "it says that it is a map of ours, but is to be read in another way")
     try:
         table = Table(lattice.lattice, None if curves is None else curves.values.T)

@@ -151,7 +151,9 @@ def _before_cube(process: ProcessList) -> Iterator[Placing]:
     even = np.linspace(0.0, 1.0, cube.size)
     own = [np.concatenate([[a], even[(even > a + 1e-9) & (even < b - 1e-9)], [b]]) for a, b in within]
     steps = max(len(nodes) for nodes in own) - 1
-    for parts in range(1, (_LARGEST_SIZE - 1) // steps + 1):
+    for parts in sorted({1, 2, 4, (_LARGEST_SIZE - 1) // steps}):
+        if parts * steps >= _LARGEST_SIZE:
+            break
         red, green, blue = (_split(_filled(nodes, steps), parts) for nodes in own)
         knots = {2} if not head else {*lengths, _KNOTS, 65536}
         for count in sorted(knots):

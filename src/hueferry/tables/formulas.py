@@ -64,6 +64,14 @@ class Power:
         return np.where(values >= 0, risen, negative)
 
 
+def _above_one(exponent: float) -> float:
+    return max(exponent, _NEAR_ONE)
+
+
+def _above_zero(offset: float) -> float:
+    return max(offset, _NEAR_ZERO)
+
+
 @attrs.frozen
 class Joined:
     """A power law with a straight part near black, such as those of IEC 61966-2-1 and Rec. ITU-R BT.709.
@@ -75,8 +83,8 @@ class Joined:
         mirrored: negative values give the mirror image, else they follow the straight part.
     """
 
-    exponent: float = attrs.field(converter=lambda value: max(float(value), _NEAR_ONE))
-    offset: float = attrs.field(converter=lambda value: max(float(value), _NEAR_ZERO))
+    exponent: float = attrs.field(converter=_above_one)
+    offset: float = attrs.field(converter=_above_zero)
     forward: bool
     mirrored: bool
 

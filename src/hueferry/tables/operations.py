@@ -118,7 +118,9 @@ class HalfCurves:
         other = np.clip(np.nextafter(nearest, towards), np.float16(-_LARGEST_HALF), np.float16(_LARGEST_HALF))
         span = other.astype(np.float64) - value
         share = np.divide(held - value, span, out=np.zeros_like(held), where=span != 0)
-        at, beside = (np.take_along_axis(self.values, half.view(np.uint16).astype(np.int64), 0) for half in (nearest, other))
+        at, beside = (
+            np.take_along_axis(self.values, half.view(np.uint16).astype(np.int64), 0) for half in (nearest, other)
+        )
         return np.asarray(at + share * (beside - at))
 
 

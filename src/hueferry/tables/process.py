@@ -142,7 +142,8 @@ def process_of(path: Path, root: Element) -> ProcessList:
         depths = [_depth(path, node, which) for which in ("inBitDepth", "outBitDepth")]
         if expected is not None and depths[0] != expected:
             raise MapFileError(
-                path, f"its {local_name(node)} reads {depths[0]}, but the node before writes {expected}; they must agree"
+                path,
+                f"its {local_name(node)} reads {depths[0]}, but the node before writes {expected}; they must agree",
             )
         expected = depths[1]
         operations.append(READERS[local_name(node)](path, node, SCALES[depths[0]], SCALES[depths[1]]))
@@ -168,7 +169,9 @@ def _check_node(path: Path, node: Element) -> None:
         raise MapFileError(path, f"it holds {name[:40]!r}, which the standard does not define; it defines {known}")
     strange = sorted(set(node.keys()) - _ATTRIBUTES - _OWN_ATTRIBUTES[name])
     if strange:
-        raise MapFileError(path, f"its {name} has the attribute {strange[0][:40]!r}, which the standard does not define")
+        raise MapFileError(
+            path, f"its {name} has the attribute {strange[0][:40]!r}, which the standard does not define"
+        )
     found = [local_name(child) for child in node]
     strange = sorted(set(found) - _CHILDREN[name] - {"Description"})
     if strange:
@@ -182,6 +185,6 @@ def _check_node(path: Path, node: Element) -> None:
 
 def _depth(path: Path, node: Element, which: str) -> str:
     depth = node.get(which)
-    if depth not in SCALES:
+    if depth is None or depth not in SCALES:
         raise MapFileError(path, f"its {local_name(node)} has {which} {depth!r}; it must be one of {', '.join(SCALES)}")
     return depth

@@ -56,9 +56,7 @@ def read_range(path: Path, node: Element, reads: float, writes: float) -> Operat
     return Range(scale, offset) if style == "noclamp" else Range(scale, offset, low[1], high[1])
 
 
-def _one_sided(
-    path: Path, low: tuple[float, float] | None, high: tuple[float, float] | None, style: str
-) -> Operation:
+def _one_sided(path: Path, low: tuple[float, float] | None, high: tuple[float, float] | None, style: str) -> Operation:
     if style == "noclamp":
         raise MapFileError(path, "its Range has one pair of values and does not clamp; the standard forbids that")
     read, written = low or high or (0.0, 0.0)

@@ -84,7 +84,9 @@ def _log_curve(path: Path, parameters: Element, *, is_camera: bool) -> LogCurve:
     given = {name: attribute_number(path, parameters, name) for name in _LOG if parameters.get(name) is not None}
     curve = LogCurve(**{_LOG[name]: value for name, value in given.items()})
     if curve.base <= 0 or curve.base == 1 or 0 in (curve.log_slope, curve.lin_slope, curve.straight_slope):
-        raise MapFileError(path, "its Log has a base or a slope that leaves no logarithm: bases > 0, not 1; slopes not 0")
+        raise MapFileError(
+            path, "its Log has a base or a slope that leaves no logarithm: bases > 0, not 1; slopes not 0"
+        )
     if is_camera and curve.lin_slope * (curve.lin_break or 0.0) + curve.lin_offset <= 0:
         raise MapFileError(path, "its Log has a break where the logarithm does not exist")
     return curve
@@ -110,7 +112,8 @@ def _check_known(path: Path, parameters: Element, known: frozenset[str]) -> None
     strange = sorted(set(parameters.keys()) - known)
     if strange:
         raise MapFileError(
-            path, f"its {local_name(parameters)} has the attribute {strange[0][:40]!r}, which this style does not define"
+            path,
+            f"its {local_name(parameters)} has the attribute {strange[0][:40]!r}, which this style does not define",
         )
 
 

@@ -8,6 +8,7 @@ is the function itself, read linearly between the knots of the curves.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -84,7 +85,7 @@ def _cut_into(cuts: list[int], steps: int) -> list[int]:
 def _curve(values: Line, cuts: list[int]) -> Line:
     """Return where in the lattice each knot lies, 0 … 1."""
     curve = np.empty(len(values))
-    for step, (start, end) in enumerate(zip(cuts[:-1], cuts[1:], strict=True)):
+    for step, (start, end) in enumerate(pairwise(cuts)):
         part, rise = values[start : end + 1], values[end] - values[start]
         share = (part - values[start]) / rise if rise != 0 else np.linspace(0.0, 1.0, len(part))
         curve[start : end + 1] = step + np.clip(share, 0.0, 1.0)
