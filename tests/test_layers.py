@@ -32,6 +32,7 @@ LAYERS = (
     "drift",
     "reports",
     "api",
+    "map_jobs",
     "jobs",
     "cli",
 )

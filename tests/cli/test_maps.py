@@ -68,3 +68,46 @@ def test_a_map_that_is_none_is_the_callers_fault(place: Path, capsys: pytest.Cap
     assert run(["fit", str(place / "plain.png"), "--to", str(place / "warm.png"), "--out", str(place / "m.txt")]) == 2
     assert "m.clf" in capsys.readouterr().err
     assert not (place / "o").exists()
+
+
+CURVE = """<?xml version="1.0" encoding="UTF-8"?>
+<ProcessList id="curve" compCLFversion="3.0">
+  <Exponent inBitDepth="32f" outBitDepth="32f" style="monCurveFwd">
+    <ExponentParams exponent="2.4" offset="0.055"/>
+  </Exponent>
+</ProcessList>
+"""
+GRADE = """<ColorCorrectionCollection xmlns="urn:ASC:CDL:v1.01">
+  <ColorCorrection id="same"/>
+  <ColorCorrection id="half"><SOPNode>
+    <Slope>.5 .5 .5</Slope><Offset>0 0 0</Offset><Power>1 1 1</Power></SOPNode>
+  </ColorCorrection>
+</ColorCorrectionCollection>
+"""
+
+
+def test_process_lists_of_others_are_applied_and_checked(place: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """The decoding curve of IEC 61966-2-1 gives every 8-bit code its linear light, rounded."""
+    (place / "curve.clf").write_text(CURVE, encoding="utf-8")
+
+    assert run(["apply", str(place / "curve.clf"), str(place / "plain.png"), "--out", str(place / "o")]) == 0
+    assert "exact within 32-bit rounding" in capsys.readouterr().err
+    assert run(["check", str(place / "curve.clf"), "--json"]) == 0
+    assert json.loads(capsys.readouterr().out)["misfit"]["largest"] < 5e-4
+
+    codes = photograph("china") / 255
+    light = np.where(codes <= 0.04045, codes / 12.92, ((codes + 0.055) / 1.055) ** 2.4)
+    assert np.abs(np.asarray(Image.open(place / "o/plain.png")) - 255 * light).max() <= 0.502
+
+
+def test_a_correction_of_a_collection_is_applied(place: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    grades, plain = place / "grades.ccc", str(place / "plain.png")
+    grades.write_text(GRADE, encoding="utf-8")
+
+    assert run(["apply", str(grades), plain, "--out", str(place / "none")]) == 2
+    assert "choose one by its id: 'same', 'half'" in capsys.readouterr().err
+    for name, factor in (("same", 1.0), ("half", 0.5)):
+        assert run(["apply", str(grades), plain, "--correction", name, "--out", str(place / name)]) == 0
+        result = np.asarray(Image.open(place / name / "plain.png"))
+        assert np.abs(result - factor * photograph("china")).max() <= 0.501
+    assert run(["check", str(grades), "--correction", "half"]) == 0

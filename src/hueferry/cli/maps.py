@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
@@ -11,10 +11,19 @@ from hueferry.cli import options
 from hueferry.cli.terminal import remark, show_json, show_lines
 from hueferry.fitting.settings import Aim, Settings
 
+if TYPE_CHECKING:
+    from hueferry.tables.saved_map import SavedMap
+
 DIFFERS = 1
 NOTHING_WRITTEN = 2
 
-MapFile = Annotated[Path, typer.Argument(help="A map in the Common LUT Format.", metavar="MAP.clf")]
+MapFile = Annotated[
+    Path,
+    typer.Argument(help="A map: Common LUT Format (.clf) or a decision list (.cc, .ccc, .cdl).", metavar="MAP.clf"),
+]
+Correction = Annotated[
+    str | None, typer.Option("--correction", help="Id of the correction in a file with several.", metavar="ID")
+]
 
 
 def fit(
@@ -35,7 +44,7 @@ def fit(
     """Find the map that brings PICTURE towards its references, and save it; no picture is written."""
     chosen = options.parse_method(method)
 
-    from hueferry.jobs import fit_file
+    from hueferry.map_jobs import fit_file
 
     settings = Settings(
         aim=aim,
@@ -58,13 +67,16 @@ def apply(
     pictures: options.Pictures,
     out: options.Out,
     *,
+    correction: Correction = None,
     json: options.Json = False,
     overwrite: options.Overwrite = False,
 ) -> None:
     """Send pictures through a saved map; nothing is measured or fitted."""
-    from hueferry.jobs import apply_file
+    from hueferry.map_jobs import apply_file
 
-    written, failures = apply_file(map_file, pictures, out=out, overwrite=overwrite)
+    written, failures = apply_file(
+        map_file, pictures, out=out, correction=correction, on_map=_say_misfit, overwrite=overwrite
+    )
     if json:
         show_json(
             {
@@ -81,9 +93,15 @@ def apply(
         raise typer.Exit(DIFFERS if written else NOTHING_WRITTEN)
 
 
+def _say_misfit(saved: SavedMap) -> None:
+    for sentence in saved.sentences:
+        remark(sentence)
+
+
 def check(
     target: Annotated[Path, typer.Argument(help="A map, or the folder of a run.", metavar="MAP.clf|DIR")],
     *,
+    correction: Correction = None,
     recreate: Annotated[
         str | None,
         typer.Option("--recreate", help="Make this result of the run again and compare its bytes.", metavar="NAME"),
@@ -91,9 +109,9 @@ def check(
     json: options.Json = False,
 ) -> None:
     """Certify a map from its file alone, or verify every file of a run against its record."""
-    from hueferry.jobs import check_folder, check_map
-
     if target.is_dir():
+        from hueferry.jobs import check_folder
+
         complaints = check_folder(target, recreated=recreate)
         if json:
             show_json({"schema": "hueferry/check-1", "differences": complaints})
@@ -104,12 +122,14 @@ def check(
         return
     if recreate is not None:
         raise typer.BadParameter("--recreate is for the folder of a run")
-    certificate = check_map(target)
+    from hueferry.map_jobs import check_map
+
+    checked = check_map(target, correction=correction)
     if json:
-        show_json({"schema": "hueferry/check-1", "certificate": certificate.as_dict()})
+        show_json({"schema": "hueferry/check-1", **checked.as_dict()})
     else:
-        show_lines(certificate.sentences())
-    if certificate.folds:
+        show_lines(checked.sentences)
+    if checked.certificate.folds:
         raise typer.Exit(DIFFERS)
 
 

@@ -1,0 +1,128 @@
+"""The whole jobs around saved maps: find one, use it again, measure it."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from pathlib import Path
+from typing import Any
+
+import attrs
+import numpy as np
+
+from hueferry.api import apply, as_reference, read, write
+from hueferry.errors import HueferryError, InputError
+from hueferry.fitting.fit import Fit, fit_picture
+from hueferry.fitting.settings import Settings
+from hueferry.record.record import Failure
+from hueferry.tables.certificate import Certificate
+from hueferry.tables.saved_map import SavedMap
+
+
+def fit_file(picture: Path, *, to: Sequence[Path], out: Path, settings: Settings, overwrite: bool = False) -> Fit:
+    """Find the map that brings a picture towards its references and save it as CLF.
+
+    Raises:
+        InputError: a picture cannot be read, or the map cannot be written.
+    """
+    from hueferry.files.atomic import write_bytes
+    from hueferry.tables.clf import clf_text
+
+    if out.suffix.lower() != ".clf":
+        raise InputError(f"{out}: a map is saved as .clf")
+    source = read(picture)
+    fitted = fit_picture(source, [as_reference(path) for path in to], settings)
+    facts = {
+        "picture": picture.name,
+        "reference": ", ".join(path.name for path in to),
+        "aim": settings.aim.value,
+        "certificate": "; ".join(fitted.certificate.sentences()),
+        "evidence": fitted.evidence.decision,
+    }
+    text = clf_text(fitted.table, encoding=source.encoding.name, facts=facts)
+    write_bytes(out, text.encode("utf-8"), overwrite=overwrite)
+    return fitted
+
+
+def apply_file(
+    map_file: Path,
+    pictures: Sequence[Path],
+    *,
+    out: Path,
+    correction: str | None = None,
+    on_map: Callable[[SavedMap], None] | None = None,
+    overwrite: bool = False,
+) -> tuple[list[Path], list[Failure]]:
+    """Send pictures and folders of pictures through a saved map; what cannot be done is a `Failure`.
+
+    Args:
+        map_file: the map: CLF of ours or of others, or a decision list.
+        pictures: pictures and folders of pictures.
+        out: folder of the results.
+        correction: id of the correction, in a file with several.
+        on_map: called with the map before any picture is read.
+        overwrite: replace earlier results.
+
+    Raises:
+        MapFileError: the map cannot be used.
+        InputError: there is no picture.
+    """
+    from hueferry.files.walk import find_pictures
+    from hueferry.series.plan import plan_errands
+    from hueferry.tables.saved_map import read_map
+
+    saved = read_map(map_file, correction=correction)
+    if on_map is not None:
+        on_map(saved)
+    table = saved.table
+    written, failures = [], []
+    for errand in plan_errands(pictures, out, find=find_pictures):
+        try:
+            result = apply(table, errand.source)
+            errand.output.parent.mkdir(parents=True, exist_ok=True)
+            written.append(write(result, errand.output, overwrite=overwrite))
+        except HueferryError as error:
+            failures.append(Failure(errand.source.as_posix(), str(error)))
+    return written, failures
+
+
+@attrs.frozen(eq=False)
+class CheckedMap:
+    """A saved map and what was measured on it.
+
+    Attributes:
+        saved: the map.
+        certificate: measured on its table; every cell counts as occupied, and codes as sRGB.
+    """
+
+    saved: SavedMap
+    certificate: Certificate
+
+    @property
+    def sentences(self) -> tuple[str, ...]:
+        """What a person should know of it."""
+        return (*self.saved.sentences, *self.certificate.sentences())
+
+    def as_dict(self) -> dict[str, Any]:
+        """Return certificate and misfit as JSON values."""
+        misfit = self.saved.misfit
+        return {
+            "certificate": self.certificate.as_dict(),
+            "misfit": None if misfit is None else attrs.asdict(misfit),
+        }
+
+
+def check_map(map_file: Path, *, correction: str | None = None) -> CheckedMap:
+    """Measure a saved map from its file alone.
+
+    Raises:
+        MapFileError: the map cannot be used.
+    """
+    from hueferry.colour.encoding import SRGB
+    from hueferry.tables.cells import Occupied
+    from hueferry.tables.certificate import certify
+    from hueferry.tables.saved_map import read_map
+
+    grid = np.stack(np.meshgrid(*[np.linspace(0.0, 1.0, 33)] * 3, indexing="ij"), axis=-1).reshape(-1, 3)
+    everywhere = Occupied(grid, np.full(len(grid), 1 / len(grid)))
+    saved = read_map(map_file, correction=correction)
+    return CheckedMap(saved, certify(saved.table, occupied=everywhere, encoding=SRGB))
