@@ -164,35 +164,33 @@ def stain_files(
     out: Path,
     to: Sequence[Path] = (),
     choices: Mapping[str, Any] | None = None,
+    on_plan: Callable[[str], None] | None = None,
     on_done: Callable[[Any], None] | None = None,
 ) -> Record:
     """Bring slides and folders of slides together; slides, overlays and a record are left in `out`.
 
+    What an earlier run has done there is taken over, if slides, settings, references and results are as they were.
+
     Args:
         slides: slides, and folders of slides.
         out: folder of the results.
-        to: reference slides; none means what the slides have in common.
-        choices: fields of `slides.run.StainSettings`, in plain words; "auto" for the packing chooses.
+        to: reference slides, or one saved house palette; none means what the slides have in common.
+        choices: fields of `slides.settings.StainSettings`, in plain words; "auto" for the packing chooses.
+        on_plan: called with a sentence on what an earlier run has done, if anything.
         on_done: called with each outcome.
 
     Raises:
         InputError: it cannot be done as asked.
     """
-    from hueferry.files.atomic import write_bytes
-    from hueferry.record.record import NAME, to_json
-    from hueferry.slides.record import record_of, settings_from_words
-    from hueferry.slides.run import stain
+    from hueferry.record.record import NAME
+    from hueferry.series.stain import StainOrder, seal_run, stain_slides
+    from hueferry.slides.settings import settings_from_words
 
-    words = dict(choices or {})
-    settings = settings_from_words(words)
-    if (out / NAME).exists() and not settings.overwrite:
-        raise InputError(f"{out / NAME} exists already; choose another folder, or add --overwrite")
-    results = stain(slides, to=to, out=out, settings=settings, on_done=on_done)
-    record = record_of(results, to=to, out=out, words=words)
-    if record.entries:
-        write_bytes(out / NAME, to_json(record).encode(), overwrite=True)
-        report(out)
-    return record
+    order = StainOrder(inputs=slides, to=to, out=out, settings=settings_from_words(choices or {}))
+    run = stain_slides(order, on_plan=on_plan, on_done=on_done)
+    if run.record.entries and not run.unchanged:
+        seal_run(order, run.schedule, [out / NAME, report(out)])
+    return run.record
 
 
 def check_folder(folder: Path, *, recreated: str | None = None) -> list[str]:
@@ -214,7 +212,7 @@ def check_folder(folder: Path, *, recreated: str | None = None) -> list[str]:
     complaints = []
     for kind, facts in (("output", outputs), ("input", inputs)):
         for path, fact in facts:
-            if not path.is_file():
+            if not path.exists():
                 complaints.append(f"{kind} {path} is gone")
             elif fact["sha256"] and FileFact.of(path).sha256 != fact["sha256"]:
                 complaints.append(f"{kind} {path} differs from the record")
@@ -257,7 +255,7 @@ def house_palette_file(
     from hueferry.slides.gather import reference_from
     from hueferry.slides.house import SUFFIX, house_text
     from hueferry.slides.readers import find_slides
-    from hueferry.slides.record import settings_from_words
+    from hueferry.slides.settings import settings_from_words
 
     if out.suffix.lower() != SUFFIX:
         raise OutputError(out, f"a house palette of slides is saved as JSON text; let its name end in {SUFFIX}")

@@ -70,7 +70,7 @@ def test_measuring_writes_no_slide(slides: Path, capsys: pytest.CaptureFixture[s
     assert code == 0
     assert record["entries"][0]["output"] is None
     assert record["entries"][0]["numbers"]["before"]["tissue_share"] > 0.3
-    assert sorted(path.name for path in out.iterdir()) == ["record.json", "report.html"]
+    assert sorted(path.name for path in out.iterdir()) == [".hueferry", "record.json", "report.html"]
 
 
 @pytest.mark.parametrize(

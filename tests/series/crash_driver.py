@@ -1,7 +1,8 @@
-"""Runs a match again and again and kills it at one of its own steps: `crash_driver.py PICTURES HERO OUT SEED COUNT`.
+"""Runs a job again and again and kills it at one of its steps: `crash_driver.py JOB INPUTS REFERENCE OUT SEED COUNT`.
 
-Every opening, renaming, linking and removing of a file is a step (PEP 578). The run is begun anew in the same folder
-after each kill; what has a final name must be whole at any time. Prints one JSON object.
+Every opening, renaming, linking and removing of a file is a step (PEP 578), and so is a window read of a slide. The
+run is begun anew in the same folder after each kill; what has a final name must be whole at any time. Prints one
+JSON object.
 """
 
 from __future__ import annotations
@@ -12,17 +13,52 @@ import random
 import shutil
 import signal
 import sys
+from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 
+from hueferry.arrays import Pixels
 from hueferry.fitting.settings import Aim, Settings
-from hueferry.jobs import match_files
+from hueferry.jobs import match_files, stain_files
 from hueferry.maps.method import Method
+from hueferry.picture import Window
 from hueferry.series.match import MatchOrder
+from hueferry.slides.tiff_reader import TiffSlide
 
-STEPS = frozenset({"open", "os.rename", "os.link", "os.remove", "os.mkdir", "os.rmdir", "sqlite3.connect"})
+STEPS = frozenset(
+    {"open", "os.rename", "os.link", "os.remove", "os.mkdir", "os.rmdir", "sqlite3.connect", "slide.read"}
+)
 
 
-def run(order: MatchOrder, stop_at: int | None) -> int:
+Job = Callable[[Path, Path, Path], object]
+"""Does the inputs towards a reference, into a folder."""
+
+
+def match(inputs: Path, reference: Path, out: Path) -> object:
+    """Bring pictures together."""
+    quick = Settings(aim=Aim.ADOPT, method=Method.GAUSSIAN)
+    return match_files(MatchOrder(inputs=[inputs], to=[reference], out=out, settings=quick, workers=1))
+
+
+def stain(layout: str, inputs: Path, reference: Path, out: Path) -> object:
+    """Bring slides together."""
+    read = TiffSlide.read
+
+    def counted(self: TiffSlide, window: Window) -> Pixels:
+        sys.audit("slide.read", str(out))
+        return read(self, window)
+
+    TiffSlide.read = counted  # type: ignore[method-assign]  # in a process of its own
+    return stain_files([inputs], to=[reference], out=out, choices={"layout": layout, "threads": 1})
+
+
+JOBS: dict[str, Job] = {
+    "match": match,
+    **{f"stain-{layout}": partial(stain, layout) for layout in ("ome", "flat", "zarr")},
+}
+
+
+def run(job: Job, inputs: Path, reference: Path, out: Path, *, stop_at: int | None) -> int:
     """Run in a process that kills itself at step `stop_at`; return the number of steps, or -1 if it was killed."""
     ours, theirs = os.pipe()
     child = os.fork()
@@ -31,14 +67,14 @@ def run(order: MatchOrder, stop_at: int | None) -> int:
 
         def hook(event: str, arguments: tuple[object, ...]) -> None:
             nonlocal count
-            if event not in STEPS or not any(str(order.out) in str(one) for one in arguments):
+            if event not in STEPS or not any(str(out) in str(one) for one in arguments):
                 return
             count += 1
             if count == stop_at:
                 os.kill(os.getpid(), signal.SIGKILL)
 
         sys.addaudithook(hook)
-        match_files(order)
+        job(inputs, reference, out)
         os.write(theirs, str(count).encode())
         os._exit(0)
     os.close(theirs)
@@ -56,24 +92,23 @@ def final_files(out: Path) -> dict[str, bytes]:
 
 def main() -> None:
     """Kill and begin anew, and say what was seen."""
-    pictures, hero, out, seed, count = Path(sys.argv[1]), Path(sys.argv[2]), Path(sys.argv[3]), *map(int, sys.argv[4:6])
-    order = MatchOrder(
-        inputs=[pictures], to=[hero], out=out, settings=Settings(aim=Aim.ADOPT, method=Method.GAUSSIAN), workers=1
-    )
-    steps = run(order, None)
+    inputs, reference, out = map(Path, sys.argv[2:5])
+    seed, count = map(int, sys.argv[5:7])
+    attempt = partial(run, JOBS[sys.argv[1]], inputs, reference, out)
+    steps = attempt(stop_at=None)
     whole = final_files(out)
     shutil.rmtree(out)
     rng = random.Random(seed)  # noqa: S311 - moments, not secrets
     killed, broken, differing = 0, [], []
     while killed < count:
-        finished = run(order, rng.randint(1, steps)) != -1
+        finished = attempt(stop_at=rng.randint(1, steps)) != -1
         killed += not finished
         found = final_files(out) if out.exists() else {}
         broken += [name for name, data in found.items() if data != whole.get(name)]
         if finished:
             differing += sorted(whole.keys() - found.keys())
             shutil.rmtree(out)
-    run(order, None)
+    attempt(stop_at=None)
     differing += sorted(name for name, data in whole.items() if final_files(out).get(name) != data)
     left = [path.name for path in out.rglob("*") if path.name.startswith(("stage-", ".hueferry-"))]
     sys.stdout.write(

@@ -8,6 +8,7 @@ import subprocess
 import sys
 from collections.abc import Iterator
 from pathlib import Path
+from typing import Any
 
 import attrs
 import pytest
@@ -19,6 +20,7 @@ from hueferry.jobs import match_files
 from hueferry.maps.method import Method
 from hueferry.series.match import MatchOrder
 from photographs import in_other_light, photograph
+from slides.sections import rendered, save_slide
 
 DRIVER = Path(__file__).with_name("crash_driver.py")
 TESTS = Path(__file__).parents[1]
@@ -50,13 +52,17 @@ def small_disk(tmp_path: Path) -> Iterator[Path]:
     subprocess.run(["umount", str(disk)], check=True)
 
 
-def test_killed_at_twenty_random_moments(order: MatchOrder) -> None:
-    arguments = [str(order.inputs[0]), str(order.to[0]), str(order.out), "7", "20"]
+def drive(job: str, inputs: Path, reference: Path, out: Path, *, count: int) -> dict[str, Any]:
+    """Kill a job `count` times, and return what was seen."""
     environment = {**os.environ, "OPENBLAS_NUM_THREADS": "1", "PYTHONPATH": os.pathsep.join([*sys.path, str(TESTS)])}
+    words = [job, str(inputs), str(reference), str(out), "7", str(count)]
+    driven = subprocess.run([sys.executable, DRIVER, *words], capture_output=True, env=environment, check=True)
+    return dict(json.loads(driven.stdout))
 
-    driven = subprocess.run([sys.executable, DRIVER, *arguments], capture_output=True, env=environment, check=True)
 
-    seen = json.loads(driven.stdout)
+def test_killed_at_twenty_random_moments(order: MatchOrder) -> None:
+    seen = drive("match", order.inputs[0], order.to[0], order.out, count=20)
+
     assert seen["killed"] == 20
     assert seen["steps"] > 30
     assert seen["broken"] == []
@@ -84,3 +90,30 @@ def test_a_full_disk_is_one_sentence_and_the_rest_follows_when_there_is_room(
     assert half_written == []
     assert len(later.entries) == len(whole.entries) == 4
     assert not later.failures
+
+
+@pytest.mark.parametrize("layout", ["ome", "zarr"])
+def test_a_slide_killed_at_random_moments(layout: str, tmp_path: Path) -> None:
+    seen = drive(f"stain-{layout}", *slides(tmp_path, "a"), count=4)
+
+    assert seen.pop("killed") == 4
+    assert seen.pop("steps") > 30
+    assert not any(seen.values())
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("layout", ["ome", "flat", "zarr"])
+def test_slides_killed_at_twenty_random_moments(layout: str, tmp_path: Path) -> None:
+    seen = drive(f"stain-{layout}", *slides(tmp_path, "ab"), count=20)
+
+    assert seen.pop("killed") == 20
+    assert seen.pop("steps") > 30
+    assert not any(seen.values())
+
+
+def slides(folder: Path, names: str) -> tuple[Path, Path, Path]:
+    """Write small pyramids, and return their folder, a reference, and a folder for results."""
+    (folder / "slides").mkdir()
+    for number, name in enumerate(names):
+        save_slide(folder / "slides" / f"{name}.tif", rendered(11 + number, height=400, width=300))
+    return folder / "slides", save_slide(folder / "reference.tif", rendered(13, height=300, width=300)), folder / "out"

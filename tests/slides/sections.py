@@ -2,13 +2,23 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from pathlib import Path
+
 import attrs
 import numpy as np
 from numpy.typing import NDArray
 from scipy import ndimage
 
+from hueferry.colour.encoding import SRGB
+from hueferry.slides.codecs import Packing
+from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
+
 Planes = NDArray[np.float64]
 Pixels8 = NDArray[np.uint8]
+
+PITCH = (0.5, 0.5)
+"""Micrometres a pixel."""
 
 # Ruifrok & Johnston (2001), unit rows: haematoxylin, eosin, DAB.
 HED = np.array([[0.65, 0.70, 0.29], [0.07, 0.99, 0.11], [0.27, 0.57, 0.78]])
@@ -73,3 +83,15 @@ def restain(rng: np.random.Generator, stains: tuple[int, int], white: float) -> 
         np.exp(rng.normal(0, 0.06, 3)),
         np.full(3, white),
     )
+
+
+def bands_of(pixels: Pixels8) -> Iterator[Pixels8]:
+    """Cut pixels into bands, as slides are written."""
+    return (pixels[top : top + TILE] for top in range(0, pixels.shape[0], TILE))
+
+
+def save_slide(path: Path, pixels: Pixels8) -> Path:
+    """Write a pyramid without loss."""
+    form = SlideForm(pixels.shape[:2], pixels.dtype, SRGB, PITCH)
+    options = TiffOptions(layout=Layout.FLAT, packing=Packing.DEFLATE)
+    return write_tiff_slide(path, bands_of(pixels), form, options=options)

@@ -21,25 +21,13 @@ from hueferry.slides.fit import SlideAim
 from hueferry.slides.gather import reference_from
 from hueferry.slides.readers import find_slides, open_slide
 from hueferry.slides.reference import SlideReference
-from hueferry.slides.run import SlideFailure, SlideOutcome, measure_slide, stain, stain_slide
+from hueferry.slides.run import SlideOutcome, measure_slide, stain_slide
 from hueferry.slides.settings import Container, StainSettings
-from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
+from hueferry.slides.tiff_writer import SlideForm
 from hueferry.slides.zarr_writer import write_zarr_slide
-from slides.sections import HED, rendered, restain
+from slides.sections import HED, PITCH, bands_of, rendered, restain, save_slide
 
-PITCH = (0.5, 0.5)
 LOSSLESS = StainSettings(packing=Packing.DEFLATE)
-
-
-def bands_of(pixels: np.ndarray):
-    return (pixels[top : top + TILE] for top in range(0, pixels.shape[0], TILE))
-
-
-def save(path: Path, pixels: np.ndarray) -> Path:
-    form = SlideForm(pixels.shape[:2], pixels.dtype, SRGB, PITCH)
-    return write_tiff_slide(
-        path, bands_of(pixels), form, options=TiffOptions(layout=Layout.FLAT, packing=Packing.DEFLATE)
-    )
 
 
 @pytest.fixture(scope="module")
@@ -47,8 +35,8 @@ def slides(tmp_path_factory) -> tuple[Path, Path]:
     """A section, and another one of another staining run and scanner."""
     folder = tmp_path_factory.mktemp("slides")
     change = restain(np.random.default_rng(3), (0, 1), 0.95)
-    source = save(folder / "source.tif", rendered(11, height=600, width=700))
-    return source, save(folder / "reference.tif", change(rendered(12, height=600, width=700)))
+    source = save_slide(folder / "source.tif", rendered(11, height=600, width=700))
+    return source, save_slide(folder / "reference.tif", change(rendered(12, height=600, width=700)))
 
 
 @pytest.fixture(scope="module")
@@ -150,7 +138,7 @@ def test_measuring_writes_nothing(slides, reference, tmp_path: Path) -> None:
 
 
 def test_a_brown_stain_is_measured_only_unless_asked(reference, tmp_path: Path) -> None:
-    brown = save(tmp_path / "brown.tif", rendered(5, HED[[0, 2]]))
+    brown = save_slide(tmp_path / "brown.tif", rendered(5, HED[[0, 2]]))
     out = tmp_path / "out"
     out.mkdir()
     kept = stain_slide(brown, reference, out)
@@ -190,54 +178,17 @@ def test_planted_identifiers_are_nowhere(reference, tmp_path: Path) -> None:
     assert not any(name.encode() in written for name in planted)
 
 
-def test_one_bad_file_does_not_stop_the_rest(slides, tmp_path: Path) -> None:
-    (tmp_path / "broken.tif").write_bytes(b"II*\0nothing more")
-    good = save(tmp_path / "good.tif", rendered(13))
-    seen = []
-
-    results = stain([tmp_path], to=[slides[1]], out=tmp_path / "out", on_done=seen.append)
-
-    assert [type(result) for result in results] == [SlideFailure, SlideOutcome]
-    assert "broken.tif" in results[0].reason
-    assert seen == results
-    assert good.exists()
-
-
-def test_two_slides_of_one_name_are_planned_before_any_write(tmp_path: Path) -> None:
-    for folder in ("a", "b"):
-        (tmp_path / folder).mkdir()
-        (tmp_path / folder / "x.tif").write_bytes(b"II*\0")
-
-    with pytest.raises(InputError, match="different folders"):
-        stain([tmp_path / "a", tmp_path / "b"], out=tmp_path / "out")
-    assert not (tmp_path / "out").exists()
-
-
 def test_fluorescence_is_refused_by_name(tmp_path: Path) -> None:
     rng = np.random.default_rng(0)
-    path = save(tmp_path / "glow.tif", (rng.random((300, 300, 3)) * 30).astype(np.uint8))
+    path = save_slide(tmp_path / "glow.tif", (rng.random((300, 300, 3)) * 30).astype(np.uint8))
 
     with pytest.raises(RefusedError, match="fluorescence"):
         measure_slide(path)
 
 
-def test_without_references_slides_meet_in_their_house_palette(tmp_path: Path) -> None:
-    folder = tmp_path / "in"
-    folder.mkdir()
-    for n in range(3):
-        change = restain(np.random.default_rng(n), (0, 1), 0.95)
-        save(folder / f"{n}.tif", change(rendered(20 + n)))
-
-    results = stain([folder], out=tmp_path / "out", settings=StainSettings(measure_only=True))
-
-    before = np.array([r.numbers["before"]["mean_density"] for r in results])
-    after = np.array([r.numbers["after"]["mean_density"] for r in results])
-    assert np.ptp(after, axis=0).sum() < np.ptp(before, axis=0).sum()
-
-
 def test_a_house_palette_is_not_led_by_one_outlier(tmp_path: Path) -> None:
-    paths = [save(tmp_path / f"{n}.tif", rendered(30 + n)) for n in range(7)]
-    odd = save(tmp_path / "odd.tif", rendered(40, HED[[1, 2]][::-1]))
+    paths = [save_slide(tmp_path / f"{n}.tif", rendered(30 + n)) for n in range(7)]
+    odd = save_slide(tmp_path / "odd.tif", rendered(40, HED[[1, 2]][::-1]))
 
     without, with_odd = (reference_from(chosen) for chosen in (paths, [*paths, odd]))
 
@@ -306,7 +257,7 @@ def test_fields_of_view_are_slides_too(reference, tmp_path: Path) -> None:
 def test_too_little_tissue_changes_nothing_and_says_so(reference, tmp_path: Path) -> None:
     pixels = np.full((300, 300, 3), 240, np.uint8)
     pixels[100:160, 100:160] = (180, 80, 160)
-    path = save(tmp_path / "bare.tif", pixels)
+    path = save_slide(tmp_path / "bare.tif", pixels)
     mask = np.zeros((300, 300), dtype=bool)
 
     done = stain_slide(path, reference, tmp_path, settings=LOSSLESS, mask=mask)

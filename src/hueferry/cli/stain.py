@@ -62,7 +62,8 @@ def stain(
     }
     for caution in CAUTIONS:
         remark(f"Caution: {caution}")
-    record = stain_files(slides, to=to or (), out=out, choices=choices, on_done=None if quiet else _say)
+    on_plan, on_done = (None, None) if quiet else (remark, _say)
+    record = stain_files(slides, to=to or (), out=out, choices=choices, on_plan=on_plan, on_done=on_done)
     if json:
         show_json(record.as_dict())
     else:

@@ -44,9 +44,15 @@ class FileFact:
 
     @classmethod
     def of(cls, path: Path, shown_as: str | None = None) -> FileFact:
-        """Hash the file at `path`, in pieces of 1 MiB."""
+        """Hash the file at `path`, in pieces of 1 MiB; of a folder, names, sizes and hashes of all files in it."""
         digest = hashlib.sha256()
         size = 0
+        if path.is_dir():
+            for file in sorted(child for child in path.rglob("*") if child.is_file()):
+                fact = cls.of(file, file.relative_to(path).as_posix())
+                digest.update(f"{fact.path}\0{fact.size}\0{fact.sha256}\n".encode("utf-8", "surrogateescape"))
+                size += fact.size
+            return cls(shown_as if shown_as is not None else path.as_posix(), size, digest.hexdigest())
         with path.open("rb") as stream:
             while chunk := stream.read(_CHUNK):
                 digest.update(chunk)

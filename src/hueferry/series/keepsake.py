@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 import json
 from collections.abc import Mapping
+from pathlib import Path
 from typing import Any
 
 import attrs
@@ -13,7 +14,7 @@ from numpy.typing import NDArray
 
 from hueferry.errors import InputError
 from hueferry.palettes.palette import Palette
-from hueferry.record.record import Entry, FileFact
+from hueferry.record.record import Entry, Failure, FileFact, Record, read_record
 from hueferry.series.glimpse import Glimpse, Spot
 
 
@@ -76,6 +77,21 @@ def entry_from(data: Mapping[str, Any]) -> Entry:
         numbers=data["numbers"],
         sentences=data["sentences"],
     )
+
+
+def record_from(out: Path) -> Record:
+    """Return the record that an earlier run left in a folder.
+
+    Raises:
+        InputError: there is none, or it is of another schema.
+    """
+    data = read_record(out)
+    data.pop("schema")
+    data["references"] = [FileFact(**fact) for fact in data["references"]]
+    data["entries"] = [entry_from(entry) for entry in data["entries"]]
+    data["failures"] = [Failure(**failure) for failure in data["failures"]]
+    data["hold"] = None if data["hold"] is None else FileFact(**data["hold"])
+    return Record(**data)
 
 
 def _small_pictures(glimpse: Glimpse) -> dict[str, bytes]:

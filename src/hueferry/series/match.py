@@ -10,11 +10,11 @@ import attrs
 
 from hueferry.errors import OutputError
 from hueferry.fitting.settings import Settings
-from hueferry.record.record import NAME, Failure, FileFact, Record, read_record, to_json
+from hueferry.record.record import NAME, Failure, FileFact, Record, to_json
 from hueferry.series.cluster import Cluster, run_on_cluster
 from hueferry.series.job import Context, Failed, Job, run_job
 from hueferry.series.journal import Journal, Row
-from hueferry.series.keepsake import Done, Kept, entry_from, unpack
+from hueferry.series.keepsake import Done, Kept, record_from, unpack
 from hueferry.series.memory import choose_workers, memory_of
 from hueferry.series.overview import overview
 from hueferry.series.plan import plan_errands
@@ -98,7 +98,7 @@ def match_pictures(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done:
         if on_plan is not None:
             on_plan(schedule)
         if is_sealed(schedule, order.out, journal.read_seal()):
-            return Run(_recorded(order.out), (), schedule, unchanged=True)
+            return Run(record_from(order.out), (), schedule, unchanged=True)
         references, sentence = load_references(order.to, [step.errand for step in schedule.steps], order.settings)
         hold = load_mask(order.hold) if order.hold is not None else None
         context = Context(references, order.settings, hold, len(schedule.steps))
@@ -233,13 +233,3 @@ def _finish(order: MatchOrder, schedule: Schedule, outcomes: Sequence[Done | Fai
     if done:
         write_bytes(order.out / NAME, to_json(record).encode(), overwrite=True)
     return Run(record, done, schedule)
-
-
-def _recorded(out: Path) -> Record:
-    data = read_record(out)
-    data.pop("schema")
-    data["references"] = [FileFact(**fact) for fact in data["references"]]
-    data["entries"] = [entry_from(entry) for entry in data["entries"]]
-    data["failures"] = [Failure(**failure) for failure in data["failures"]]
-    data["hold"] = None if data["hold"] is None else FileFact(**data["hold"])
-    return Record(**data)

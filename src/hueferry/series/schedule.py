@@ -124,7 +124,7 @@ def make_schedule(errands: Sequence[Errand], out: Path, journal: Journal, *, wan
     taken, steps = [], []
     for errand, (fact, changed) in zip(errands, inputs, strict=True):
         row = rows.get(_below(errand, out))
-        present = fact_or_empty(errand.output).sha256 if errand.output.is_file() else ""
+        present = fact_or_empty(errand.output).sha256 if errand.output.exists() else ""
         ours = row is not None and bool(present) and present in (row.output_sha256, row.former_sha256)
         if not ours and (errand.output.exists() or errand.output.is_symlink()):
             taken.append(errand.output)
@@ -153,13 +153,18 @@ def _below(errand: Errand, out: Path) -> str:
 
 
 def _fact(source: Path, row: Row | None) -> tuple[FileFact, int]:
-    """Hash a file, unless it is as large and as old as the journal says."""
+    """Hash a file or a folder, unless it is a file as large and as old as the journal says."""
     try:
         status = source.stat()
     except OSError:
         return fact_or_empty(source), 0
     path, changed = source.as_posix(), status.st_mtime_ns
-    if row is not None and (row.source, row.size, row.changed) == (path, status.st_size, changed):
+    # The time of a folder does not tell of the files in it.
+    if (
+        not source.is_dir()
+        and row is not None
+        and (row.source, row.size, row.changed) == (path, status.st_size, changed)
+    ):
         return FileFact(path, row.size, row.sha256), changed
     return fact_or_empty(source), changed
 

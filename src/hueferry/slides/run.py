@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import deque
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
@@ -12,19 +12,19 @@ import attrs
 import numpy as np
 
 from hueferry.arrays import Mask, Pixels
-from hueferry.errors import HueferryError, OutputError
+from hueferry.errors import OutputError
 from hueferry.picture import Picture, Window
 from hueferry.slides.cautions import AMOUNT_IS_MEASURED, CAUTIONS
 from hueferry.slides.codecs import Packing
 from hueferry.slides.density import Light
 from hueferry.slides.fit import SlideFit, fit_slide
-from hueferry.slides.gather import find_reference, look_at_slide
+from hueferry.slides.gather import look_at_slide
 from hueferry.slides.look import Look
 from hueferry.slides.quality import compare, describe_slide, overlay, within
-from hueferry.slides.readers import find_slides, open_slide
+from hueferry.slides.readers import open_slide
 from hueferry.slides.reference import SlideReference
 from hueferry.slides.refuse import amount_is_measured
-from hueferry.slides.settings import Container, StainSettings, check_names, output_path, stem_of
+from hueferry.slides.settings import Container, StainSettings, output_path, overlay_path
 from hueferry.slides.source import SlideSource
 from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
 
@@ -97,7 +97,7 @@ def stain_slide(
             said = (*sentences, AMOUNT_IS_MEASURED) if held_back else sentences
             return SlideOutcome(path, None, None, fit, numbers, said)
         _write(source, fit, target, chosen)
-        shown = target.with_name(stem_of(path) + ".tissue.png")
+        shown = overlay_path(path, out)
         return SlideOutcome(path, target, _write_overlay(look, shown, chosen), fit, numbers, sentences)
     finally:
         source.close()
@@ -115,42 +115,6 @@ def measure_slide(path: Path, *, light: Light = Light.ENCODED) -> dict[str, Any]
         return describe_slide(look_at_slide(path, source, light=light))
     finally:
         source.close()
-
-
-def stain(
-    paths: Sequence[Path],
-    *,
-    to: Sequence[Path] = (),
-    out: Path,
-    settings: StainSettings | None = None,
-    on_done: Callable[[SlideOutcome | SlideFailure], None] | None = None,
-) -> list[SlideOutcome | SlideFailure]:
-    """Bring slides towards reference slides or, without any, towards what they have in common.
-
-    Args:
-        paths: slides, and folders of slides.
-        to: reference slides, of which several make a house palette; or one house palette saved before.
-        out: folder that outputs go to; made if it does not exist.
-        settings: how.
-        on_done: called after each slide.
-
-    Raises:
-        InputError: there is no slide, no usable reference, or two outputs would have one name.
-    """
-    chosen = settings or StainSettings()
-    slides = find_slides(paths)
-    check_names(slides, out, chosen.layout)
-    reference = find_reference(to or slides, light=chosen.light)
-    out.mkdir(parents=True, exist_ok=True)
-    results: list[SlideOutcome | SlideFailure] = []
-    for path in slides:
-        try:
-            results.append(stain_slide(path, reference, out, settings=chosen))
-        except HueferryError as error:
-            results.append(SlideFailure(path, str(error)))
-        if on_done is not None:
-            on_done(results[-1])
-    return results
 
 
 def _numbers(look: Look, fit: SlideFit, reference: SlideReference) -> dict[str, Any]:

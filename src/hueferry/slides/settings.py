@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from enum import StrEnum
 from pathlib import Path
+from typing import Any, TypeVar
 
 import attrs
 
@@ -22,6 +23,8 @@ class Container(StrEnum):
     FLAT = "flat"
     ZARR = "zarr"
 
+
+_Word = TypeVar("_Word", bound=StrEnum)
 
 SUFFIXES = {Container.OME: ".ome.tif", Container.FLAT: ".tif", Container.ZARR: ".ome.zarr"}
 
@@ -60,6 +63,11 @@ class StainSettings:
     overwrite: bool = False
     threads: int = 2
 
+    def as_dict(self) -> dict[str, Any]:
+        """Return as JSON values what the bytes of a result depend on."""
+        free = ("overwrite", "threads")
+        return attrs.asdict(self, filter=lambda field, _: field.name not in free)
+
 
 def stem_of(path: Path) -> str:
     """Return the name of a slide without its suffixes."""
@@ -75,6 +83,11 @@ def output_path(path: Path, out: Path, layout: Container) -> Path:
     return out / (stem_of(path) + SUFFIXES[layout])
 
 
+def overlay_path(path: Path, out: Path) -> Path:
+    """Return where the picture of a slide's tissue goes."""
+    return out / (stem_of(path) + ".tissue.png")
+
+
 def check_names(slides: Sequence[Path], out: Path, layout: Container) -> None:
     """Check that no two slides would get one name.
 
@@ -83,7 +96,37 @@ def check_names(slides: Sequence[Path], out: Path, layout: Container) -> None:
     """
     taken: dict[str, Path] = {}
     for path in slides:
-        name = output_path(path, out, layout).name.casefold()
+        name = stem_of(path).casefold()
         if name in taken:
-            raise InputError(f"{taken[name]} and {path} would both become {name}; run them into different folders")
+            both = output_path(path, out, layout).name
+            raise InputError(f"{taken[name]} and {path} would both become {both}; run them into different folders")
         taken[name] = path
+
+
+def settings_from_words(words: Mapping[str, Any]) -> StainSettings:
+    """Make settings from plain words, as a command line or a script gives them.
+
+    Raises:
+        InputError: a word or a value is not one of the choices.
+    """
+    named: dict[str, Any] = dict(words)
+    kinds: Mapping[str, type[StrEnum]] = {"aim": SlideAim, "layout": Container, "light": Light}
+    for name, kind in kinds.items():
+        if name in named:
+            named[name] = _word(kind, named[name], name)
+    if named.get("packing", "auto") == "auto":
+        named["packing"] = None
+    else:
+        named["packing"] = _word(Packing, named["packing"], "packing")
+    try:
+        return StainSettings(**named)
+    except (TypeError, ValueError) as error:
+        raise InputError(str(error)) from error
+
+
+def _word(kind: type[_Word], value: str, name: str) -> _Word:
+    try:
+        return kind(value)
+    except ValueError as error:
+        choices = ", ".join(member.value for member in kind)
+        raise InputError(f"there is no {name} {value!r}; choose one of {choices}") from error

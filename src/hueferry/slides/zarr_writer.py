@@ -10,7 +10,8 @@ from pathlib import Path
 from typing import Any
 
 from hueferry.arrays import Pixels
-from hueferry.errors import InputError, OutputError
+from hueferry.errors import InputError, OutputError, PictureError
+from hueferry.picture import Window
 from hueferry.slides.levels import Cascade, Halving, level_shapes
 from hueferry.slides.tiff_writer import TILE, Bands, SlideForm
 
@@ -21,7 +22,7 @@ _VERSIONS = ("0.4", "0.5")
 def write_zarr_slide(
     path: Path, bands: Bands, form: SlideForm, *, version: str = "0.5", threads: int = 2, overwrite: bool = False
 ) -> Path:
-    """Write a slide as an OME-Zarr folder; it gets its name when every level is there.
+    """Write a slide as an OME-Zarr folder; it gets its name once every level has been read back.
 
     A band holds whole rows of chunks, and each chunk is written once by one thread, so no chunk has two writers.
 
@@ -47,6 +48,7 @@ def write_zarr_slide(
         raise OutputError(path, f"nothing can be written here: {error.strerror or error}") from error
     try:
         _store(made, bands, form, version, threads)
+        _verify(made, path, form, version)
         made.chmod(0o755)
         _publish(made, path)
     except OSError as error:
@@ -67,6 +69,7 @@ def _store(made: Path, bands: Bands, form: SlideForm, version: str, threads: int
             shape=(3, *shape),
             chunks=(3, TILE, TILE),
             dtype=form.dtype,
+            config={"write_empty_chunks": True},  # a chunk that is missing is then one that was not written
             chunk_key_encoding={"name": "v2" if version == "0.4" else "default", "separator": "/"},
         )
         for level, shape in enumerate(shapes)
@@ -91,6 +94,26 @@ def _store(made: Path, bands: Bands, form: SlideForm, version: str, threads: int
             top += band.shape[0]
     if top != form.shape[0]:
         raise InputError(f"{top} rows came where the slide has {form.shape[0]}")
+
+
+def _verify(made: Path, path: Path, form: SlideForm, version: str) -> None:
+    """Read the finished folder back: every level there, every chunk in its place, the corners decoded."""
+    from hueferry.slides.zarr_reader import ZarrSlide
+
+    shapes = level_shapes(form.shape, smallest=TILE)
+    try:
+        slide = ZarrSlide(made)
+        if list(slide.levels) != shapes:
+            raise OutputError(path, f"the levels read back as {list(slide.levels)} instead of {shapes}")
+        for level, (height, width) in enumerate(shapes):
+            chunks = made / str(level) / ("0" if version == "0.4" else "c/0")
+            for row in range(-(-height // TILE)):
+                if len(list((chunks / str(row)).iterdir())) != -(-width // TILE):
+                    raise OutputError(path, f"chunks of row {row} of level {level} are missing")
+            slide.read_level(level, Window(0, 0, 1, 1))
+            slide.read_level(level, Window(height - 1, width - 1, 1, 1))
+    except PictureError as error:
+        raise OutputError(path, f"what was written does not read back: {error.reason}") from error
 
 
 def _attributes(form: SlideForm, version: str, levels: int) -> dict[str, Any]:
