@@ -64,9 +64,9 @@ def tetrahedral(lattice: Codes, size: int, positions: Codes) -> Codes:
     Args:
         lattice: (size³, 3) values, the third channel changing fastest.
         size: nodes along each axis.
-        positions: (n, 3), in steps between nodes, 0 … size − 1.
+        positions: (n, 3), in steps between nodes, 0 … size − 1; beyond, the outermost tetrahedra go on.
     """
-    cell = np.minimum(positions.astype(np.int64), size - 2)
+    cell = np.clip(positions.astype(np.int64), 0, size - 2)
     fractions = positions - cell
     strides = np.array([size * size, size, 1])
     # A stable sort of the negated fractions leaves ties in channel order: any order gives the same value on a tie.
