@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -43,41 +43,39 @@ def fit_file(picture: Path, *, to: Sequence[Path], out: Path, settings: Settings
     return fitted
 
 
-def apply_file(
-    map_file: Path,
-    pictures: Sequence[Path],
-    *,
-    out: Path,
-    correction: str | None = None,
-    on_map: Callable[[SavedMap], None] | None = None,
-    overwrite: bool = False,
-) -> tuple[list[Path], list[Failure]]:
-    """Send pictures and folders of pictures through a saved map; what cannot be done is a `Failure`.
+def open_maps(paths: Sequence[Path], *, correction: str | None = None, undo: bool = False) -> SavedMap:
+    """Read maps as one: each after the one before and, if it is to be undone, all of it backwards.
 
     Args:
-        map_file: the map: CLF of ours or of others, or a decision list.
-        pictures: pictures and folders of pictures.
-        out: folder of the results.
-        correction: id of the correction, in a file with several.
-        on_map: called with the map before any picture is read.
-        overwrite: replace earlier results.
+        paths: CLF of ours or of others, or decision lists; at least one.
+        correction: id of the correction, in files with several.
+        undo: turn the whole around.
 
     Raises:
-        MapFileError: the map cannot be used.
+        InputError: a map cannot be used, or cannot be undone.
+    """
+    from hueferry.tables.saved_map import backwards, chain, read_map
+
+    lists = {".ccc", ".cdl"}
+    whole = chain([read_map(path, correction=correction if path.suffix.lower() in lists else None) for path in paths])
+    return backwards(whole) if undo else whole
+
+
+def apply_file(
+    saved: SavedMap, pictures: Sequence[Path], *, out: Path, overwrite: bool = False
+) -> tuple[list[Path], list[Failure]]:
+    """Send pictures and folders of pictures through a map; what cannot be done is a `Failure`.
+
+    Raises:
         InputError: there is no picture.
     """
     from hueferry.files.walk import find_pictures
     from hueferry.series.plan import plan_errands
-    from hueferry.tables.saved_map import read_map
 
-    saved = read_map(map_file, correction=correction)
-    if on_map is not None:
-        on_map(saved)
-    table = saved.table
     written, failures = [], []
     for errand in plan_errands(pictures, out, find=find_pictures):
         try:
-            result = apply(table, errand.source)
+            result = apply(saved.table, errand.source)
             errand.output.parent.mkdir(parents=True, exist_ok=True)
             written.append(write(result, errand.output, overwrite=overwrite))
         except HueferryError as error:

@@ -111,3 +111,24 @@ def test_a_correction_of_a_collection_is_applied(place: Path, capsys: pytest.Cap
         result = np.asarray(Image.open(place / name / "plain.png"))
         assert np.abs(result - factor * photograph("china")).max() <= 0.501
     assert run(["check", str(grades), "--correction", "half"]) == 0
+
+
+def test_maps_are_put_together_and_undone(place: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """There and back again in one go, and in two: the picture, within one code for each rounding."""
+    plain, lift = str(place / "plain.png"), str(place / "lift.cc")
+    Path(lift).write_text(
+        "<ColorCorrection><SOPNode><Slope>.8 .8 .7</Slope><Offset>.1 .1 .1</Offset><Power>1 1 1</Power></SOPNode>"
+        "</ColorCorrection>",
+        encoding="utf-8",
+    )
+    assert run(["apply", lift, plain, "--out", str(place / "lifted")]) == 0
+    assert run(["apply", lift, str(place / "lifted/plain.png"), "--undo", "--out", str(place / "back")]) == 0
+    assert "knows the way back from 45 %" in capsys.readouterr().err  # 0.8 · 0.8 · 0.7 of all colours
+    assert run(["apply", lift, plain, "--then", lift, "--out", str(place / "twice")]) == 0
+    assert "2 maps put together: the table is exact" in capsys.readouterr().err
+
+    picture = photograph("china") / 255
+    back, twice = (np.asarray(Image.open(place / name / "plain.png")) for name in ("back", "twice"))
+    assert np.abs(back - 255 * picture).max() <= 0.5 / 0.7 + 0.51
+    wanted = (picture * [0.8, 0.8, 0.7] + 0.1) * [0.8, 0.8, 0.7] + 0.1
+    assert np.abs(twice - 255 * wanted).max() <= 0.51

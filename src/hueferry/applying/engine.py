@@ -4,6 +4,7 @@ Rules:
 
 * Integers are rounded to the nearest code and clipped to the code range. Dithering only on request (`dither`).
 * Alpha is copied bit for bit.
+* A table that leaves every code alone leaves every bit of every pixel alone.
 * Gray stays gray: each gray becomes the gray of the luminance that the table gives it.
 * Floats beyond 0 … 1 keep the shift of the nearest point inside, so that nothing jumps at the border; results are
   not clipped. A float pixel with a channel that is not finite stays as it is, all channels of it.
@@ -27,6 +28,7 @@ from hueferry.applying.processor import DEPTHS, FLOAT, make_processor, run_proce
 from hueferry.arrays import Pixels
 from hueferry.errors import InputError
 from hueferry.picture import Encoding, Picture, PictureSink, PictureSource, Window, strips
+from hueferry.tables.identity import is_identity
 from hueferry.tables.table import Table
 
 STRIP = 1 << 18
@@ -62,6 +64,7 @@ class Engine:
             raise InputError(f"pixels are uint8, uint16 or float32 of 1 … 16 bits, not {self.dtype} of {bits}")
         self._table, self._bits, self._encoding = table, bits, encoding
         self._dither = dither and self.dtype == np.uint8
+        self._idle = is_identity(table)
         direct = DEPTHS.get(bits) if self.dtype != np.float32 else FLOAT
         self._reads = direct if direct is not None else FLOAT
         self._writes = FLOAT if self._dither else self._reads
@@ -84,7 +87,9 @@ class Engine:
         if pixels.dtype != self.dtype:
             raise InputError(f"this engine takes {self.dtype} pixels, not {pixels.dtype}")
         result = np.empty(pixels.shape, pixels.dtype) if into is None else into
-        if pixels.shape[2] <= 2:
+        if self._idle:
+            result[...] = pixels
+        elif pixels.shape[2] <= 2:
             self._apply_gray(pixels, result)
         elif not result.flags.c_contiguous:
             result[...] = self._colour(np.ascontiguousarray(pixels), np.empty(pixels.shape, pixels.dtype), top, left)

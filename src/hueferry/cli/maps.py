@@ -3,16 +3,13 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import Annotated
 
 import typer
 
 from hueferry.cli import options
 from hueferry.cli.terminal import remark, show_json, show_lines
 from hueferry.fitting.settings import Aim, Settings
-
-if TYPE_CHECKING:
-    from hueferry.tables.saved_map import SavedMap
 
 DIFFERS = 1
 NOTHING_WRITTEN = 2
@@ -67,16 +64,21 @@ def apply(
     pictures: options.Pictures,
     out: options.Out,
     *,
+    then: Annotated[
+        list[Path] | None, typer.Option("--then", help="A map that comes after; may be given again.", metavar="MAP")
+    ] = None,
+    undo: Annotated[bool, typer.Option("--undo", help="Run the map backwards; maps that fold cannot be.")] = False,
     correction: Correction = None,
     json: options.Json = False,
     overwrite: options.Overwrite = False,
 ) -> None:
     """Send pictures through a saved map; nothing is measured or fitted."""
-    from hueferry.map_jobs import apply_file
+    from hueferry.map_jobs import apply_file, open_maps
 
-    written, failures = apply_file(
-        map_file, pictures, out=out, correction=correction, on_map=_say_misfit, overwrite=overwrite
-    )
+    saved = open_maps([map_file, *(then or [])], correction=correction, undo=undo)
+    for sentence in saved.sentences:
+        remark(sentence)
+    written, failures = apply_file(saved, pictures, out=out, overwrite=overwrite)
     if json:
         show_json(
             {
@@ -91,11 +93,6 @@ def apply(
         remark(f"failed: {failure.reason}")
     if failures:
         raise typer.Exit(DIFFERS if written else NOTHING_WRITTEN)
-
-
-def _say_misfit(saved: SavedMap) -> None:
-    for sentence in saved.sentences:
-        remark(sentence)
 
 
 def check(
