@@ -21,8 +21,8 @@ from hueferry.files.isobmff import Item, Items, assemble, boxes, read_items
 from hueferry.files.probe import check_size
 from hueferry.picture import Metadata, Picture
 
-_QUALITY = 97
-"""Where the source is a lossy AVIF and no quality is asked for; always without chroma subsampling."""
+_QUALITY = 99
+"""Where the source is a lossy AVIF, or HEIC, and no quality is asked for; always without chroma subsampling."""
 
 _SPEED = 7
 _KEPT = (b"clap", b"pasp")
@@ -106,7 +106,7 @@ def _is_gray(items: Items) -> bool:
 
 
 def write_avif(picture: Picture, profile: bytes | None, *, quality: int | None) -> bytes:
-    """Encode an AVIF at the picture's depth; lossless if a lossy AVIF is not its source and no quality is given.
+    """Encode an AVIF at the picture's depth; lossless unless its source is lossy, AVIF or HEIC, or a quality is given.
 
     Args:
         picture: 8, 10 or 12 bits.
@@ -115,7 +115,7 @@ def write_avif(picture: Picture, profile: bytes | None, *, quality: int | None) 
     """
     import imagecodecs
 
-    facts = picture.metadata.container if picture.metadata.format == "avif" else {}
+    facts = picture.metadata.container if picture.metadata.format in ("avif", "heic") else {}
     level = quality or (100 if facts.get("lossless", True) else _QUALITY)
     plain = picture.pixels[:, :, 0] if picture.pixels.shape[2] == 1 else picture.pixels
     primaries, transfer = _numbers(facts) or (UNSPECIFIED, UNSPECIFIED)

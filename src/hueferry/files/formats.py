@@ -48,6 +48,7 @@ class Format:
         turn: where it states its orientation.
         scene_linear: whether it holds light that goes on beyond diffuse white, and nothing else.
         writes: whether it is written.
+        written_as: the format that pictures of one that is not written go into.
         needs: the module of an optional package without which it is not read, or an empty string.
         extra: the name under which hueferry's installation brings that package.
         remark: what else a user should know.
@@ -66,6 +67,7 @@ class Format:
     turn: Turn = "exif"
     scene_linear: bool = False
     writes: bool = True
+    written_as: str = ""
     needs: str = ""
     extra: str = ""
     remark: str = ""
@@ -216,6 +218,7 @@ FORMATS: Mapping[str, Format] = MappingProxyType(
                 keeps=_ALL,
                 turn="upright",
                 writes=False,
+                written_as="avif",
                 needs="pi_heif",
                 extra="heic",
                 remark="read only, upright; its encoders are under the GPL: write AVIF, which is built alike",
@@ -276,6 +279,13 @@ def named(path: Path) -> Format | None:
     """Return the format that is written and that the suffix of a path names."""
     suffix = path.suffix.lower()
     return next((one for one in FORMATS.values() if one.writes and suffix in one.suffixes), None)
+
+
+def written_name(path: Path) -> Path:
+    """Return the name under which what became of a picture is written: its own, unless its format is only read."""
+    suffix = path.suffix.lower()
+    only_read = next((one for one in FORMATS.values() if not one.writes and suffix in one.suffixes), None)
+    return path if only_read is None else path.with_suffix(FORMATS[only_read.written_as].suffixes[0])
 
 
 def codec(name: str) -> Codec:

@@ -115,13 +115,14 @@ def read_items(data: bytes) -> Items:
     Raises:
         InputError: the file is broken, or says nothing of a picture.
     """
-    top = {kind: payload for kind, payload, _ in boxes(data)}
+    top = {kind: (payload, at) for kind, payload, at in boxes(data)}
     if b"meta" not in top:
         raise InputError("the file lists no pictures; it is broken, or a film")
-    meta = {kind: (payload, at) for kind, payload, at in boxes(top[b"meta"], 4)}
+    inner, start = top[b"meta"]
+    meta = {kind: (payload, start + at) for kind, payload, at in boxes(inner, 4)}
     if any(kind not in meta for kind in (b"pitm", b"iloc", b"iinf", b"iprp")):
         raise InputError("the list of pictures is incomplete; the file is broken")
-    places = _places(meta[b"iloc"][0])
+    places = _places(meta[b"iloc"][0], meta[b"idat"][1] if b"idat" in meta else None)
     kinds = _kinds(meta[b"iinf"][0])
     properties, links = _properties(meta[b"iprp"][0])
     reader = _Reader(meta[b"pitm"][0])
@@ -136,8 +137,11 @@ def read_items(data: bytes) -> Items:
     return Items(primary, items, properties, references, sequence=b"moov" in top)
 
 
-def _places(payload: bytes) -> dict[int, tuple[Extent, ...]]:
-    """Read an item location box (ISO/IEC 14496-12, clause 8.11.3); only items whose bytes lie in the file itself."""
+def _places(payload: bytes, inside: int | None) -> dict[int, tuple[Extent, ...]]:
+    """Read an item location box (ISO/IEC 14496-12, clause 8.11.3).
+
+    Items lie in the file itself (method 0), or `inside` the box of data of the list (method 1); others have no place.
+    """
     reader = _Reader(payload)
     version, _ = reader.full()
     sizes = reader.number(2)
@@ -148,12 +152,12 @@ def _places(payload: bytes) -> dict[int, tuple[Extent, ...]]:
         number = reader.number(4 if version == 2 else 2)
         method = reader.number(2) & 15 if version else 0
         reader.number(2)
-        base = reader.number(base_size)
+        base = reader.number(base_size) + (inside or 0) * (method == 1)
         extents = []
         for _ in range(min(reader.number(2), _MOST)):
             reader.number(index_size)
             extents.append((base + reader.number(offset_size), reader.number(length_size)))
-        found[number] = tuple(extents) if method == 0 else ()
+        found[number] = tuple(extents) if method == 0 or (method == 1 and inside is not None) else ()
     return found
 
 
@@ -239,9 +243,11 @@ def _meta(items: Items, bodies: Mapping[int, bytes], places: Mapping[int, int]) 
         struct.pack(">HHHII", number, 0, 1, place, len(bodies[number])) for number, place in places.items()
     )
     entries = b"".join(_entry(number, item) for number, item in items.items.items())
+    wide = len(items.properties) > 126
+    form, mark = (">H", 0x8000) if wide else (">B", 0x80)
     links = b"".join(
         struct.pack(">HB", number, len(item.properties))
-        + bytes(index + 1 | (0x80 if essential else 0) for index, essential in item.properties)
+        + b"".join(struct.pack(form, index + 1 | mark * essential) for index, essential in item.properties)
         for number, item in items.items.items()
         if item.properties
     )
@@ -255,7 +261,7 @@ def _meta(items: Items, bodies: Mapping[int, bytes], places: Mapping[int, int]) 
         box(
             b"iprp",
             box(b"ipco", b"".join(box(kind, payload) for kind, payload in items.properties))
-            + full_box(b"ipma", struct.pack(">I", linked) + links),
+            + full_box(b"ipma", struct.pack(">I", linked) + links, flags=int(wide)),
         ),
     ]
     return full_box(b"meta", b"".join(parts))

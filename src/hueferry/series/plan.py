@@ -9,6 +9,7 @@ from pathlib import Path
 import attrs
 
 from hueferry.errors import InputError, OutputError
+from hueferry.files.formats import written_name
 
 
 @attrs.frozen
@@ -31,7 +32,8 @@ def plan_errands(
 
     A file goes to `out` under its own name, and a file found in a folder keeps its place below that folder. Names that
     a file system could take for the same one (by case or by Unicode form) get a number, in the order of the inputs.
-    Where `out` lies in one of the folders, what is in it are results, not inputs.
+    What is only read gets the suffix of the format it is written in. Where `out` lies in one of the folders, what is
+    in it are results, not inputs.
 
     Args:
         inputs: files and folders as the caller named them.
@@ -49,7 +51,7 @@ def plan_errands(
             if results is not None and picture.is_relative_to(results):
                 continue
             below = picture.relative_to(path) if path.is_dir() else Path(picture.name)
-            sources.setdefault(picture, below)
+            sources.setdefault(picture, written_name(below))
     if not sources:
         raise InputError("no picture was found in " + ", ".join(str(path) for path in inputs))
     errands = tuple(_without_collisions(sources.items(), out))
