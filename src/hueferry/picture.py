@@ -39,6 +39,16 @@ class Encoding(Protocol):
         ...
 
 
+@attrs.frozen(eq=True, hash=False)
+class EncodingKey:
+    """An encoding as the key of a cache: two are the same if they are one object."""
+
+    encoding: Encoding = attrs.field(eq=id)
+
+    def __hash__(self) -> int:
+        return id(self.encoding)
+
+
 @attrs.frozen
 class Window:
     """A rectangle of a picture, in pixels: rows top … top + height, columns left … left + width."""

@@ -11,8 +11,10 @@ from hypothesis import strategies as st
 
 from hueferry.palettes.palette import Palette
 from hueferry.tables.build import build_table, input_curves, sample_table
-from hueferry.tables.cells import Occupied, determinants, gains, jacobians, widened
+from hueferry.tables.cells import Occupied, jacobians, widened
 from hueferry.tables.certificate import certify, neutral_drift, newly_clipped, table_error
+from hueferry.tables.folds import determinants
+from hueferry.tables.gains import gains
 from hueferry.tables.table import Table
 from tables.encodings import Display, Light
 

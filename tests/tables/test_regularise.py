@@ -8,8 +8,10 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from hueferry.tables.build import build_table, sample_table
-from hueferry.tables.cells import Occupied, determinants, gains
+from hueferry.tables.cells import Occupied
 from hueferry.tables.certificate import certify
+from hueferry.tables.folds import determinants
+from hueferry.tables.gains import gains
 from hueferry.tables.lookup import look_up
 from hueferry.tables.make import make_table
 from hueferry.tables.ramps import read_ramps

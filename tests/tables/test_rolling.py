@@ -9,7 +9,8 @@ from hypothesis import strategies as st
 
 from hueferry.arrays import Codes
 from hueferry.tables.build import sample_table
-from hueferry.tables.cells import Occupied, determinants
+from hueferry.tables.cells import Occupied
+from hueferry.tables.folds import determinants
 from hueferry.tables.rolling import RollOff, roll_into_range
 
 codes = np.random.default_rng(0).random((500, 3))

@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, read_only
 from hueferry.colour.spaces import oklab_to_xyz, xyz_to_oklab
-from hueferry.picture import Encoding
+from hueferry.picture import Encoding, EncodingKey
 
 KNEE = 0.85
 """Share of the largest chroma below which nothing is compressed."""
@@ -46,7 +46,7 @@ def compress(colours: Colours, encoding: Encoding, *, source: Colours | None = N
         chroma at its sharpest corners. Colours that are no nearer to the edge than their source, or than the knee,
         come back as they are.
     """
-    edge = _edge_of(_ByIdentity(encoding))
+    edge = _edge_of(EncodingKey(encoding))
     lightness_knee, knee = np.full(len(colours), LIGHTNESS_KNEE), np.full(len(colours), KNEE)
     if source is not None:
         lightness_knee = np.maximum(lightness_knee, source[:, 0] / edge.white)
@@ -82,18 +82,8 @@ class _Edge:
         return np.asarray(np.hypot(colours[:, 1], colours[:, 2]) / np.maximum(low * (1 - u) + high * u, _EDGE))
 
 
-@attrs.frozen(eq=True, hash=False)
-class _ByIdentity:
-    """An encoding as the key of a cache: two are the same if they are one object."""
-
-    encoding: Encoding = attrs.field(eq=id)
-
-    def __hash__(self) -> int:
-        return id(self.encoding)
-
-
 @lru_cache(maxsize=16)
-def _edge_of(key: _ByIdentity) -> _Edge:
+def _edge_of(key: EncodingKey) -> _Edge:
     """Find the edge of an encoding's gamut by bisection along chroma; once for each encoding."""
     encoding = key.encoding
     white = float(xyz_to_oklab(encoding.to_xyz(np.ones((1, 3))))[0, 0])

@@ -1,4 +1,4 @@
-"""The tetrahedra of a table: which ones there are, which are occupied, and how each turns and stretches colours.
+"""The tetrahedra of a table: which ones there are, which are occupied, and the Jacobian in each.
 
 In every tetrahedron the table is affine, so a Jacobian from node differences is exact, not an estimate. With input
 curves the Jacobian is that of the lattice times the curves' slopes in the cell; where a slope varies within a cell, the
@@ -27,9 +27,6 @@ ORDERS = tuple(permutations(range(3)))
 """The six tetrahedra of a cell, each by the order in which its channels are walked from the low to the high corner."""
 
 _UNSEEN, _BESIDE = 1e-3, 0.1
-
-_SLAB = 4
-"""Planes of cells at a time: what is computed on the way stays in the cache."""
 
 
 @attrs.frozen(eq=False)
@@ -87,41 +84,6 @@ def widened(cells: Cells, margin: int) -> Cells:
     return wide
 
 
-def determinants(lattice: NDArray[np.float32]) -> Floats:
-    """Return (6, n − 1, n − 1, n − 1) Jacobian determinants of the lattice, before input curves.
-
-    A value within float32 rounding of zero is given as 0: such a tetrahedron is flat, and reverses nothing.
-    """
-    unit = float(lattice.shape[0] - 1)
-    return determinants_within(lattice, unit)
-
-
-def determinants_within(part: NDArray[np.float32], unit: float) -> Floats:
-    """Return the determinants in a part of a lattice: (6, …) for (…, 3) nodes that lie 1 / `unit` apart."""
-    shape = tuple(length - 1 for length in part.shape[:3])
-    found = np.empty((6, *shape))
-    rounding = 2.0**-23 * max(1.0, float(np.abs(part).max())) * unit
-    for start in range(0, shape[0], _SLAB):
-        stop = min(start + _SLAB, shape[0])
-        _fill_determinants(part[start : stop + 1], unit, rounding, found[:, start:stop])
-    return found
-
-
-def _fill_determinants(part: NDArray[np.float32], unit: float, rounding: float, found: Floats) -> None:
-    edges = _edges(part, unit)
-    for row, order in enumerate(ORDERS):
-        a, b, c = _walk(edges, order)
-        sign = 1.0 if order in ((0, 1, 2), (1, 2, 0), (2, 0, 1)) else -1.0
-        value = sign * _triple(a, b, c)
-        doubtful = value < 1e-3
-        if doubtful.any():
-            lengths = [np.sqrt((side[:, doubtful] ** 2).sum(axis=0)) for side in (a, b, c)]
-            slack = rounding * (lengths[0] * lengths[1] + lengths[1] * lengths[2] + lengths[0] * lengths[2])
-            kept = value[doubtful]
-            value[doubtful] = np.where(np.abs(kept) <= slack, 0.0, kept)
-        found[row] = value
-
-
 def jacobians(table: Table, cells: Cells) -> Floats:
     """Return (6, m, 3, 3) Jacobians of the lattice in the m `cells` (C order), [..., output, input], before curves."""
     base = np.argwhere(cells)
@@ -136,36 +98,6 @@ def jacobians(table: Table, cells: Cells) -> Floats:
             found[row, :, :, axis] = (ahead - value) * (table.size - 1)
             value = ahead
     return found
-
-
-def gains(table: Table, cells: Cells) -> tuple[Floats, Floats]:
-    """Return the largest and the smallest singular value of the Jacobian, (6, m) each, in the m `cells` (C order).
-
-    A channel that lies beyond 0 … 1 in a whole tetrahedron is clipped after interpolation, so it counts as constant
-    for the largest; it counts as it is for the smallest.
-    """
-    lattice = jacobians(table, cells)
-    shown = np.where(clipped_channels(table, cells)[..., None], 0.0, lattice)
-    least, most = curve_slopes(table)
-    index = np.argwhere(cells)
-    steep = np.stack([most[axis, index[:, axis]] for axis in range(3)], axis=1)
-    gentle = np.stack([least[axis, index[:, axis]] for axis in range(3)], axis=1)
-    return _singular(shown * steep[:, None, :])[0], _singular(lattice * gentle[:, None, :])[1]
-
-
-def steeper(table: Table, cells: Cells, cap: float) -> NDArray[np.bool_]:
-    """Return (m,), true for the `cells` (C order) whose largest gain in any tetrahedron exceeds `cap`."""
-    _, most = curve_slopes(table)
-    index = np.argwhere(cells)
-    steep = np.stack([most[axis, index[:, axis]] for axis in range(3)], axis=1)
-    matrices = jacobians(table, cells) * steep[:, None, :]
-    # The Frobenius norm is never less than the largest singular value, and much quicker.
-    found = ((matrices * matrices).sum(axis=(-2, -1)) > cap * cap).any(axis=0)
-    if found.any():
-        doubtful = np.zeros_like(cells)
-        doubtful[tuple(index[found].T)] = True
-        found[found] = (gains(table, doubtful)[0] > cap).any(axis=0)
-    return np.asarray(found)
 
 
 def clipped_channels(table: Table, cells: Cells) -> NDArray[np.bool_]:
@@ -205,46 +137,6 @@ def curve_slopes(table: Table) -> tuple[Floats, Floats]:
     return np.where(straight, chords, least), np.where(straight, chords, most)
 
 
-def _edges(lattice: NDArray[np.float32], unit: float) -> tuple[Floats, Floats, Floats]:
-    planes = np.ascontiguousarray(np.moveaxis(lattice, -1, 0), dtype=np.float64) * unit
-    return np.diff(planes, axis=1), np.diff(planes, axis=2), np.diff(planes, axis=3)
-
-
-def _walk(edges: tuple[Floats, Floats, Floats], order: tuple[int, ...]) -> list[Floats]:
-    """The three edges from the low to the high corner of every cell, in walking order: (3 outputs, n−1, n−1, n−1)."""
-    passed: set[int] = set()
-    sides = []
-    for axis in order:
-        where = tuple(
-            slice(None) if other == axis else (slice(1, None) if other in passed else slice(None, -1))
-            for other in range(3)
-        )
-        sides.append(edges[axis][(slice(None), *where)])
-        passed.add(axis)
-    return sides
-
-
-def _triple(a: Floats, b: Floats, c: Floats) -> Floats:
-    return np.asarray(
-        a[0] * (b[1] * c[2] - b[2] * c[1]) + a[1] * (b[2] * c[0] - b[0] * c[2]) + a[2] * (b[0] * c[1] - b[1] * c[0])
-    )
-
-
-def _singular(matrices: Floats) -> tuple[Floats, Floats]:
-    """Largest and smallest singular value of (…, 3, 3) matrices, by the closed form for symmetric 3 × 3 matrices.
-
-    References:
-        Smith (1961), Eigenvalues of a symmetric 3 × 3 matrix, Communications of the ACM 4(4):168.
-    """
-    x, y, z = matrices[..., 0], matrices[..., 1], matrices[..., 2]
-    a, b, c = (x * x).sum(-1), (y * y).sum(-1), (z * z).sum(-1)
-    d, e, f = (x * y).sum(-1), (y * z).sum(-1), (x * z).sum(-1)
-    mean = (a + b + c) / 3
-    a, b, c = a - mean, b - mean, c - mean
-    spread = np.sqrt((a * a + b * b + c * c + 2 * (d * d + e * e + f * f)) / 6)
-    determinant = a * (b * c - e * e) - d * (d * c - e * f) + f * (d * e - b * f)
-    safe = np.where(spread > 0, spread, 1.0)
-    angle = np.arccos(np.clip(determinant / (2 * safe**3), -1.0, 1.0)) / 3
-    largest = mean + 2 * spread * np.cos(angle)
-    smallest = mean + 2 * spread * np.cos(angle + 2 * np.pi / 3)
-    return np.sqrt(np.maximum(largest, 0.0)), np.sqrt(np.maximum(smallest, 0.0))
+def dot(a: Floats, b: Floats) -> Floats:
+    """Return the (…) scalar products of (3, …) vectors."""
+    return np.asarray(a[0] * b[0] + a[1] * b[1] + a[2] * b[2])

@@ -12,7 +12,9 @@ from hueferry.colour.difference import delta_e_2000
 from hueferry.colour.spaces import xyz_to_lab
 from hueferry.picture import Encoding
 from hueferry.tables.build import CodeFunction
-from hueferry.tables.cells import Cells, Occupied, determinants, gains
+from hueferry.tables.cells import Cells, Occupied
+from hueferry.tables.folds import orientation
+from hueferry.tables.gains import gains
 from hueferry.tables.lookup import look_up
 from hueferry.tables.ramps import Ramp, read_ramps
 from hueferry.tables.table import Table
@@ -129,13 +131,13 @@ def certify(
     """
     written = encoding if output is None else output
     cells = occupied.cells(table)
-    determinant = determinants(table.lattice)
+    turned = orientation(table)
     largest, smallest = gains(table, cells)
     return Certificate(
         size=table.size,
-        tetrahedra=determinant.size,
-        folds=int((determinant < 0).sum()),
-        flat=int((determinant == 0).sum()),
+        tetrahedra=turned.tetrahedra,
+        folds=turned.folds,
+        flat=turned.flat,
         largest_gain=float(largest.max()),
         smallest_gain=float(smallest.min()),
         max_gain=max_gain,

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import attrs
 import numpy as np
 from numpy.typing import NDArray
@@ -9,9 +11,11 @@ from numpy.typing import NDArray
 from hueferry.arrays import Codes
 from hueferry.colour.spaces import SRGB_TO_XYZ_D50, xyz_to_lab
 from hueferry.colour.transfer import srgb_to_linear
-from hueferry.picture import Encoding
+from hueferry.picture import Encoding, EncodingKey
 from hueferry.tables.lookup import look_up
 from hueferry.tables.table import Table
+
+Steps = NDArray[np.float64]
 
 STEPS = 4096
 LARGEST_STEP = 3.0
@@ -50,33 +54,37 @@ class Ramp:
 
 def read_ramps(table: Table, encoding: Encoding, output: Encoding) -> tuple[Ramp, ...]:
     """Send every ramp through a table that reads `encoding` and writes `output`."""
-    found = []
-    for name, low, high in _RAMPS:
-        steps, median = _steps(_codes(low, high, encoding), table, output)
-        falls = int((steps < -_ROUNDING).sum())
-        found.append(Ramp(name, falls, min(float(steps.max()) / median, 1e6)))
-    return tuple(found)
+    followed = _followed(table, EncodingKey(encoding), EncodingKey(output))
+    return tuple(
+        Ramp(name, int((steps < -_ROUNDING).sum()), min(float(steps.max()) / median, 1e6))
+        for (name, _, _), steps, median in zip(_RAMPS, *followed, strict=True)
+    )
 
 
 def uneven_codes(table: Table, encoding: Encoding, output: Encoding) -> Codes:
     """Return the (m, 3) codes at which a ramp falls or jumps; empty where all rise evenly."""
-    found = [np.empty((0, 3))]
-    for _, low, high in _RAMPS:
-        codes = _codes(low, high, encoding)
-        steps, median = _steps(codes, table, output)
-        found.append(codes[1:][(steps < -_ROUNDING) | (steps > LARGEST_STEP * median)])
+    followed = _followed(table, EncodingKey(encoding), EncodingKey(output))
+    found = [
+        codes[1:][(steps < -_ROUNDING) | (steps > LARGEST_STEP * median)]
+        for codes, steps, median in zip(_ramps_in(EncodingKey(encoding)), *followed, strict=True)
+    ]
     return np.concatenate(found)
 
 
-def _codes(low: tuple[float, ...], high: tuple[float, ...], encoding: Encoding) -> Codes:
+@lru_cache(maxsize=8)
+def _ramps_in(key: EncodingKey) -> tuple[Codes, ...]:
+    """Return (`STEPS`, 3) codes of every ramp."""
     position = np.linspace(0.0, 1.0, STEPS)[:, None]
-    srgb = np.array(low) * (1 - position) + np.array(high) * position
-    return np.clip(encoding.from_xyz(srgb_to_linear(srgb) @ SRGB_TO_XYZ_D50.T), 0.0, 1.0)
+    ramps = (np.array(low) * (1 - position) + np.array(high) * position for _, low, high in _RAMPS)
+    return tuple(np.clip(key.encoding.from_xyz(srgb_to_linear(srgb) @ SRGB_TO_XYZ_D50.T), 0.0, 1.0) for srgb in ramps)
 
 
-def _steps(codes: Codes, table: Table, output: Encoding) -> tuple[NDArray[np.float64], float]:
-    lightness = xyz_to_lab(output.to_xyz(np.clip(look_up(table, codes), 0.0, 1.0)))[:, 0]
-    steps = np.diff(lightness)
+@lru_cache(maxsize=2)
+def _followed(table: Table, encoding: EncodingKey, output: EncodingKey) -> tuple[list[Steps], list[float]]:
+    """Return the (`STEPS` − 1,) steps of lightness of every ramp, and their medians; found once for a table."""
+    through = look_up(table, np.concatenate(_ramps_in(encoding)))
+    lightness = xyz_to_lab(output.encoding.to_xyz(np.clip(through, 0.0, 1.0)))[:, 0]
+    steps = [np.diff(one) for one in lightness.reshape(len(_RAMPS), STEPS)]
     # Steps that are clipped away say nothing of the others; where all are, nothing but rounding is left.
-    rising = steps[np.abs(steps) > _ROUNDING]
-    return steps, max(float(np.median(rising)), _ROUNDING) if rising.size else _ROUNDING
+    rising = [one[np.abs(one) > _ROUNDING] for one in steps]
+    return steps, [max(float(np.median(one)), _ROUNDING) if one.size else _ROUNDING for one in rising]

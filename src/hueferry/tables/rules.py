@@ -6,7 +6,9 @@ import attrs
 import numpy as np
 
 from hueferry.picture import Encoding
-from hueferry.tables.cells import Cells, Occupied, determinants_within, steeper
+from hueferry.tables.cells import Cells, Occupied
+from hueferry.tables.folds import determinants_within, orientation
+from hueferry.tables.gains import steeper
 from hueferry.tables.lookup import lattice_positions
 from hueferry.tables.ramps import uneven_codes
 from hueferry.tables.table import Table
@@ -60,9 +62,7 @@ class Rules:
 
     def offences(self, table: Table, within: Box = EVERYWHERE) -> Offences:
         """Return the cells `within` a box that fold or stretch too much, and all that make a ramp uneven."""
-        folded = np.zeros((table.size - 1,) * 3, dtype=bool)
-        nodes = tuple(slice(side.start, None if side.stop is None else side.stop + 1) for side in within)
-        folded[within] = (determinants_within(table.lattice[nodes], table.size - 1.0) < 0).any(axis=0)
+        folded = orientation(table).folded if within == EVERYWHERE else _folded_within(table, within)
         cells = np.zeros_like(folded)
         cells[within] = self.occupied.cells(table)[within]
         steep = np.zeros_like(folded)
@@ -75,3 +75,10 @@ class Rules:
     def obeyed(self, table: Table) -> bool:
         """Whether nothing offends."""
         return not self.offences(table).any
+
+
+def _folded_within(table: Table, within: Box) -> Cells:
+    folded = np.zeros((table.size - 1,) * 3, dtype=bool)
+    nodes = tuple(slice(side.start, None if side.stop is None else side.stop + 1) for side in within)
+    folded[within] = (determinants_within(table.lattice[nodes], table.size - 1.0) < 0).any(axis=0)
+    return folded
