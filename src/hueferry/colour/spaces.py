@@ -41,28 +41,28 @@ SRGB_TO_XYZ_D65: Matrix = primaries_to_xyz(
 )
 SRGB_TO_XYZ_D50: Matrix = adaptation(WHITE_D65, WHITE_D50) @ SRGB_TO_XYZ_D65
 
-_SRGB_TO_CONES: Matrix = np.array(
+SRGB_TO_CONES: Matrix = np.array(
     [
         [0.4122214708, 0.5363325363, 0.0514459929],
         [0.2119034982, 0.6806995451, 0.1073969566],
         [0.0883024619, 0.2817188376, 0.6299787005],
     ]
 )
-_CONES_TO_OKLAB: Matrix = np.array(
+CONES_TO_OKLAB: Matrix = np.array(
     [
         [0.2104542553, 0.7936177850, -0.0040720468],
         [1.9779984951, -2.4285922050, 0.4505937099],
         [0.0259040371, 0.7827717662, -0.8086757660],
     ]
 )
-_OKLAB_TO_CONES: Matrix = np.asarray(np.linalg.inv(_CONES_TO_OKLAB), dtype=np.float64)
-_CONES_TO_SRGB: Matrix = np.asarray(np.linalg.inv(_SRGB_TO_CONES), dtype=np.float64)
+_OKLAB_TO_CONES: Matrix = np.asarray(np.linalg.inv(CONES_TO_OKLAB), dtype=np.float64)
+_CONES_TO_SRGB: Matrix = np.asarray(np.linalg.inv(SRGB_TO_CONES), dtype=np.float64)
 _XYZ_D50_TO_SRGB: Matrix = np.asarray(np.linalg.inv(SRGB_TO_XYZ_D50), dtype=np.float64)
 
 
 def linear_srgb_to_oklab(linear: Linear) -> Colours:
     """Turn (…, 3) linear sRGB into Oklab (Ottosson 2020)."""
-    return np.asarray(np.cbrt(linear @ _SRGB_TO_CONES.T) @ _CONES_TO_OKLAB.T)
+    return np.asarray(np.cbrt(linear @ SRGB_TO_CONES.T) @ CONES_TO_OKLAB.T)
 
 
 def oklab_to_linear_srgb(colours: Colours) -> Linear:

@@ -35,8 +35,8 @@ LIMITS: Mapping[str, float] = MappingProxyType(
 )
 """Largest magnitude of parameters whose curve would stop increasing, or lose its meaning, beyond it."""
 
-_BOUNDS = np.array([LIMITS.get(name, 2.0) for name in NAMES])
-_KNEE = 0.6
+BOUNDS = np.array([LIMITS.get(name, 2.0) for name in NAMES])
+KNEE = 0.6
 
 
 @attrs.frozen(eq=False)
@@ -71,7 +71,7 @@ def render(parameters: Parameters, light: Linear) -> Colours:
     Returns:
         (n, 3), or (k, n, 3).
     """
-    several = np.atleast_2d(np.clip(parameters, -_BOUNDS, _BOUNDS))[:, :, None]
+    several = np.atleast_2d(np.clip(parameters, -BOUNDS, BOUNDS))[:, :, None]
     lab = linear_srgb_to_oklab(_shoulder(light * np.exp(several[:, None, :3, 0]), several[:, 3:4], several[:, 4:5]))
     lightness = lab[..., 0]
     a, b = _chroma(several, lightness, lab[..., 1], lab[..., 2])
@@ -81,7 +81,7 @@ def render(parameters: Parameters, light: Linear) -> Colours:
 
 def _shoulder(light: Linear, strength: Columns, knee: Columns) -> Linear:
     """Roll highlights off (strength > 0) or stretch them (< 0); increasing for every strength, identity at 0."""
-    start = _KNEE * np.exp(knee)
+    start = KNEE * np.exp(knee)
     over = np.maximum(light - start, 0.0)
     down, up = np.maximum(strength, 0.0), np.minimum(strength, 0.0)
     return np.asarray(np.minimum(light, start) + over / (1 + down * over) - up * over * over)
@@ -112,10 +112,3 @@ def _chroma(parameters: Columns, lightness: Plane, a: Plane, b: Plane) -> tuple[
         factor * (cosine * wide_a - sine * wide_b) + parameters[:, 13] * tint,
         factor * (sine * wide_a + cosine * wide_b) + parameters[:, 14] * tint,
     )
-
-
-def sensitivities(parameters: Parameters, light: Linear, steps: Parameters) -> tuple[Colours, NDArray[np.float64]]:
-    """Return `render` (n, 3) and its (n, 3, 15) derivative to the parameters, by forward `steps` (15,)."""
-    rendered = render(np.vstack([parameters, parameters + np.diag(steps)]), light)
-    slopes = (rendered[1:] - rendered[0]) / steps[:, None, None]
-    return rendered[0], np.moveaxis(slopes, 0, 2)

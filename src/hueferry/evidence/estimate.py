@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 from hueferry.arrays import Colours, read_only
 from hueferry.colour.difference import delta_e_2000
 from hueferry.colour.spaces import linear_srgb_to_oklab, oklab_to_lab, oklab_to_linear_srgb
-from hueferry.evidence.camera import SIZE, CameraMap, Parameters, render, sensitivities
+from hueferry.evidence.camera import SIZE, CameraMap, Parameters, render
 from hueferry.evidence.prior import Prior
+from hueferry.evidence.sensitivities import sensitivities
 
 Ends = NDArray[np.bool_]
 
@@ -71,16 +72,15 @@ def fit_camera(
     light = oklab_to_linear_srgb(source)
     trust = weights * (effective / weights.sum())
     parameters = np.array(prior.mean if start is None else start)
-    steps = 0.02 * prior.deviations
     for blur in _SCALES if start is None else _SCALES[_NARROW:]:
-        rendered, slope = sensitivities(parameters, light, steps)
+        rendered, slope = sensitivities(parameters, light)
         residual = reference - rendered if ends is None else lacking(rendered, reference, low=ends[0], high=ends[1])
         squared = (residual**2).sum(axis=1)
         scale = max(_spread(squared, trust), blur)
         say = trust * (HEAVY + 3) / (HEAVY + squared / scale**2)
-        weighted = (slope * (say / scale**2)[:, None, None]).reshape(-1, SIZE)
-        precision = weighted.T @ slope.reshape(-1, SIZE) + prior.precision
-        gradient = weighted.T @ residual.ravel() - prior.precision @ (parameters - prior.mean)
+        weighted = (slope * (say / scale**2)).reshape(SIZE, -1)
+        precision = weighted @ slope.reshape(SIZE, -1).T + prior.precision
+        gradient = weighted @ residual.T.ravel() - prior.precision @ (parameters - prior.mean)
         step = np.linalg.solve(precision, gradient)
         step *= min(1.0, 3.0 / max(float(np.abs(step / prior.deviations).max()), 1e-12))
         parameters = parameters + step

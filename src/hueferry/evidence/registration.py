@@ -12,9 +12,10 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours
 from hueferry.colour.spaces import oklab_to_linear_srgb
-from hueferry.evidence.camera import Parameters, render, sensitivities
+from hueferry.evidence.camera import SIZE, Parameters, render
 from hueferry.evidence.prior import Prior
 from hueferry.evidence.scene import Scene
+from hueferry.evidence.sensitivities import sensitivities
 
 BLURS = (0.15, 0.1, 0.07, 0.05, 0.05, 0.04, 0.04, 0.03, 0.03, 0.03)
 """Oklab distance at which two colours are still taken for the same, from step to step."""
@@ -44,9 +45,9 @@ def register(source: Scene, reference: Scene, prior: Prior) -> Parameters:
     light = oklab_to_linear_srgb(source.colours)
     across = _texture_kernel(source, reference, TEXTURE)
     within = _texture_kernel(source, source, TEXTURE)
-    parameters, steps = np.array(prior.mean), 0.02 * prior.deviations
+    parameters = np.array(prior.mean)
     for blur in BLURS:
-        rendered, slope = sensitivities(parameters, light, steps)
+        rendered, slope = sensitivities(parameters, light)
         goal, mass = _matched(across, rendered, reference.colours, blur)
         drawn, _ = _matched(within, rendered, rendered, blur)
         scale = max(0.7 * blur, _LEAST_SCALE)
@@ -73,9 +74,9 @@ def _step(
     prior: Prior,
 ) -> Parameters:  # fmt: skip
     say = trust * 7 / (4 + (residual**2).sum(axis=1) / scale**2) / scale**2
-    weighted = (slope * say[:, None, None]).reshape(-1, slope.shape[2])
-    precision = weighted.T @ slope.reshape(-1, slope.shape[2]) + prior.precision
-    gradient = weighted.T @ residual.ravel() - prior.precision @ (parameters - prior.mean)
+    weighted = (slope * say).reshape(SIZE, -1)
+    precision = weighted @ slope.reshape(SIZE, -1).T + prior.precision
+    gradient = weighted @ residual.T.ravel() - prior.precision @ (parameters - prior.mean)
     step = np.linalg.solve(precision, gradient)
     return np.asarray(step * min(1.0, 2.0 / max(float(np.abs(step / prior.deviations).max()), 1e-12)))
 
