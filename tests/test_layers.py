@@ -15,6 +15,7 @@ PACKAGE = Path(hueferry.__file__).parent
 LAYERS = (
     "errors",
     "arrays",
+    "threads",
     "picture",
     "colour",
     "files",

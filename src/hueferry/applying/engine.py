@@ -12,7 +12,6 @@ Rules:
 
 from __future__ import annotations
 
-import os
 from collections import deque
 from collections.abc import Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
@@ -30,6 +29,7 @@ from hueferry.errors import InputError
 from hueferry.picture import Encoding, Picture, PictureSink, PictureSource, Window, strips
 from hueferry.tables.identity import is_identity
 from hueferry.tables.table import Table
+from hueferry.threads import processors
 
 STRIP = 1 << 18
 """Pixels of a strip: source and result of one stay in the cache."""
@@ -223,10 +223,3 @@ def _for_gray(picture: Picture) -> Encoding | None:
 def rows_of_strip(width: int) -> int:
     """Return how many rows of `width` pixels make a strip."""
     return max(1, STRIP // width)
-
-
-def processors() -> int:
-    """Return how many processors this process may use."""
-    if hasattr(os, "sched_getaffinity"):
-        return len(os.sched_getaffinity(0))
-    return os.cpu_count() or 1

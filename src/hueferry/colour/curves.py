@@ -53,14 +53,22 @@ class Parametric:
     def decode(self, codes: NDArray[Any]) -> Values:
         """Turn codes (0 … 1) into linear light."""
         magnitude = np.abs(np.asarray(codes, dtype=np.float64))
-        power = np.maximum(self.a * magnitude + self.b, 0.0) ** self.gamma + self.e
-        linear = np.where(magnitude >= self.d, power, self.c * magnitude + self.f)
-        return np.asarray(np.copysign(np.maximum(linear, 0.0), codes))
+        linear = np.asarray(magnitude * self.a + self.b)
+        np.maximum(linear, 0.0, out=linear)
+        np.power(linear, self.gamma, out=linear)
+        linear += self.e
+        if self.d > 0:
+            np.copyto(linear, self.c * magnitude + self.f, where=magnitude < self.d)
+        np.maximum(linear, 0.0, out=linear)
+        return np.asarray(np.copysign(linear, codes))
 
     def encode(self, linear: NDArray[Any]) -> Values:
         """Turn linear light into codes; light between the two pieces of a curve with a jump goes to the joint."""
         magnitude = np.abs(np.asarray(linear, dtype=np.float64))
-        codes = (np.maximum(magnitude - self.e, 0.0) ** (1 / self.gamma) - self.b) / self.a
+        codes = np.asarray(np.maximum(magnitude - self.e, 0.0))
+        np.power(codes, 1 / self.gamma, out=codes)
+        codes -= self.b
+        codes /= self.a
         if self.d > 0:
             joint = (self.a * self.d + self.b) ** self.gamma + self.e
             below = (magnitude - self.f) / self.c if self.c > 0 else np.zeros_like(magnitude)

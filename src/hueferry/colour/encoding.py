@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from functools import cached_property
+
 import attrs
 import numpy as np
 from numpy.typing import NDArray
@@ -38,13 +40,17 @@ class MatrixEncoding:
 
     def to_xyz(self, codes: Codes) -> Xyz:
         """Turn (n, 3) codes into XYZ (D50)."""
-        linear = np.stack([curve.decode(codes[:, channel]) for channel, curve in enumerate(self.curves)], axis=1)
-        return np.asarray(linear @ self.matrix.T)
+        linear = np.stack([curve.decode(codes[:, channel]) for channel, curve in enumerate(self.curves)])
+        return np.asarray((self.matrix @ linear).T)
 
     def from_xyz(self, xyz: Xyz) -> Codes:
         """Turn (n, 3) XYZ (D50) into codes, not clipped."""
-        linear = xyz @ np.linalg.inv(self.matrix).T
-        return np.stack([curve.encode(linear[:, channel]) for channel, curve in enumerate(self.curves)], axis=1)
+        linear = self._inverse @ xyz.T
+        return np.stack([curve.encode(channel) for channel, curve in zip(linear, self.curves, strict=True)]).T
+
+    @cached_property
+    def _inverse(self) -> NDArray[np.float64]:
+        return np.asarray(np.linalg.inv(self.matrix))
 
 
 def _of_primaries(

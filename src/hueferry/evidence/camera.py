@@ -72,10 +72,10 @@ def render(parameters: Parameters, light: Linear) -> Colours:
         (n, 3), or (k, n, 3).
     """
     several = np.atleast_2d(np.clip(parameters, -BOUNDS, BOUNDS))[:, :, None]
-    lab = linear_srgb_to_oklab(_shoulder(light * np.exp(several[:, None, :3, 0]), several[:, 3:4], several[:, 4:5]))
-    lightness = lab[..., 0]
-    a, b = _chroma(several, lightness, lab[..., 1], lab[..., 2])
-    carried = np.stack([_tone(several, lightness), a, b], axis=-1)
+    lit = np.ascontiguousarray(light.T) * np.exp(several[:, :3])  # channel by channel, (k, 3, n)
+    rolled = _shoulder(lit, several[:, 3:4], several[:, 4:5])
+    lightness, a, b = np.moveaxis(linear_srgb_to_oklab(np.swapaxes(rolled, 1, 2)), 2, 0)
+    carried = np.swapaxes(np.stack([_tone(several, lightness), *_chroma(several, lightness, a, b)], axis=1), 1, 2)
     return carried if np.ndim(parameters) == 2 else carried[0]
 
 

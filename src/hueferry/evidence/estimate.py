@@ -118,10 +118,7 @@ def expected_error(
     The posterior stands in for the unknown map by one deviation to both sides along each of its principal axes.
     """
     values, axes = np.linalg.eigh(covariance)
-    light, lab = oklab_to_linear_srgb(colours), oklab_to_lab(map_(colours))
-    variance = np.zeros(len(colours))
-    for value, axis in zip(values, axes.T, strict=True):
-        spread = np.sqrt(max(float(value), 0.0)) * axis
-        sides = [delta_e_2000(oklab_to_lab(render(parameters + sign * spread, light)), lab) for sign in (1, -1)]
-        variance += (sides[0] ** 2 + sides[1] ** 2) / 2
-    return float(np.sqrt(variance).mean())
+    spreads = np.sqrt(np.maximum(values, 0.0))[:, None] * axes.T
+    sides = render(np.concatenate([parameters + spreads, parameters - spreads]), oklab_to_linear_srgb(colours))
+    differences = delta_e_2000(oklab_to_lab(sides), oklab_to_lab(map_(colours)))
+    return float(np.sqrt((differences**2).sum(axis=0) / 2).mean())

@@ -7,12 +7,12 @@ are those of a stream encoded in one go, byte for byte, and how a picture is div
 
 from __future__ import annotations
 
-import os
-from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
+
+from hueferry.threads import each
 
 _PART = 3 << 19
 """Pixels of a band, about: 24 megapixels make two groups of eight bands, one for each of two cores to verify."""
@@ -36,8 +36,7 @@ def encode_in_parts(pixels: NDArray[np.uint8], *, quality: int, sampling: str) -
     tops = range(0, pixels.shape[0], band)
     if len(tops) == 1:
         return _encode(pixels, quality, sampling)
-    with ThreadPoolExecutor(min(len(tops), os.cpu_count() or 1)) as pool:
-        streams = list(pool.map(lambda top: _encode(pixels[top : top + band], quality, sampling), tops))
+    streams = each(lambda top: _encode(pixels[top : top + band], quality, sampling), tops)
     return _joined(streams, pixels.shape[0], across * band // rows)
 
 

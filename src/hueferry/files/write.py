@@ -3,9 +3,7 @@
 from __future__ import annotations
 
 import io
-import os
 from collections.abc import Callable, Mapping
-from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 from types import MappingProxyType
 
@@ -20,6 +18,7 @@ from hueferry.files.formats import FORMATS, Format, codec, missing, named
 from hueferry.files.light import light_of
 from hueferry.files.thumbnail import upright
 from hueferry.picture import Picture
+from hueferry.threads import each
 
 
 def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int | None = None) -> Path:
@@ -164,9 +163,7 @@ def _seen_by_pillow(made: Path) -> tuple[tuple[int, int], str]:
             image.load()
             return shape, kind
     parts = standing_alone(made.read_bytes())
-    with ThreadPoolExecutor(min(len(parts), os.cpu_count() or 1)) as pool:
-        rows = sum(pool.map(_decoded_rows, parts))
-    return (rows, shape[1]), kind
+    return (sum(each(_decoded_rows, parts)), shape[1]), kind
 
 
 def _decoded_rows(stream: bytes) -> int:

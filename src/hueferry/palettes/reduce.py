@@ -76,7 +76,8 @@ def _mean(colours: Colours, weights: Weights) -> Colours:
 
 def _second_moments(colours: Colours, weights: Weights) -> Colours:
     """Return Σ w x xᵀ; not by matrix product, whose last bits may change with the number of threads."""
-    return np.asarray(np.einsum("i,ij,ik->jk", weights, colours, colours))
+    columns = np.ascontiguousarray(colours.T)
+    return np.asarray(np.einsum("ji,ki->jk", columns * weights, columns))
 
 
 def _restored(colours: Colours, weights: Weights, wanted: Colours) -> Colours:
@@ -208,11 +209,12 @@ class _Split:
         fresh = self.groups + np.arange(chosen.size)
         child = np.full(self.groups, -1, dtype=np.int64)
         child[chosen] = fresh
-        first, second, third = (
-            column * axis[self.labels] for column, axis in zip(self.columns, self.axis, strict=True)
-        )
-        along = first + second + third
-        moved = np.flatnonzero((child[self.labels] >= 0) & (along > self.offset[self.labels]))
+        concerned = np.flatnonzero(child[self.labels] >= 0)
+        held = self.labels[concerned]
+        along = -self.offset[held]
+        for column, axis in zip(self.columns, self.axis, strict=True):
+            along += column[concerned] * axis[held]
+        moved = concerned[along > 0]
         target = child[self.labels[moved]]
         for row, feature in zip(self.moments, self.features, strict=True):
             gone = np.bincount(target - self.groups, feature[moved], chosen.size)

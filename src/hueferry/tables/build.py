@@ -17,6 +17,7 @@ from hueferry.picture import Encoding, EncodingKey
 from hueferry.tables.clipped import hold_clipped
 from hueferry.tables.lookup import node_codes
 from hueferry.tables.table import Table
+from hueferry.threads import each
 
 CodeFunction = Callable[[Codes], Codes]
 """(n, 3) codes to (n, 3) codes, not clipped; pure."""
@@ -30,7 +31,8 @@ _KNOTS = 4096
 _LINEAR_FROM = 0.25
 """Lightness (0 … 1) of code 1/32 above which codes count as linear in light: 0.13 for sRGB, 0.31 for linear light."""
 
-_BLOCK = 1 << 15
+_BLOCK = 1 << 14
+"""Nodes at a time: what is computed on the way stays in the cache."""
 
 
 def sample_table(function: CodeFunction, *, size: int = 33, curves: NDArray[np.float32] | None = None) -> Table:
@@ -48,7 +50,8 @@ def sample_table(function: CodeFunction, *, size: int = 33, curves: NDArray[np.f
         raise InputError(f"a table has 2 … 129 nodes along an axis, not {size}")
     red, green, blue = node_codes(size, curves)
     nodes = np.stack(np.meshgrid(red, green, blue, indexing="ij"), axis=-1).reshape(-1, 3)
-    values = np.concatenate([function(nodes[start : start + _BLOCK]) for start in range(0, len(nodes), _BLOCK)])
+    starts = range(0, len(nodes), _BLOCK)
+    values = np.concatenate(each(lambda start: function(nodes[start : start + _BLOCK]), starts))
     return Table(values.reshape(size, size, size, 3), curves)
 
 

@@ -32,8 +32,9 @@ def hold_clipped(function: Callable[[Codes], Codes]) -> Callable[[Codes], Codes]
 
     def held(codes: Codes) -> Codes:
         codes = np.asarray(codes)
-        near_white = _nearness(1.0 - codes.min(axis=1), float(raised.max()))
-        near_black = _nearness(codes.max(axis=1), float(-lowered.min()))
+        red, green, blue = codes.T  # channel by channel is several times faster than along the last axis
+        near_white = _nearness(1.0 - np.minimum(np.minimum(red, green), blue), float(raised.max()))
+        near_black = _nearness(np.maximum(np.maximum(red, green), blue), float(-lowered.min()))
         return np.asarray(function(codes) + near_white[:, None] * raised + near_black[:, None] * lowered)
 
     return held

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from hueferry.tables.cells import ORDERS, Cells, Floats, dot
 from hueferry.tables.table import Table
+from hueferry.threads import each
 
 _ROW = {order[:2]: row for row, order in enumerate(ORDERS)}
 """Which tetrahedron is walked along two given channels first."""
@@ -62,9 +63,12 @@ def determinants_within(part: NDArray[np.float32], unit: float) -> Floats:
     shape = tuple(length - 1 for length in part.shape[:3])
     found = np.empty((6, *shape))
     rounding = 2.0**-23 * max(1.0, float(np.abs(part).max())) * unit
-    for start in range(0, shape[0], _SLAB):
+
+    def fill(start: int) -> None:
         stop = min(start + _SLAB, shape[0])
         _fill_determinants(part[start : stop + 1], unit, rounding, found[:, start:stop])
+
+    each(fill, range(0, shape[0], _SLAB))
     return found
 
 
