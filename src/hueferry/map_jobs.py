@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -80,6 +80,37 @@ def apply_file(
             written.append(write(result, errand.output, overwrite=overwrite))
         except HueferryError as error:
             failures.append(Failure(errand.source.as_posix(), str(error)))
+    return written, failures
+
+
+def apply_to_slides(
+    saved: SavedMap, slides: Sequence[Path], *, out: Path, choices: Mapping[str, Any] | None = None
+) -> tuple[list[Path], list[Failure]]:
+    """Send slides and folders of slides through a saved map, by windows; what cannot be done is a `Failure`.
+
+    Args:
+        saved: the map.
+        slides: slides and folders of slides.
+        out: folder of the results.
+        choices: fields of `slides.settings.StainSettings` that say how slides are written, in plain words.
+
+    Raises:
+        InputError: there is no slide, or two results would have one name.
+    """
+    from hueferry.slides.readers import find_slides
+    from hueferry.slides.settings import check_names, settings_from_words
+    from hueferry.slides.write import map_slide
+
+    settings = settings_from_words(choices or {})
+    found = [path for path in find_slides(slides) if not path.resolve().is_relative_to(out.resolve())]
+    check_names(found, out, settings.layout)
+    out.mkdir(parents=True, exist_ok=True)
+    written, failures = [], []
+    for path in found:
+        try:
+            written.append(map_slide(path, saved.table, out, settings))
+        except HueferryError as error:
+            failures.append(Failure(path.as_posix(), str(error)))
     return written, failures
 
 

@@ -69,16 +69,23 @@ def apply(
     ] = None,
     undo: Annotated[bool, typer.Option("--undo", help="Run the map backwards; maps that fold cannot be.")] = False,
     correction: Correction = None,
+    stain: Annotated[bool, typer.Option("--stain", help="They are slides: read and write them by windows.")] = False,
+    layout: options.Layout = "ome",
+    packing: options.Packing = "auto",
     json: options.Json = False,
     overwrite: options.Overwrite = False,
 ) -> None:
-    """Send pictures through a saved map; nothing is measured or fitted."""
-    from hueferry.map_jobs import apply_file, open_maps
+    """Send pictures, or with --stain slides, through a saved map; nothing is measured or fitted."""
+    from hueferry.map_jobs import apply_file, apply_to_slides, open_maps
 
     saved = open_maps([map_file, *(then or [])], correction=correction, undo=undo)
     for sentence in saved.sentences:
         remark(sentence)
-    written, failures = apply_file(saved, pictures, out=out, overwrite=overwrite)
+    if stain:
+        choices = {"layout": layout, "packing": packing, "overwrite": overwrite}
+        written, failures = apply_to_slides(saved, pictures, out=out, choices=choices)
+    else:
+        written, failures = apply_file(saved, pictures, out=out, overwrite=overwrite)
     if json:
         show_json(
             {

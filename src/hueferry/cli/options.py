@@ -42,6 +42,8 @@ MaxGain = Annotated[
     typer.Option("--max-gain", help="Largest stretch of code values (2.5 for 8 bit, 4 for deeper).", min=1.0),
 ]
 Seed = Annotated[int, typer.Option("--seed", help="Same seed, same bytes.")]
+Layout = Annotated[str, typer.Option("--layout", help="Of slides: ome (SubIFDs), flat (pages) or zarr.")]
+Packing = Annotated[str, typer.Option("--packing", help="Of slides: auto, jpeg, deflate or zstd.")]
 Json = Annotated[bool, typer.Option("--json", help="Print the result as JSON.")]
 Quiet = Annotated[bool, typer.Option("--quiet", help="Print nothing but the result.")]
 Workers = Annotated[

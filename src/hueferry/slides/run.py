@@ -2,20 +2,15 @@
 
 from __future__ import annotations
 
-from collections import deque
-from collections.abc import Iterator
-from concurrent.futures import Future, ThreadPoolExecutor
 from pathlib import Path
 from typing import Any
 
 import attrs
 import numpy as np
 
-from hueferry.arrays import Mask, Pixels
-from hueferry.errors import OutputError
-from hueferry.picture import Picture, Window
+from hueferry.arrays import Mask
+from hueferry.picture import Picture
 from hueferry.slides.cautions import AMOUNT_IS_MEASURED, CAUTIONS
-from hueferry.slides.codecs import Packing
 from hueferry.slides.density import Light
 from hueferry.slides.fit import SlideFit, fit_slide
 from hueferry.slides.gather import look_at_slide
@@ -24,12 +19,10 @@ from hueferry.slides.quality import compare, describe_slide, overlay, within
 from hueferry.slides.readers import open_slide
 from hueferry.slides.reference import SlideReference
 from hueferry.slides.refuse import amount_is_measured
-from hueferry.slides.settings import Container, StainSettings, output_path, overlay_path
-from hueferry.slides.source import SlideSource
-from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
+from hueferry.slides.settings import StainSettings, free_output, overlay_path
+from hueferry.slides.write import write_corrected
 
-_WIDE = 1 << 16
-"""Columns above which one band at a time is read ahead, so that memory stays bounded."""
+_DERIVED = "Stain colours brought towards a reference (aim {})"
 
 
 @attrs.frozen(eq=False)
@@ -81,9 +74,7 @@ def stain_slide(
         OutputError: the output's name is taken, or nothing can be written there.
     """
     chosen = settings or StainSettings()
-    target = output_path(path, out, chosen.layout)
-    if target.resolve() == path.resolve():
-        raise OutputError(target, "this is the original, which is never overwritten; name another folder")
+    target = free_output(path, out, chosen.layout)
     source = open_slide(path)
     try:
         look = look_at_slide(path, source, light=chosen.light, mask=mask)
@@ -96,7 +87,7 @@ def stain_slide(
         if chosen.measure_only or held_back:
             said = (*sentences, AMOUNT_IS_MEASURED) if held_back else sentences
             return SlideOutcome(path, None, None, fit, numbers, said)
-        _write(source, fit, target, chosen)
+        write_corrected(source, fit.table, target, chosen, derived=_DERIVED.format(chosen.aim.value))
         shown = overlay_path(path, out)
         return SlideOutcome(path, target, _write_overlay(look, shown, chosen), fit, numbers, sentences)
     finally:
@@ -123,55 +114,6 @@ def _numbers(look: Look, fit: SlideFit, reference: SlideReference) -> dict[str, 
     engine = Engine(fit.table, look.thumbnail.dtype, look.bits)
     after = within(look, engine.apply(np.ascontiguousarray(look.thumbnail)))
     return {**compare(look, after, reference), "basis": fit.basis, "certificate": fit.certificate.as_dict()}
-
-
-def _write(source: SlideSource, fit: SlideFit, target: Path, settings: StainSettings) -> None:
-    dtype = source.read(Window(0, 0, 1, 1)).dtype
-    form = SlideForm(source.shape, dtype, source.encoding, source.facts.pitch)
-    bands = corrected_bands(source, fit, threads=settings.threads)
-    if settings.layout is Container.ZARR:
-        from hueferry.slides.zarr_writer import write_zarr_slide
-
-        write_zarr_slide(target, bands, form, threads=settings.threads, overwrite=settings.overwrite)
-        return
-    packing = settings.packing or (Packing.JPEG if dtype == np.uint8 else Packing.DEFLATE)
-    options = TiffOptions(
-        layout=Layout(settings.layout.value), packing=packing, quality=settings.quality, threads=settings.threads,
-        note=_note(source, settings),
-    )  # fmt: skip
-    write_tiff_slide(target, bands, form, options=options, overwrite=settings.overwrite)
-
-
-def _note(source: SlideSource, settings: StainSettings) -> str:
-    derived = (
-        f"Derived: stain colours brought towards a reference (aim {settings.aim.value}) by hueferry. {CAUTIONS[0]}"
-    )
-    if not settings.keep_texts:
-        return derived
-    texts = "; ".join(f"{name}: {text}" for name, text in source.facts.texts.items())
-    plain = "".join(character if 32 <= ord(character) < 127 else " " for character in texts)
-    return f"{derived} Source: {plain}"
-
-
-def corrected_bands(source: SlideSource, fit: SlideFit, *, threads: int = 2) -> Iterator[Pixels]:
-    """Yield the corrected full size in bands of `TILE` rows; read and mapped by threads, a few at a time."""
-    from hueferry.applying.engine import Engine
-
-    height, width = source.shape
-    engine = Engine(fit.table, source.read(Window(0, 0, 1, 1)).dtype, source.bits)
-
-    def work(top: int) -> Pixels:
-        return engine.apply(source.read(Window(top, 0, min(TILE, height - top), width)), top=top)
-
-    ahead = 1 if width > _WIDE else max(1, threads)
-    with ThreadPoolExecutor(max(1, threads)) as pool:
-        pending: deque[Future[Pixels]] = deque()
-        for top in range(0, height, TILE):
-            pending.append(pool.submit(work, top))
-            if len(pending) > ahead:
-                yield pending.popleft().result()
-        while pending:
-            yield pending.popleft().result()
 
 
 def _write_overlay(look: Look, path: Path, settings: StainSettings) -> Path:

@@ -9,7 +9,7 @@ from typing import Any, TypeVar
 
 import attrs
 
-from hueferry.errors import InputError
+from hueferry.errors import InputError, OutputError
 from hueferry.maps.method import Method
 from hueferry.slides.codecs import Packing
 from hueferry.slides.density import Light
@@ -81,6 +81,18 @@ def stem_of(path: Path) -> str:
 def output_path(path: Path, out: Path, layout: Container) -> Path:
     """Return where the output of a slide goes."""
     return out / (stem_of(path) + SUFFIXES[layout])
+
+
+def free_output(path: Path, out: Path, layout: Container) -> Path:
+    """Return where the output of a slide goes.
+
+    Raises:
+        OutputError: that is the slide itself.
+    """
+    target = output_path(path, out, layout)
+    if target.resolve() == path.resolve():
+        raise OutputError(target, "this is the original, which is never overwritten; name another folder")
+    return target
 
 
 def overlay_path(path: Path, out: Path) -> Path:
