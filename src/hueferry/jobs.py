@@ -13,6 +13,8 @@ import numpy as np
 
 from hueferry.api import as_reference, read, report
 from hueferry.errors import InputError
+from hueferry.measure.noise import NoiseFloor
+from hueferry.palettes.palette import Palette
 from hueferry.record.record import Record
 from hueferry.series.match import MatchOrder, OnDone, OnPlan
 
@@ -43,8 +45,10 @@ def match_files(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done: On
 def cost_table(paths: Sequence[Path], *, out: Path | None = None) -> dict[str, Any]:
     """Compare pictures each with each: every figure of every pair, units, noise, and a map of three or more.
 
+    A saved palette has no blocks to resample, so pairs with one have no noise floor: `noise` is None.
+
     Args:
-        paths: two pictures or more.
+        paths: two pictures or saved palettes or more.
         out: folder for a report page; None writes nothing.
 
     Returns:
@@ -55,19 +59,16 @@ def cost_table(paths: Sequence[Path], *, out: Path | None = None) -> dict[str, A
     """
     from hueferry.measure.cost import SCHEMA, UNITS, measure
     from hueferry.measure.matrix import compare
-    from hueferry.measure.noise import judge, noise_floor
-    from hueferry.palettes.build import palette_of
+    from hueferry.measure.noise import judge_as_dict
 
-    pictures = [read(path) for path in paths]
     names = distinct_names(paths)
-    palettes = [palette_of(picture) for picture in pictures]
-    floors = [noise_floor(picture) for picture in pictures]
+    counted = [_palette_and_floor(path) for path in paths]
+    palettes = [palette for palette, _ in counted]
     pairs = []
-    for i, j in combinations(range(len(paths)), 2):
-        figures = measure(palettes[i], palettes[j])
-        judgement = judge(figures.sliced_w2, floors[i], floors[j])
-        noise = {"sampling": judgement.sampling, "within": judgement.within}
-        pairs.append({"a": names[i], "b": names[j], **figures.as_dict(), "noise": noise, "verdict": judgement.sentence})
+    for (i, (one, first)), (j, (other, second)) in combinations(enumerate(counted), 2):
+        figures = measure(one, other)
+        judged = judge_as_dict(figures.sliced_w2, first, second)
+        pairs.append({"a": names[i], "b": names[j], **figures.as_dict(), **judged})
     table: dict[str, Any] = {"schema": SCHEMA, "pairs": pairs, "units": dict(UNITS)}
     if len(paths) > 2:
         table["comparison"] = compare(palettes, names).as_dict()
@@ -76,6 +77,18 @@ def cost_table(paths: Sequence[Path], *, out: Path | None = None) -> dict[str, A
 
         write_cost_page(table, out)
     return table
+
+
+def _palette_and_floor(path: Path) -> tuple[Palette, NoiseFloor | None]:
+    """Return the palette of a file, and the noise floor if it is a picture."""
+    from hueferry.measure.noise import noise_floor
+    from hueferry.palettes.build import palette_of
+    from hueferry.palettes.saved import is_palette, read_palette
+
+    if is_palette(path):
+        return read_palette(path), None
+    picture = read(path)
+    return palette_of(picture), noise_floor(picture)
 
 
 def distinct_names(paths: Sequence[Path]) -> list[str]:
@@ -223,21 +236,28 @@ def check_folder(folder: Path, *, recreated: str | None = None) -> list[str]:
     return complaints
 
 
-def palette_file(pictures: Sequence[Path], *, out: Path, overwrite: bool = False) -> dict[str, Any]:
-    """Save the palette of a picture, or the common palette of several, and return what it is as JSON values.
+def palette_file(
+    pictures: Sequence[Path], *, out: Path, merged: bool = False, overwrite: bool = False
+) -> dict[str, Any]:
+    """Save the palette of a picture, or one palette of several, and return what it is as JSON values.
+
+    Args:
+        pictures: pictures, and palettes saved before.
+        out: where it is saved; the name says in which form.
+        merged: count all pixels together; else find what the palettes have in common.
+        overwrite: replace an earlier palette.
 
     Raises:
         InputError: a picture cannot be read, or the palette cannot be written as asked.
     """
-    from hueferry.errors import OutputError
     from hueferry.files.atomic import write_bytes
-    from hueferry.fitting.reference import PALETTE_SUFFIXES, joint_palette
-    from hueferry.palettes.cgats import cgats_text
+    from hueferry.fitting.reference import joint_palette
+    from hueferry.palettes.saved import check_name, merge, palette_text
 
-    if out.suffix.lower() not in PALETTE_SUFFIXES:
-        raise OutputError(out, "a palette is saved as CGATS text; let its name end in .txt or .cgats")
-    found = joint_palette([as_reference(path) for path in pictures])
-    write_bytes(out, cgats_text(found).encode(), overwrite=overwrite)
+    check_name(out)
+    references = [as_reference(path) for path in pictures]
+    found = merge([one.palette for one in references]) if merged else joint_palette(references)
+    write_bytes(out, palette_text(found, out).encode(), overwrite=overwrite)
     names = [path.as_posix() for path in pictures]
     return {"schema": "hueferry/palette-1", "palette": out.as_posix(), "colours": len(found), "pictures": names}
 

@@ -13,7 +13,9 @@ from hueferry.errors import InputError
 
 
 def cost(
-    pictures: Annotated[list[Path], typer.Argument(help="Two pictures or more.", metavar="A B [C ...]")],
+    pictures: Annotated[
+        list[Path], typer.Argument(help="Two pictures or saved palettes, or more.", metavar="A B [C ...]")
+    ],
     *,
     out: Annotated[Path | None, typer.Option("--out", help="Folder for a report page of the comparison.")] = None,
     json: options.Json = False,

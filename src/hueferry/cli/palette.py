@@ -14,9 +14,12 @@ from hueferry.cli.terminal import show_json, show_lines
 def palette(
     pictures: Annotated[list[Path], typer.Argument(help="Pictures, or palettes saved before.", metavar="PICTURE...")],
     out: Annotated[
-        Path, typer.Option("--out", help="Where the palette is saved, as .txt or .cgats; of slides, as .json.")
+        Path, typer.Option("--out", help="Where the palette is saved: .txt or .cgats for CGATS text, or .json.")
     ],
     *,
+    merge: Annotated[
+        bool, typer.Option("--merge", help="Count all pixels together, instead of finding what they have in common.")
+    ] = False,
     stain: Annotated[bool, typer.Option("--stain", help="They are slides: save their house palette.")] = False,
     light: Annotated[
         str, typer.Option("--light", help="Of slides: optical density of encoded or linear values.")
@@ -33,7 +36,7 @@ def palette(
     if stain:
         saved = house_palette_file(pictures, out=out, light=light, overwrite=overwrite)
     else:
-        saved = palette_file(pictures, out=out, overwrite=overwrite)
+        saved = palette_file(pictures, out=out, merged=merge, overwrite=overwrite)
     if json:
         show_json(saved)
     else:

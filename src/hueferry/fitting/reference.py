@@ -15,9 +15,6 @@ from hueferry.picture import Picture
 if TYPE_CHECKING:
     from hueferry.evidence.reduced import Reduced
 
-PALETTE_SUFFIXES = frozenset({".txt", ".cgats"})
-"""How the names of saved palettes end."""
-
 
 @attrs.frozen(eq=False)
 class Reference:
@@ -51,10 +48,10 @@ class Reference:
         Raises:
             InputError: the file cannot be read as what its name says.
         """
-        if path.suffix.lower() in PALETTE_SUFFIXES:
-            from hueferry.palettes.cgats import read_cgats
+        from hueferry.palettes.saved import is_palette, read_palette
 
-            return cls(path.name, read_cgats(path))
+        if is_palette(path):
+            return cls(path.name, read_palette(path))
         from hueferry.files.read import read
 
         return cls.of_picture(read(path), path.name)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import attrs
 import numpy as np
 
@@ -105,6 +107,16 @@ def judge(difference: float, first: NoiseFloor, second: NoiseFloor) -> Judgement
     else:
         answer = f"no more than chance explains ({sampling:.1f})"
     return Judgement(difference, sampling, within, f"The palettes differ by {difference:.1f} ΔE*ab: {answer}.")
+
+
+def judge_as_dict(difference: float, first: NoiseFloor | None, second: NoiseFloor | None) -> dict[str, Any]:
+    """Return `noise` and `verdict` of a pair as JSON values; without both floors nothing is judged."""
+    if first is None or second is None:
+        said = f"The palettes differ by {difference:.1f} ΔE*ab; a saved palette does not say how much of it is noise."
+        return {"noise": None, "verdict": said}
+    judgement = judge(difference, first, second)
+    noise = {"sampling": judgement.sampling, "within": judgement.within}
+    return {"noise": noise, "verdict": judgement.sentence}
 
 
 def _halve_pixels(counts: Counts, rng: np.random.Generator) -> tuple[Counts, Counts]:

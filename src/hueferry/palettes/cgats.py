@@ -19,7 +19,7 @@ from hueferry.palettes.palette import Palette
 SCHEMA = "hueferry/palette-1"
 _FIELDS = ("LAB_L", "LAB_A", "LAB_B", "WEIGHT")
 _LARGEST_FILE = 16 << 20
-_LARGEST_PALETTE = 1 << 16
+LARGEST_PALETTE = 1 << 16
 
 
 def cgats_text(palette: Palette) -> str:
@@ -56,16 +56,28 @@ def read_cgats(path: Path) -> Palette:
             match its checksum.
     """
     try:
+        return palette_from_cgats(text_of(path))
+    except PaletteError as error:
+        raise PaletteError(f"{path}: {error}") from error
+
+
+def text_of(path: Path) -> str:
+    """Return the text of a palette file.
+
+    Raises:
+        PaletteError: it cannot be read, is too large, or is no UTF-8; the message does not name the file.
+    """
+    try:
         with path.open("rb") as stream:
             data = stream.read(_LARGEST_FILE + 1)
     except OSError as error:
-        raise PaletteError(f"{path}: it cannot be read: {error.strerror or error}") from error
+        raise PaletteError(f"it cannot be read: {error.strerror or error}") from error
     if len(data) > _LARGEST_FILE:
-        raise PaletteError(f"{path}: it is larger than {_LARGEST_FILE >> 20} MB, which no palette is")
+        raise PaletteError(f"it is larger than {_LARGEST_FILE >> 20} MB, which no palette is")
     try:
-        return palette_from_cgats(data.decode("utf-8"))
-    except (PaletteError, UnicodeDecodeError) as error:
-        raise PaletteError(f"{path}: {error}") from error
+        return data.decode("utf-8")
+    except UnicodeDecodeError as error:
+        raise PaletteError(f"it is no text: {error}") from error
 
 
 def palette_from_cgats(text: str) -> Palette:
@@ -77,8 +89,8 @@ def palette_from_cgats(text: str) -> Palette:
     lines = [" ".join(line.split()) for line in text.splitlines()]
     fields = " ".join(_between(lines, "BEGIN_DATA_FORMAT", "END_DATA_FORMAT")).split()
     rows = [line for line in _between(lines, "BEGIN_DATA", "END_DATA") if line]
-    if not 1 <= len(rows) <= _LARGEST_PALETTE:
-        raise PaletteError(f"a palette has 1 … {_LARGEST_PALETTE} colours, and this text holds {len(rows)}")
+    if not 1 <= len(rows) <= LARGEST_PALETTE:
+        raise PaletteError(f"a palette has 1 … {LARGEST_PALETTE} colours, and this text holds {len(rows)}")
     stated = [line.split()[1].strip('"') for line in lines if line.startswith("HUEFERRY_SHA256 ")]
     if stated and stated != [_digest(rows)]:
         raise PaletteError("its numbers do not match its checksum; the file was changed or damaged")
