@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Codes
 from hueferry.errors import InputError
-from hueferry.tables.cells import determinants
 from hueferry.tables.express import express, express_function, lattice_operation
+from hueferry.tables.folds import determinants
 from hueferry.tables.lookup import look_up, tetrahedral
 from hueferry.tables.misfit import Misfit, misfit, probes
 from hueferry.tables.process import ProcessList
