@@ -8,8 +8,9 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
-from hueferry.arrays import Codes
+from hueferry.arrays import Codes, Colours
 from hueferry.colour.gamut import compress
+from hueferry.colour.profile import TabulatedEncoding
 from hueferry.colour.spaces import oklab_to_xyz, xyz_to_oklab
 from hueferry.errors import InputError
 from hueferry.maps.protocol import Map
@@ -90,9 +91,21 @@ def code_function(
         colours = xyz_to_oklab(encoding.to_xyz(codes))
         carried = map_(colours)
         held = compress(carried, written, source=colours) if into_gamut else carried
-        return written.from_xyz(oklab_to_xyz(held))
+        result = written.from_xyz(oklab_to_xyz(held))
+        return result + _misread(encoding, codes, colours) if written is encoding else result
 
     return hold_clipped(through) if hold_ends else through
+
+
+def _misread(encoding: Encoding, codes: Codes, colours: Colours) -> Codes:
+    """Return what codes lose on the way to colours and back, which is no part of a map.
+
+    A profile's tables are searched for the code of a colour, and where they are flat the search ends beside it.
+    Formulas find the way back, but for rounding.
+    """
+    if not isinstance(encoding, TabulatedEncoding):
+        return np.zeros(3)
+    return np.asarray(codes - encoding.from_xyz(oklab_to_xyz(colours)))
 
 
 def input_curves(encoding: Encoding, size: int) -> NDArray[np.float32]:
