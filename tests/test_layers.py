@@ -45,6 +45,7 @@ HOMES = {
     "imagecodecs": {"files", "slides", "colour"},
     "pyjpegxl": {"files"},
     "OpenEXR": {"files"},
+    "Imath": {"files"},
     "pi_heif": {"files"},
     "PIL": {"files", "colour", "samples"},
     "PyOpenColorIO": {"tables", "applying"},

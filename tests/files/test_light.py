@@ -97,6 +97,19 @@ def test_attributes_and_windows_come_back_as_they_were(tmp_path: Path) -> None:
     np.testing.assert_array_equal(planes(written)[1]["G"], planes(path)[1]["G"])
 
 
+@pytest.mark.parametrize("packing", ["NO", "RLE", "ZIPS", "ZIP", "PIZ"])
+@pytest.mark.parametrize("kind", ["scanlineimage", "tiledimage"])
+def test_strips_and_tiles_of_every_lossless_packing_are_read(packing: str, kind: str, tmp_path: Path) -> None:
+    facts = {"tiles": OpenEXR.TileDescription()} if kind == "tiledimage" else {}
+    path = exr(tmp_path / "a.exr", scene(4), compression=getattr(OpenEXR, f"{packing}_COMPRESSION"),
+               type=getattr(OpenEXR, kind), **facts)  # fmt: skip
+
+    header, channels = planes(write(read(path), tmp_path / "b.exr"))
+
+    assert str(header["compression"]) == f"Compression.{packing}_COMPRESSION"
+    np.testing.assert_array_equal(np.dstack([channels[name] for name in "RGB"]), scene(4))
+
+
 def test_lossy_packings_become_lossless_ones(tmp_path: Path) -> None:
     first = read(exr(tmp_path / "a.exr", scene().astype(np.float16), compression=OpenEXR.DWAA_COMPRESSION))
 
@@ -254,6 +267,19 @@ def test_the_first_part_and_its_colours_are_read_if_the_loss_is_accepted(tmp_pat
     for name in ("a.exr", "b.exr"):
         picture = read(tmp_path / name, accept_loss=True)
         np.testing.assert_array_equal(light_of(picture, associated=True), scene(32))
+
+
+def test_broken_chunks_are_said_once_and_not_on_standard_output(
+    tmp_path: Path, capfd: pytest.CaptureFixture[str]
+) -> None:
+    data = bytearray(exr(tmp_path / "a.exr", scene(4)).read_bytes())
+    data[len(data) // 2 : len(data) // 2 + 50] = bytes(50)
+    (tmp_path / "a.exr").write_bytes(bytes(data))
+
+    with pytest.raises(PictureError, match="cannot be decoded"):
+        read(tmp_path / "a.exr")
+
+    assert capfd.readouterr().out == ""
 
 
 @pytest.mark.parametrize("name", ["a.exr", "a.hdr"])

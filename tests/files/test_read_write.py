@@ -309,3 +309,19 @@ def test_a_turn_that_exif_does_not_state_is_kept_in_every_format(name: str, bloc
     if path.suffix != ".jxl":
         with Image.open(path) as image:
             np.testing.assert_allclose(np.asarray(ImageOps.exif_transpose(image)), upright(stored, 6), atol=12)
+
+
+@pytest.mark.parametrize("name", ["a.jpg", "a.png", "a.tif", "a.avif", "a.jxl"])
+def test_gray_without_a_profile_gets_one_of_gray(name: str, tmp_path: Path) -> None:
+    """ICC.1:2022, clause 8.4.3: its curve is that of the encoding, and a gray is as bright as it was."""
+    grays = np.arange(256, dtype=np.uint8).reshape(16, 16, 1)
+
+    again = read(write(Picture(grays, SRGB), tmp_path / name))
+
+    assert again.encoding.profile[16:20] == b"GRAY"
+    codes = np.repeat(np.linspace(0, 1, 9)[:, None], 3, axis=1)
+    np.testing.assert_allclose(again.encoding.to_xyz(codes), SRGB.to_xyz(codes), atol=2e-5)
+    if name in ("a.png", "a.jpg"):
+        with Image.open(tmp_path / name) as image:
+            profile = ImageCms.ImageCmsProfile(io.BytesIO(image.info["icc_profile"]))
+            assert profile.profile.xcolor_space.strip() == "GRAY"

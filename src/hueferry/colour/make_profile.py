@@ -29,6 +29,25 @@ def profile_of(encoding: Encoding) -> bytes:
     return matrix_profile(encoding)
 
 
+def gray_profile_of(encoding: Encoding) -> bytes:
+    """Return the encoding's own profile, or make one of its neutral axis, for files of one channel.
+
+    Raises:
+        InputError: the encoding is neither a profile's nor made of a matrix and one parametric curve.
+    """
+    if encoding.profile is not None:
+        return encoding.profile
+    if not isinstance(encoding, MatrixEncoding) or len(set(encoding.curves)) != 1:
+        raise InputError(f"no gray profile can be made for {encoding.name}")
+    tags = {
+        b"desc": _text_tag(f"{encoding.name} gray"),
+        b"cprt": _text_tag(_COPYRIGHT),
+        b"wtpt": _xyz_tag(WHITE_D50),
+        b"kTRC": _curve_tag(encoding.curves[0]),
+    }
+    return assemble(tags, kind=b"mntr", space=b"GRAY", connection=b"XYZ ")
+
+
 def matrix_profile(encoding: MatrixEncoding) -> bytes:
     """Make a display profile, version 4.4 (ICC.1:2022, clause 8.3.3), of a matrix encoding with parametric curves."""
     red, green, blue = (_xyz_tag(encoding.matrix[:, channel]) for channel in range(3))

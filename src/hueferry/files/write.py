@@ -89,9 +89,10 @@ def encode(picture: Picture, format_: str, *, quality: int | None = None) -> byt
     stored = fitted(picture, FORMATS[format_])
     profile = stored.encoding.profile
     if profile is None and not FORMATS[format_].scene_linear:
-        from hueferry.colour.make_profile import profile_of
+        from hueferry.colour.make_profile import gray_profile_of, profile_of
 
-        profile = profile_of(stored.encoding)
+        alone = stored.is_gray and FORMATS[format_].gray
+        profile = gray_profile_of(stored.encoding) if alone else profile_of(stored.encoding)
     return write_format(stored, profile, quality=quality)
 
 
