@@ -10,9 +10,10 @@ import attrs
 import numpy as np
 
 from hueferry.api import apply, as_reference, read, write
-from hueferry.errors import HueferryError, InputError
+from hueferry.errors import HueferryError, InputError, OutputError
 from hueferry.fitting.fit import Fit, fit_picture
 from hueferry.fitting.settings import Settings
+from hueferry.picture import Encoding
 from hueferry.record.record import Failure
 from hueferry.tables.certificate import Certificate
 from hueferry.tables.saved_map import SavedMap
@@ -155,3 +156,37 @@ def check_map(map_file: Path, *, correction: str | None = None) -> CheckedMap:
     everywhere = Occupied(grid, np.full(len(grid), 1 / len(grid)))
     saved = read_map(map_file, correction=correction)
     return CheckedMap(saved, certify(saved.table, occupied=everywhere, encoding=SRGB))
+
+
+def preview_map(
+    checked: CheckedMap, *, out: Path, title: str, over: Path | None = None, overwrite: bool = False
+) -> Path:
+    """Draw what a map does, and return the file.
+
+    Args:
+        checked: the map and its certificate.
+        out: where the drawing goes, as `.png`.
+        title: what the map is called.
+        over: picture or saved palette whose colours are shown as well; a picture also says what the codes mean.
+        overwrite: replace an earlier drawing.
+
+    Raises:
+        InputError: the picture cannot be read, or nothing can be written there.
+    """
+    from hueferry.colour.encoding import SRGB
+    from hueferry.files.atomic import write_bytes
+    from hueferry.palettes.build import palette_of
+    from hueferry.palettes.saved import is_palette, read_palette
+    from hueferry.reports.map_preview import draw_map
+
+    if out.suffix.lower() != ".png":
+        raise OutputError(out, "a preview is drawn as PNG; let its name end in .png")
+    encoding: Encoding = SRGB
+    palette = None
+    if over is not None and is_palette(over):
+        palette = read_palette(over)
+    elif over is not None:
+        picture = read(over)
+        encoding, palette = picture.encoding, palette_of(picture)
+    drawn = draw_map(checked.saved.table, encoding, title=title, sentences=checked.sentences, palette=palette)
+    return write_bytes(out, drawn, overwrite=overwrite)

@@ -105,15 +105,27 @@ def apply(
 def check(
     target: Annotated[Path, typer.Argument(help="A map, or the folder of a run.", metavar="MAP.clf|DIR")],
     *,
+    preview: Annotated[
+        Path | None, typer.Option("--preview", help="Draw what the map does, as .png.", metavar="FILE.png")
+    ] = None,
+    over: Annotated[
+        Path | None,
+        typer.Option("--over", help="Picture or saved palette whose colours the preview shows.", metavar="PICTURE"),
+    ] = None,
     correction: Correction = None,
     recreate: Annotated[
         str | None,
         typer.Option("--recreate", help="Make this result of the run again and compare its bytes.", metavar="NAME"),
     ] = None,
     json: options.Json = False,
+    overwrite: options.Overwrite = False,
 ) -> None:
     """Certify a map from its file alone, or verify every file of a run against its record."""
+    if over is not None and preview is None:
+        raise typer.BadParameter("--over chooses what a preview shows; say where with --preview")
     if target.is_dir():
+        if preview is not None:
+            raise typer.BadParameter("--preview is for a map")
         from hueferry.jobs import check_folder
 
         complaints = check_folder(target, recreated=recreate)
@@ -126,9 +138,11 @@ def check(
         return
     if recreate is not None:
         raise typer.BadParameter("--recreate is for the folder of a run")
-    from hueferry.map_jobs import check_map
+    from hueferry.map_jobs import check_map, preview_map
 
     checked = check_map(target, correction=correction)
+    if preview is not None:
+        preview_map(checked, out=preview, title=target.name, over=over, overwrite=overwrite)
     if json:
         show_json({"schema": "hueferry/check-1", **checked.as_dict()})
     else:
