@@ -132,3 +132,21 @@ def test_maps_are_put_together_and_undone(place: Path, capsys: pytest.CaptureFix
     assert np.abs(back - 255 * picture).max() <= 0.5 / 0.7 + 0.51
     wanted = (picture * [0.8, 0.8, 0.7] + 0.1) * [0.8, 0.8, 0.7] + 0.1
     assert np.abs(twice - 255 * wanted).max() <= 0.51
+
+
+def test_check_draws_what_a_map_does(place: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    grade, drawing = str(place / "grades.ccc"), place / "drawing.png"
+    (place / "grades.ccc").write_text(GRADE, encoding="utf-8")
+    check = ["check", grade, "--correction", "half", "--preview"]
+    assert run(["palette", str(place / "warm.png"), "--out", str(place / "warm.json")]) == 0
+
+    assert run([*check, str(drawing), "--over", str(place / "warm.json")]) == 0
+    by_palette = drawing.read_bytes()
+    assert run([*check, str(drawing), "--over", str(place / "warm.png")]) == 2
+    assert run([*check, str(drawing), "--over", str(place / "warm.png"), "--overwrite"]) == 0
+    with Image.open(drawing) as opened:
+        assert opened.size == (1560, 1666)
+    assert len(by_palette) == pytest.approx(len(drawing.read_bytes()), rel=0.2)
+    assert run([*check, str(place / "plain.clf")]) == 2
+    assert run(["check", grade, "--over", str(place / "warm.png")]) == 2
+    assert "say where with --preview" in capsys.readouterr().err

@@ -73,7 +73,7 @@ class Canvas:
         self._draw.ellipse((x - reach, y - reach, x + reach, y + reach), outline=colour, width=round(width * _FINER))
 
     def words(self, at: Point, text: str, colour: Colour, *, size: float = 15.0, anchor: str = "ls") -> None:
-        """Write one line; `anchor` is `l`, `m` or `r` for the side, then `s` for the base line or `m` for the middle."""
+        """Write one line; `anchor` is `l`, `m` or `r` across, then `s` for the base line or `m` for the middle."""
         shown = "".join(one if one.isascii() or one in _LATIN else "?" for one in text if one.isprintable())
         self._draw.text((at[0] * _FINER, at[1] * _FINER), shown, fill=colour, font=_font(size), anchor=anchor)
 

@@ -83,10 +83,8 @@ def chart_codes(encoding: Encoding) -> Codes:
     Every patch has six tenths of the chroma that the encoding holds at its lightness and hue.
     """
     hues = np.linspace(0, 2 * np.pi, _HUES, endpoint=False) + 0.35
-    rows = [gray_ramp(_GRAYS)]
-    for lightness in np.linspace(0.88, 0.38, _LEVELS):
-        rows.append(_ring(encoding, lightness, hues))
-    return np.concatenate(rows)
+    rings = [_ring(encoding, float(lightness), hues) for lightness in np.linspace(0.88, 0.38, _LEVELS)]
+    return np.concatenate([gray_ramp(_GRAYS), *rings])
 
 
 def chart_shape() -> tuple[int, int]:
@@ -104,7 +102,7 @@ def _ring(encoding: Encoding, lightness: float, hues: Floats) -> Codes:
     codes = encoding.from_xyz(oklab_to_xyz(colours.reshape(-1, 3))).reshape(colours.shape)
     fits = np.cumprod(((codes > -1e-6) & (codes < 1 + 1e-6)).all(axis=2), axis=0).sum(axis=0) - 1
     taken = np.maximum(fits * 6 // 10, 0)
-    return np.clip(codes[taken, np.arange(len(hues))], 0.0, 1.0)
+    return np.asarray(np.clip(codes[taken, np.arange(len(hues))], 0.0, 1.0))
 
 
 def moved_chart(table: Table, encoding: Encoding) -> Moved:

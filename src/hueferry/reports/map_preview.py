@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from itertools import pairwise
 
 import attrs
 import numpy as np
@@ -172,7 +173,7 @@ def _apart(values: list[float], least: float) -> list[float]:
     """Return positions moved just so far that labels do not cover each other."""
     order = np.argsort(values)
     placed = np.array(values, dtype=np.float64)
-    for before, after in zip(order[:-1], order[1:], strict=True):
+    for before, after in pairwise(order):
         placed[after] = max(placed[after], placed[before] + least)
     return list(placed - (placed.mean() - float(np.mean(values))))
 

@@ -35,6 +35,8 @@ _SIZES = (33, 65, 129)
 _LARGEST_SIZE = 129
 _KNOTS = 16385
 _BLOCK = 1 << 17
+_MOST_WORK = 1 << 26
+"""Results of single nodes of a list that a lattice may ask for; a long list gets a smaller one."""
 
 
 @attrs.frozen(eq=False)
@@ -127,6 +129,8 @@ def _placings(process: ProcessList) -> Iterator[Placing]:
     if isinstance(process.head()[1][0], Cube):
         yield from _before_cube(process)
     for size in _SIZES:
+        if len(process.operations) * size**3 > _MOST_WORK:
+            break
         yield from _after_head(process, size)
         yield from _general(process, size)
 
@@ -152,7 +156,8 @@ def _before_cube(process: ProcessList) -> Iterator[Placing]:
     own = [np.concatenate([[a], even[(even > a + 1e-9) & (even < b - 1e-9)], [b]]) for a, b in within]
     steps = max(len(nodes) for nodes in own) - 1
     for parts in sorted({1, 2, 4, (_LARGEST_SIZE - 1) // steps}):
-        if parts * steps >= _LARGEST_SIZE:
+        size = parts * steps + 1
+        if size > _LARGEST_SIZE or len(process.operations) * size**3 > _MOST_WORK:
             break
         red, green, blue = (_split(_filled(nodes, steps), parts) for nodes in own)
         knots = {2} if not head else {*lengths, _KNOTS, 65536}
@@ -181,7 +186,7 @@ def _general(function: CodeFunction, size: int) -> Iterator[Placing]:
     yield _even(function, size)
     ramp = np.linspace(0.0, 1.0, 1025)
     places = [_followed(function, axis, ramp) for axis in range(3)]
-    red, green, blue = (np.interp(np.linspace(0.0, 1.0, size), place, ramp) for place in places)
+    red, green, blue = (_on_knots(np.interp(np.linspace(0.0, 1.0, size), place, ramp)) for place in places)
     yield Placing(_as_they_are, function, (red, green, blue))
 
 
@@ -209,6 +214,16 @@ def _followed(function: CodeFunction, axis: int, ramp: Floats) -> Floats:
     density = density[1:] + density[:-1] + 1e-12
     risen = np.concatenate([[0.0], np.cumsum(density)])
     return np.asarray(0.5 * risen / risen[-1] + 0.5 * ramp)
+
+
+def _on_knots(nodes: Floats) -> Floats:
+    """Return rising nodes moved onto knots of the curves, so that a curve has one slope between two nodes."""
+    last = _KNOTS - 1
+    knots = np.rint(nodes * last).astype(np.int64)
+    rising = np.arange(len(nodes))
+    knots = np.maximum.accumulate(knots - rising) + rising
+    knots = np.minimum(knots, last - rising[::-1])
+    return np.asarray(knots / last)
 
 
 def _span(head: CodeFunction) -> list[tuple[float, float]] | None:

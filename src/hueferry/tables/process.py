@@ -32,7 +32,7 @@ DESCRIPTIVE = frozenset({"Description", "InputDescriptor", "OutputDescriptor", "
 
 _SMPTE = "http://www.smpte-ra.org/ns/2136-1/2024"
 _VERSIONS = frozenset({"1", "2", "3"})
-_MOST_NODES = 256
+_MOST_NODES = 64
 _LARGEST = float(np.finfo(np.float32).max)
 
 SCALES: Mapping[str, float] = MappingProxyType(
