@@ -98,12 +98,22 @@ def fit(picture: PictureLike, to: ReferenceLike | Sequence[ReferenceLike], **cho
     return fit_picture(source, [as_reference(one) for one in references], settings_from(choices))
 
 
-def apply(fitted: Fit | Table, picture: PictureLike) -> Picture:
-    """Apply a fit, or its table alone, to a picture; the file's depth, encoding and metadata stay."""
+def apply(fitted: Fit | Table | PathLike, picture: PictureLike) -> Picture:
+    """Apply a fit, its table alone or a saved map to a picture; the file's depth, encoding and metadata stay.
+
+    Raises:
+        MapFileError: the saved map cannot be used.
+    """
     from hueferry.applying.engine import apply_table
 
-    table = fitted.table if isinstance(fitted, Fit) else fitted
+    table = fitted if isinstance(fitted, Table) else fitted.table if isinstance(fitted, Fit) else _saved(fitted)
     return apply_table(table, picture if isinstance(picture, Picture) else read(picture))
+
+
+def _saved(path: PathLike) -> Table:
+    from hueferry.tables.saved_map import read_map
+
+    return read_map(Path(path)).table
 
 
 def match(pixels: _Array, reference: NDArray[Any], **choices: Unpack[Choices]) -> _Array:

@@ -57,8 +57,9 @@ def open_maps(paths: Sequence[Path], *, correction: str | None = None, undo: boo
     """
     from hueferry.tables.saved_map import backwards, chain, read_map
 
-    lists = {".ccc", ".cdl"}
-    whole = chain([read_map(path, correction=correction if path.suffix.lower() in lists else None) for path in paths])
+    several = [path for path in paths if path.suffix.lower() in (".ccc", ".cdl")]
+    chosen = several or paths  # where no file holds several, the first says that there is nothing to choose from
+    whole = chain([read_map(path, correction=correction if path in chosen else None) for path in paths])
     return backwards(whole) if undo else whole
 
 

@@ -76,3 +76,19 @@ def test_what_is_no_picture_is_refused() -> None:
 def test_unknown_names_are_unknown() -> None:
     with pytest.raises(AttributeError, match="no attribute"):
         hf.no_such_verb  # noqa: B018 - the access is what is tested
+
+
+def test_saved_maps_and_palettes_are_used_by_their_paths(tmp_path: Path) -> None:
+    """A slope of one half halves every code."""
+    (tmp_path / "half.cc").write_text(
+        "<ColorCorrection><SOPNode><Slope>.5 .5 .5</Slope><Offset>0 0 0</Offset><Power>1 1 1</Power></SOPNode>"
+        "</ColorCorrection>",
+        encoding="utf-8",
+    )
+    Image.fromarray(photograph("china")).save(tmp_path / "a.png")
+
+    halved = hf.apply(tmp_path / "half.cc", tmp_path / "a.png")
+
+    assert np.abs(halved.pixels - 0.5 * photograph("china")).max() <= 0.501
+    with pytest.raises(hf.errors.MapFileError, match="no such file"):
+        hf.apply(tmp_path / "none.clf", tmp_path / "a.png")

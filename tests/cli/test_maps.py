@@ -150,3 +150,13 @@ def test_check_draws_what_a_map_does(place: Path, capsys: pytest.CaptureFixture[
     assert run([*check, str(place / "plain.clf")]) == 2
     assert run(["check", grade, "--over", str(place / "warm.png")]) == 2
     assert "say where with --preview" in capsys.readouterr().err
+
+
+def test_a_correction_is_chosen_only_where_there_are_several(place: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    (place / "curve.clf").write_text(CURVE, encoding="utf-8")
+    (place / "grades.ccc").write_text(GRADE, encoding="utf-8")
+    apply = ["apply", str(place / "curve.clf"), str(place / "plain.png"), "--correction", "half"]
+
+    assert run([*apply, "--out", str(place / "o")]) == 2
+    assert "hold corrections to choose from" in capsys.readouterr().err
+    assert run([*apply, "--then", str(place / "grades.ccc"), "--out", str(place / "o")]) == 0

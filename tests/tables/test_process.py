@@ -253,6 +253,40 @@ def test_the_lightness_of_the_standard(tmp_path: Path) -> None:
     np.testing.assert_allclose(found[:, 1], lightness, atol=1e-9)
 
 
+def test_the_colour_space_of_the_standard(tmp_path: Path) -> None:
+    """Academy S-2014-006, example 15: XYZ relative to D65 to CIELAB / 100, by the formulas of CIE 15:2018.
+
+    The red of IEC 61966-2-1 has L* a* b* 53.24, 80.09, 67.20 there; the file rounds its white point.
+    """
+    body = (
+        f'<Matrix {FLOAT}><Array dim="3 3">1.052126639 0 0 0 1 0 0 0 0.918224951</Array></Matrix>'
+        + exponent("monCurveRev", 'exponent="3.0" offset="0.16"')
+        + f'<Matrix {FLOAT}><Array dim="3 3">0 1 0 4.31034483 -4.31034483 0 0 1.72413793 -1.72413793</Array></Matrix>'
+    )
+    xyz = np.random.default_rng(3).uniform(0, 1, (1000, 3))
+    f = np.where(xyz * XYZ_SCALE > 216 / 24389, np.cbrt(xyz * XYZ_SCALE), (24389 / 27 * xyz * XYZ_SCALE + 16) / 116)
+    lab = np.stack([116 * f[:, 1] - 16, 500 * (f[:, 0] - f[:, 1]), 200 * (f[:, 1] - f[:, 2])], axis=1)
+
+    np.testing.assert_allclose(100 * results(tmp_path, body, xyz.tolist()), lab, atol=1e-5)
+    red = 100 * results(tmp_path, body, [[0.4123908, 0.2126390, 0.0193308]])
+    np.testing.assert_allclose(red, [[53.24, 80.09, 67.20]], atol=0.01)
+
+
+XYZ_SCALE = np.array([1.052126639, 1.0, 0.918224951])
+
+
+def test_the_logarithm_with_a_straight_part_of_the_standard(tmp_path: Path) -> None:
+    """Academy S-2014-006, example 14; the straight part and middle gray as Academy S-2016-001 prints them."""
+    parameters = (
+        '<LogParams base="2" logSideSlope="0.05707762557" logSideOffset="0.5547945205" linSideBreak="0.0078125"/>'
+    )
+    found = results(tmp_path, logarithm("cameraLinToLog", parameters), [[-0.01, 0, 0.005], [0.0078125, 0.18, 1]])
+
+    straight = 10.5402377416545 * np.array([-0.01, 0, 0.005, 0.0078125]) + 0.0729055341958355
+    np.testing.assert_allclose(found.ravel()[:4], straight, atol=1e-8)
+    np.testing.assert_allclose(found[1, 1:], [(np.log2(0.18) + 9.72) / 17.52, 9.72 / 17.52], atol=1e-9)
+
+
 WORKED_GRADES = {
     "Fwd": [
         ((0.4, 0.5, 0.6), (0.457836926, 0.525610953, 0.388417466)),
