@@ -178,3 +178,21 @@ def test_a_curve_that_falls_is_refused() -> None:
         Sampled(np.array([1.0, 0.5, 0.2]))
     with pytest.raises(InputError, match="must rise"):
         Parametric(-1.0)
+
+
+@pytest.mark.parametrize(("transfer", "refused"), [(13, False), (16, True), (18, True)])
+def test_profiles_of_light_that_is_not_relative_are_refused(transfer: int, refused: bool) -> None:
+    """ICC.1:2022, clause 9.2.17: a profile may state ITU-T H.273 numbers beside its curves."""
+    plain = matrix_profile(SRGB)
+    tags = {}
+    for index in range(int.from_bytes(plain[128:132], "big")):
+        name, start, size = (plain[132 + 12 * index + 4 * part :][:4] for part in range(3))
+        tags[name] = plain[int.from_bytes(start, "big") :][: int.from_bytes(size, "big")]
+    tags[b"cicp"] = b"cicp\0\0\0\0" + bytes([9, transfer, 0, 1])
+    profile = assemble(tags, kind=b"mntr", space=b"RGB ", connection=b"XYZ ")
+
+    if refused:
+        with pytest.raises(InputError, match="PQ or HLG"):
+            read_profile(profile)
+    else:
+        assert read_profile(profile).profile == profile

@@ -105,7 +105,19 @@ def test_size_and_film_stand_in_the_first_bits(height: int, width: int, frames: 
     head = read_head(bytes(imagecodecs.jpegxl_encode(pixels if frames > 1 else pixels[0], level=101, effort=1)))
 
     assert head.shape == (height, width)
-    assert head.film == (frames > 1)
+    assert (head.film, head.floating) == (frames > 1, False)
+
+
+@pytest.mark.parametrize("dtype", [np.float16, np.float32])
+@pytest.mark.parametrize("frames", [1, 2])
+def test_half_and_float_beyond_white_are_not_cut(dtype: type, frames: int, tmp_path: Path) -> None:
+    light = (np.random.default_rng(0).random((frames, 9, 13, 3)) * 5).astype(dtype)
+    data = bytes(imagecodecs.jpegxl_encode(light if frames > 1 else light[0], level=101))
+
+    picture = read(stored(tmp_path / "a.jxl", data), accept_loss=True)
+
+    np.testing.assert_array_equal(picture.pixels, light[-1].astype(np.float32))
+    assert picture.bits == 32
 
 
 def test_a_quality_makes_it_smaller_and_nothing_is_lost_without(tmp_path: Path) -> None:

@@ -15,7 +15,8 @@ import pytest
 import tifffile
 from PIL import Image, ImageCms, ImageOps
 
-from hueferry.colour.encoding import SRGB
+from hueferry.colour.encoding import DISPLAY_P3, SRGB
+from hueferry.colour.make_profile import profile_of
 from hueferry.colour.scene import REC_709, scene_linear
 from hueferry.errors import HueferryError, OutputError, PictureError, RefusedError
 from hueferry.files.formats import FORMATS, sniff
@@ -325,3 +326,28 @@ def test_gray_without_a_profile_gets_one_of_gray(name: str, tmp_path: Path) -> N
         with Image.open(tmp_path / name) as image:
             profile = ImageCms.ImageCmsProfile(io.BytesIO(image.info["icc_profile"]))
             assert profile.profile.xcolor_space.strip() == "GRAY"
+
+
+def stated_by_numbers(path: Path, *numbers: int) -> Path:
+    """Put a cICP chunk behind the header of a PNG."""
+    data = save(path).read_bytes()
+    body = b"cICP" + bytes(numbers)
+    path.write_bytes(data[:33] + struct.pack(">I", 4) + body + struct.pack(">I", zlib.crc32(body)) + data[33:])
+    return path
+
+
+def test_a_png_that_states_its_colours_by_numbers_is_taken_at_its_word(tmp_path: Path) -> None:
+    """PNG, third edition, clause 11.3.2.6, with the numbers of ITU-T H.273: 12 is Display P3, 13 the curve of sRGB."""
+    first = read(stated_by_numbers(tmp_path / "a.png", 12, 13, 0, 1))
+
+    again = read(write(first, tmp_path / "b.png"))
+
+    assert first.encoding is again.encoding is DISPLAY_P3
+    assert first.notes == ()
+    assert b"cICP\x0c\x0d\x00\x01" in (tmp_path / "b.png").read_bytes()
+    assert read(write(first, tmp_path / "b.jpg")).encoding.profile == profile_of(DISPLAY_P3)
+
+
+def test_a_png_in_pq_is_refused(tmp_path: Path) -> None:
+    with pytest.raises(RefusedError, match="coded in PQ"):
+        read(stated_by_numbers(tmp_path / "a.png", 9, 16, 0, 1))

@@ -41,6 +41,8 @@ def read_profile(data: bytes) -> Encoding:
     space = data[16:20]
     if space not in (b"RGB ", b"GRAY"):
         raise InputError(f"the profile is for {_plain(space)} pictures, not RGB or gray; convert the picture first")
+    if tags.get(b"cicp", b"")[9:10] in (b"\x10", b"\x12"):
+        raise InputError("the profile is of PQ or HLG, light for displays of high range; convert the picture first")
     if space == b"GRAY":
         return _gray(data, tags)
     if any(name in tags for name in (b"A2B0", b"A2B1")):

@@ -22,6 +22,13 @@ _RATIOS = ((1, 1), (6, 5), (4, 3), (3, 2), (16, 9), (5, 4), (2, 1))
 _SIDES = ((9, 1), (13, 1), (18, 1), (30, 1))
 _PREVIEW_SIDES = ((6, 1), (8, 65), (10, 321), (12, 1345))
 _PREVIEW_EIGHTHS = ((0, 16), (0, 32), (5, 1), (9, 33))
+_TICKS = (
+    ((0, 100), (0, 1000), (10, 1), (30, 1)),
+    ((0, 1), (0, 1001), (8, 1), (10, 1)),
+    ((0, 0), (3, 0), (16, 0), (32, 0)),
+)
+"""Numerator and denominator of ticks a second, and loops."""
+
 _COARSEST = 14.9
 """Largest distance that is asked for; beyond 15 the binding takes it for a quality."""
 
@@ -33,10 +40,12 @@ class Head:
     Attributes:
         shape: rows and columns of what the stream holds, before it is turned.
         film: whether frames follow each other in time.
+        floating: whether samples are floating point.
     """
 
     shape: tuple[int, int]
-    film: bool
+    film: bool = False
+    floating: bool = False
 
 
 class _Bits:
@@ -56,17 +65,28 @@ class _Bits:
 
 
 def read_head(codestream: bytes) -> Head:
-    """Read size and animation from the first bits of a stream (ISO/IEC 18181-1, annex D.2 and D.3)."""
+    """Read size, animation and kind of sample from the first bits of a stream (ISO/IEC 18181-1, annex D.2 and D.3)."""
     bits = _Bits(codestream[2:96])
     shape = _size(bits)
-    if bits.take(1) or not bits.take(1):
-        return Head(shape, film=False)
+    if bits.take(1):
+        return Head(shape)
+    film = bool(bits.take(1)) and _further(bits)
+    return Head(shape, film, floating=bool(bits.take(1)))
+
+
+def _further(bits: _Bits) -> bool:
+    """Pass over turn, size when shown and preview; return whether there is an animation, and pass over its facts."""
     bits.take(3)
     if bits.take(1):
         _size(bits)
     if bits.take(1):
         _preview(bits)
-    return Head(shape, film=bool(bits.take(1)))
+    if not bits.take(1):
+        return False
+    for ways in _TICKS:
+        bits.choose(ways)
+    bits.take(1)
+    return True
 
 
 def _size(bits: _Bits) -> tuple[int, int]:
@@ -105,7 +125,7 @@ def read_jxl(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
         raise RefusedError(path, "the file holds a gain map, which would be lost; accept the loss to go on")
     check_size(path, head.shape)
     try:
-        found, pixels = pyjpegxl.decode_to_numpy(data)
+        found, pixels = pyjpegxl.decode_to_numpy(data, dtype="float32" if head.floating else None)
     except (RuntimeError, ValueError, MemoryError) as error:
         raise PictureError(path, f"the JPEG XL cannot be decoded: {error}") from error
     metadata = Metadata(format="jxl", exif=_exif(found.exif or b""), xmp=found.xmp or b"")

@@ -39,7 +39,7 @@ def load_png() -> Codec:
     """PNG."""
     from hueferry.files.png import read_png, write_png
 
-    return Codec(_reads(read_png), _writes(write_png, with_quality=False))
+    return Codec(read_png, _writes(write_png, with_quality=False))
 
 
 def load_tiff() -> Codec:

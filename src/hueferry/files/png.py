@@ -10,12 +10,13 @@ import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
+from hueferry.files.codec import Decoded
 from hueferry.files.probe import check_size
-from hueferry.picture import Metadata
+from hueferry.picture import Encoding, Metadata
 
 SIGNATURE = b"\x89PNG\r\n\x1a\n"
 _XMP = b"XML:com.adobe.xmp\0"
-_KEPT = frozenset({b"pHYs", b"tEXt", b"iTXt", b"zTXt", b"tIME", b"eXIf"})
+_KEPT = frozenset({b"cICP", b"pHYs", b"tEXt", b"iTXt", b"zTXt", b"tIME", b"eXIf"})
 _PROFILE_LIMIT = 64 << 20
 
 Chunk = tuple[bytes, bytes]
@@ -35,12 +36,12 @@ def _chunks(path: Path, data: bytes) -> Iterator[Chunk]:
     raise PictureError(path, "the PNG stream ends early; copy the file again from its source")
 
 
-def read_png(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Metadata, bytes | None]:
-    """Decode a PNG at its own depth: pixels, metadata and the ICC profile if there is one.
+def read_png(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
+    """Decode a PNG at its own depth; colours stated by numbers go before a profile (PNG, third edition, clause 4.3).
 
     Raises:
         PictureError: the stream is broken.
-        RefusedError: an animation, of which one frame alone would be kept.
+        RefusedError: an animation, of which one frame alone would be kept, or light that is not relative.
     """
     import imagecodecs
 
@@ -55,7 +56,16 @@ def read_png(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Met
         pixels = np.atleast_3d(imagecodecs.png_decode(data))
     except (imagecodecs.PngError, ValueError, MemoryError) as error:
         raise PictureError(path, f"the PNG stream cannot be decoded: {error}") from error
-    return pixels, _metadata(chunks), _profile(path, chunks)
+    encoding = _stated(path, chunks)
+    return Decoded(pixels, _metadata(chunks), None if encoding else _profile(path, chunks), encoding=encoding)
+
+
+def _stated(path: Path, chunks: list[Chunk]) -> Encoding | None:
+    """Return the encoding that a cICP chunk states by ITU-T H.273 numbers, or None."""
+    from hueferry.files.iso_pictures import encoding_of
+
+    numbers = next((body for kind, body in chunks if kind == b"cICP" and len(body) == 4), b"")
+    return encoding_of(path, (numbers[0], numbers[1], numbers[2])) if numbers else None
 
 
 def _metadata(chunks: list[Chunk]) -> Metadata:
