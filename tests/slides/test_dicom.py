@@ -17,7 +17,7 @@ from hueferry.errors import PictureError, RefusedError
 from hueferry.picture import Window
 from hueferry.slides.codecs import CODECS, Packing
 from hueferry.slides.gather import reference_from
-from hueferry.slides.levels import tiles_of
+from hueferry.slides.levels import tile_at
 from hueferry.slides.readers import open_slide
 from hueferry.slides.run import stain_slide
 from hueferry.slides.settings import StainSettings
@@ -44,7 +44,11 @@ def save(path: Path, pixels: np.ndarray, *, packed: bool = False, order: list[in
     shared.PixelMeasuresSequence = [measures]
     light.ICCProfile = profile_of(SRGB)
     data.SharedFunctionalGroupsSequence, data.OpticalPathSequence = [shared], [light]
-    tiles = [tile for top in range(0, pixels.shape[0], SIDE) for tile in tiles_of(pixels[top : top + SIDE], SIDE)]
+    tiles = [
+        tile_at(pixels[top : top + SIDE], left, SIDE)
+        for top in range(0, pixels.shape[0], SIDE)
+        for left in range(0, pixels.shape[1], SIDE)
+    ]
     across = -(-pixels.shape[1] // SIDE)
     data.NumberOfFrames = len(tiles)
     data.DimensionOrganizationType = "TILED_FULL" if order is None else "TILED_SPARSE"

@@ -1,4 +1,4 @@
-"""A table of 256 or 65,536 entries, read for every code of a picture."""
+"""A table of 256 or 65,536 entries, read for every code of a picture, and means of neighbours."""
 
 from __future__ import annotations
 
@@ -24,3 +24,16 @@ def look_up_codes(pixels: Pixels, table: NDArray[Any]) -> Pixels:
     height, width, channels = pixels.shape
     flat = np.ascontiguousarray(pixels).reshape(height, width * channels)
     return np.asarray(cv2.LUT(flat, table)).reshape(pixels.shape)
+
+
+def average_fours(values: Pixels) -> Pixels:
+    """Return the mean of every 2 × 2 values, a half rounded up.
+
+    Args:
+        values: (height, width, 1 … 4) uint16, height and width even.
+    """
+    import cv2
+
+    height, width, channels = values.shape
+    size = (width // 2, height // 2)
+    return np.asarray(cv2.resize(values, size, interpolation=cv2.INTER_AREA)).reshape(height // 2, width // 2, channels)

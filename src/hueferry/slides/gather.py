@@ -41,8 +41,8 @@ def look_at_slide(path: Path, source: SlideSource, *, light: Light, mask: Mask |
         RefusedError: it is no bright-field slide.
     """
     look = look_at(thumbnail_of(source), source.encoding, bits=source.bits, light=light, mask=mask)
-    top = 1.0 if look.thumbnail.dtype == np.float32 else float(2**look.bits - 1)
-    reason = reason_against(look.thumbnail.astype(np.float64) / top, look.regions)
+    top = np.float32(1.0 if look.thumbnail.dtype == np.float32 else 2**look.bits - 1)
+    reason = reason_against(look.thumbnail.astype(np.float32) / top, look.regions)
     if reason is not None:
         raise RefusedError(path, reason)
     return look

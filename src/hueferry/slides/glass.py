@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import attrs
 import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.arrays import Mask, read_only
 
-Planes = NDArray[np.float64]
+Planes = NDArray[np.floating[Any]]
+"""Codes or densities of a thumbnail; single precision is enough, and half as large."""
 
 LEAST_SHARE = 0.01
 """Share of the scanned area below which bare glass is not believed to have been seen."""
@@ -50,7 +53,7 @@ def find_glass(thumbnail: Planes, *, ignored: Mask | None = None) -> Glass:
     """
     padding = find_padding(thumbnail)
     usable = np.asarray(~padding if ignored is None else ~padding & ~ignored)
-    bright = thumbnail.mean(axis=2)
+    bright = thumbnail.mean(axis=2, dtype=np.float64)
     flat = usable & (_roughness(bright) < _FLAT)
     if not usable.any():
         return Glass(np.ones(3), np.ones_like(thumbnail), 0.0, False, padding, 0.0)
@@ -111,20 +114,27 @@ def _neutral_enough(thumbnail: Planes, bare: Mask) -> Mask:
 
 def _shading(thumbnail: Planes, bare: Mask, flat: Mask) -> tuple[Planes, Mask]:
     """Fit a quadratic to the log of the glass, widening to what it explains; returns the fit and the bare glass."""
-    height, width = bare.shape
-    y, x = (
-        np.mgrid[-1 : 1 : height * 1j, -1 : 1 : width * 1j] if min(height, width) > 1 else np.zeros((2, height, width))
-    )
-    terms = np.stack([np.ones_like(x), x, y, x * x, x * y, y * y], axis=-1)
+    y, x = (np.linspace(-1, 1, size) if min(bare.shape) > 1 else np.zeros(size) for size in bare.shape)
     logs = np.log10(np.maximum(thumbnail, 1e-3))
     for _ in range(4):
         used = np.flatnonzero(bare)
         used = used[:: max(1, len(used) // 20_000)]
-        chosen = terms.reshape(-1, 6)[used]
+        down, across = y[used // len(x)], x[used % len(x)]
+        terms = np.stack([np.ones_like(down), down, across, down**2, down * across, across**2], axis=1)
         keep = np.diag([0.0, 1.0, 1.0, 3.0, 3.0, 3.0]) * 1e-3 * len(used)  # slow unless the glass says otherwise
-        weights = np.linalg.solve(chosen.T @ chosen + keep, chosen.T @ logs.reshape(-1, 3)[used])
-        fitted = terms @ weights
+        weights = np.linalg.solve(terms.T @ terms + keep, terms.T @ logs.reshape(-1, 3)[used])
+        fitted = _quadratic(weights, y, x)
         bare = flat & (np.abs(logs - fitted).max(axis=2) < 0.015)
         if bare.sum() < 16:
             return np.asarray(10.0**fitted), np.asarray(flat)
     return np.asarray(10.0**fitted), bare
+
+
+def _quadratic(weights: Planes, y: NDArray[np.float64], x: NDArray[np.float64]) -> Planes:
+    """Return a quadratic at rows `y` and columns `x`, in single precision as the thumbnail is."""
+    level, down, across, down_twice, both, across_twice = weights
+    rows = level + y[:, None] * down + y[:, None] ** 2 * down_twice
+    columns = x[:, None] * across + x[:, None] ** 2 * across_twice
+    fitted = rows.astype(np.float32)[:, None] + columns.astype(np.float32)
+    fitted += y.astype(np.float32)[:, None, None] * (x[:, None] * both).astype(np.float32)
+    return np.asarray(fitted)

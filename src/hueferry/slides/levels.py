@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,13 +10,12 @@ from numpy.typing import NDArray
 from hueferry.arrays import Pixels
 from hueferry.colour.curves import Curve
 from hueferry.colour.encoding import SRGB, MatrixEncoding
-from hueferry.files.look_up import look_up_codes
+from hueferry.files.look_up import average_fours, look_up_codes
 from hueferry.picture import Encoding
 
 Shape = tuple[int, int]
 
 _STEPS = 65535
-_LIGHT = 16383
 _ROWS = 16
 
 
@@ -40,9 +39,9 @@ class Halving:
         curves = encoding.curves if isinstance(encoding, MatrixEncoding) else SRGB.curves
         self._dtype, self._curves = dtype, curves
         if dtype == np.uint8:
-            codes, sums = np.arange(256) / 255, np.arange(_STEPS + 1) / (4 * _LIGHT)
-            self._decode = [np.rint(_LIGHT * np.clip(c.decode(codes), 0, 1)).astype(np.uint16) for c in curves]
-            self._encode = [np.rint(255 * np.clip(c.encode(sums), 0, 1)).astype(np.uint8) for c in curves]
+            codes, light = np.arange(256) / 255, np.arange(_STEPS + 1) / _STEPS
+            self._decode = [np.rint(_STEPS * np.clip(c.decode(codes), 0, 1)).astype(np.uint16) for c in curves]
+            self._encode = [np.rint(255 * np.clip(c.encode(light), 0, 1)).astype(np.uint8) for c in curves]
             self._alike = all(np.array_equal(table, self._decode[0]) for table in self._decode)
 
     def __call__(self, pixels: Pixels) -> Pixels:
@@ -56,12 +55,12 @@ class Halving:
         return np.concatenate([halve(pixels[:, :, channel : channel + 1], channel) for channel in range(3)], axis=2)
 
     def _halve(self, pixels: Pixels, channel: int) -> Pixels:
-        """Add up four pixels in 14-bit light, whose sum is a 16-bit number, and read its code in a table."""
+        """Average four pixels in 16-bit light, and read the code of the mean in a table."""
         halved = np.empty((pixels.shape[0] // 2, pixels.shape[1] // 2, pixels.shape[2]), np.uint8)
         for top in range(0, pixels.shape[0], _ROWS):  # few rows at a time stay in the cache
             light = look_up_codes(pixels[top : top + _ROWS], self._decode[channel])
-            rows = light[0::2] + light[1::2]
-            halved[top // 2 : (top + _ROWS) // 2] = self._encode[channel][rows[:, 0::2] + rows[:, 1::2]]
+            # No index is out of range; "clip" spares NumPy a copy of the result.
+            np.take(self._encode[channel], average_fours(light), out=halved[top // 2 : (top + _ROWS) // 2], mode="clip")
         return halved
 
     def _halve_deep(self, plane: Pixels, channel: int) -> Pixels:
@@ -114,11 +113,9 @@ class Cascade:
         self._pass_on(below, whole)
 
 
-def tiles_of(band: Pixels, side: int) -> Iterator[Pixels]:
-    """Cut a band of at most `side` rows into tiles, left to right; edges are filled up by repeating the last pixel."""
-    height, width = band.shape[:2]
-    for left in range(0, width, side):
-        tile = band[:, left : left + side]
-        if tile.shape[:2] != (side, side):
-            tile = np.pad(tile, ((0, side - height), (0, side - tile.shape[1]), (0, 0)), mode="edge")
-        yield np.ascontiguousarray(tile)
+def tile_at(band: Pixels, left: int, side: int) -> Pixels:
+    """Cut a tile out of a band of at most `side` rows; what lies beyond the slide repeats its last pixel."""
+    tile = band[:, left : left + side]
+    if tile.shape[:2] != (side, side):
+        tile = np.pad(tile, ((0, side - tile.shape[0]), (0, side - tile.shape[1]), (0, 0)), mode="edge")
+    return np.ascontiguousarray(tile)

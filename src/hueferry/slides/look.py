@@ -63,13 +63,13 @@ def look_at(
         mask: (height, width) where tissue may be; None looks everywhere.
     """
     top = 1.0 if thumbnail.dtype == np.float32 else float(2**bits - 1)
-    codes = thumbnail[:, :, :3].astype(np.float64) / top
+    codes = thumbnail[:, :, :3].astype(np.float32) / np.float32(top)
     regions = find_tissue(codes, mask=mask)
     scale = Density(np.clip(regions.glass.white, 0.02, 1.0), encoding, light)
     rows, columns = np.nonzero(regions.tissue)
     step = max(1, -(-len(rows) // MOST_PIXELS))
     rows, columns = rows[::step], columns[::step]
-    chosen = codes[rows, columns]
+    chosen = thumbnail[rows, columns, :3].astype(np.float64) / top
     height, width = codes.shape[:2]
     blocks = (rows * _SIDE // height) * _SIDE + columns * _SIDE // width
     return Look(thumbnail[:, :, :3], regions, scale, chosen, scale.of(chosen), blocks, bits)

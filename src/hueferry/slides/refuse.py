@@ -5,9 +5,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from hueferry.slides.glass import Planes
 from hueferry.slides.tissue import Regions
-
-Planes = NDArray[np.float64]
 
 _DARK, _MOST_DARK = 0.2, 0.5
 _LEAST_COLOUR = 0.012

@@ -17,7 +17,8 @@ from hueferry.picture import Encoding, Window
 THUMBNAIL = 1024
 """Longest side, in pixels, of the thumbnail that a slide is looked at with."""
 
-_MOST_AT_ONCE = 1 << 24
+_MOST_AT_ONCE = 1 << 20
+"""Pixels that are averaged at a time."""
 
 
 def _frozen(texts: Mapping[str, str]) -> Mapping[str, str]:

@@ -123,10 +123,13 @@ class TiffSlide:
 
     def _paste(self, result: Pixels, window: Window, level: int, row: int, column: int) -> None:
         chosen = self._levels[level]
-        tile = self._segment(level, row * -(-chosen.width // chosen.columns) + column)
+        index = row * -(-chosen.width // chosen.columns) + column
         top, left = row * chosen.rows - window.top, column * chosen.columns - window.left
         rows = slice(max(top, 0), min(top + chosen.rows, window.height))
         columns = slice(max(left, 0), min(left + chosen.columns, window.width))
+        # A tile that lies within the window is not asked for again by whoever goes through the slide in order.
+        whole = top >= 0 and left >= 0 and top + chosen.rows <= window.height and left + chosen.columns <= window.width
+        tile = self._decode(level, index) if whole else self._segment(level, index)
         result[rows, columns] = tile[rows.start - top : rows.stop - top, columns.start - left : columns.stop - left]
 
     def _segment(self, level: int, index: int) -> Pixels:

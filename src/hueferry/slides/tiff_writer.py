@@ -17,7 +17,7 @@ from hueferry.errors import InputError, OutputError
 from hueferry.files.atomic import place
 from hueferry.picture import Encoding
 from hueferry.slides.codecs import CODECS, Packing
-from hueferry.slides.levels import Cascade, Halving, Shape, level_shapes, tiles_of
+from hueferry.slides.levels import Cascade, Halving, Shape, level_shapes, tile_at
 
 TILE = 256
 """Side of a tile; a multiple of 16 as TIFF asks."""
@@ -143,7 +143,7 @@ def _full_size(bands: Bands, plan: _Plan, spool: _Spool, pool: ThreadPoolExecuto
     encode, quality = CODECS[plan.options.packing].encode, plan.options.quality
 
     def pack(band: Pixels) -> Iterator[bytes]:
-        return pool.map(lambda tile: encode(tile, quality), tiles_of(band, TILE))
+        return pool.map(lambda left: encode(tile_at(band, left, TILE), quality), range(0, band.shape[1], TILE))
 
     def keep(level: int, _: int, band: Pixels) -> None:
         for packed in pack(band):

@@ -7,9 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hueferry.arrays import Mask
-from hueferry.slides.glass import Glass, find_glass
-
-Planes = NDArray[np.float64]
+from hueferry.slides.glass import Glass, Planes, find_glass
 
 PALEST = 0.025
 """Mean optical density, smoothed, above which something lies on the glass."""
@@ -63,7 +61,7 @@ def find_tissue(thumbnail: Planes, *, mask: Mask | None = None) -> Regions:
     tissue = _without_lines_and_dust(found)
     if mask is not None:
         tissue &= mask
-    sharpness, hazy = _focus(density.mean(axis=2), tissue)
+    sharpness, hazy = _focus(density.mean(axis=2, dtype=np.float64), tissue)
     return Regions(tissue, pen, glass.padding, glass, sharpness, hazy)
 
 

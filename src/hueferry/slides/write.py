@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-from collections import deque
 from collections.abc import Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -19,8 +19,8 @@ from hueferry.slides.source import SlideSource
 from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
 from hueferry.tables.table import Table
 
-_WIDE = 1 << 16
-"""Columns above which one band at a time is read ahead, so that memory stays bounded."""
+_WIDEST = 4096
+"""Columns of a block, at most."""
 
 
 def write_corrected(source: SlideSource, table: Table, target: Path, settings: StainSettings, *, derived: str) -> Path:
@@ -78,21 +78,36 @@ def map_slide(path: Path, table: Table, out: Path, settings: StainSettings) -> P
 
 
 def corrected_bands(source: SlideSource, table: Table, *, threads: int = 2) -> Iterator[Pixels]:
-    """Yield the corrected full size in bands of `TILE` rows; read and mapped by threads, a few at a time."""
+    """Yield the corrected full size in bands of `TILE` rows, each made by all threads while the one before is written.
+
+    What is held is two bands, and for each thread a block of one.
+    """
     from hueferry.applying.engine import Engine
 
     height, width = source.shape
     engine = Engine(table, source.read(Window(0, 0, 1, 1)).dtype, source.bits)
+    blocks = _blocks(width, max(1, threads))
 
-    def work(top: int) -> Pixels:
-        return engine.apply(source.read(Window(top, 0, min(TILE, height - top), width)), top=top)
+    def fill(band: Pixels, top: int, left: int, right: int) -> None:
+        window = Window(top, left, band.shape[0], right - left)
+        band[:, left:right] = engine.apply(source.read(window), top=top, left=left)
 
-    ahead = 1 if width > _WIDE else max(1, threads)
+    def begin(top: int) -> tuple[Pixels, list[Future[None]]]:
+        band = np.empty((min(TILE, height - top), width, 3), engine.dtype)
+        return band, [pool.submit(fill, band, top, left, right) for left, right in pairwise(blocks)]
+
     with ThreadPoolExecutor(max(1, threads)) as pool:
-        pending: deque[Future[Pixels]] = deque()
-        for top in range(0, height, TILE):
-            pending.append(pool.submit(work, top))
-            if len(pending) > ahead:
-                yield pending.popleft().result()
-        while pending:
-            yield pending.popleft().result()
+        waiting = begin(0)
+        for top in range(TILE, height + TILE, TILE):
+            band, futures = waiting
+            for future in futures:
+                future.result()
+            if top < height:
+                waiting = begin(top)
+            yield band
+
+
+def _blocks(width: int, threads: int) -> list[int]:
+    """Return the columns where blocks of a band begin, and its end: one block a thread, of whole tiles, none wide."""
+    step = min(_WIDEST, -(-width // (threads * TILE)) * TILE)
+    return [*range(0, width, step), width]
