@@ -24,7 +24,8 @@ from hueferry.picture import Metadata, Picture
 _QUALITY = 99
 """Where the source is a lossy AVIF, or HEIC, and no quality is asked for; always without chroma subsampling."""
 
-_SPEED = 7
+_SPEED, _LOSSY_SPEED = 9, 7
+"""Of ten: five times faster than 7 for three in a hundred more bytes; lossy pictures would lose a decibel."""
 _KEPT = (b"clap", b"pasp")
 
 TURNS: Mapping[int, tuple[int | None, int | None]] = MappingProxyType(
@@ -125,7 +126,7 @@ def write_avif(picture: Picture, profile: bytes | None, *, quality: int | None) 
             level=level,
             bitspersample=picture.bits,
             pixelformat="444",
-            speed=_SPEED,
+            speed=_SPEED if level == 100 else _LOSSY_SPEED,
             primaries=primaries,
             transfer=transfer,
         )
