@@ -13,10 +13,11 @@ from typing import Any
 
 import attrs
 import numpy as np
+from numpy.typing import NDArray
 
 from hueferry.errors import InputError, PictureError, RefusedError
 from hueferry.files.codec import Decoded
-from hueferry.files.light import NOTE, Light, Original, codes_of, light_of
+from hueferry.files.light import NOTE, Light, Original, bands, codes_of, light_of
 from hueferry.files.probe import check_size
 from hueferry.picture import Metadata, Picture
 
@@ -151,11 +152,16 @@ def to_shared_exponents(light: Light) -> Light:
 
     What is negative or not a number becomes 0: the format has no sign.
     """
+    rounded = np.empty(light.shape, np.float32)
+    for rows in bands(light.shape):
+        rounded[rows] = _rounded(light[rows])
+    return rounded
+
+
+def _rounded(light: Light) -> NDArray[np.float64]:
     held = np.clip(np.nan_to_num(light.astype(np.float64), nan=0.0, posinf=_MOST, neginf=0.0), 0.0, _MOST)
-    _, exponent = np.frexp(held.max(axis=2, keepdims=True))
-    step = np.exp2(exponent - 8.0)
-    rounded = np.rint(held / step)
+    most = held.max(axis=2, keepdims=True)
+    step = np.exp2(np.frexp(most)[1] - 8.0)
     # A mantissa that rounds up to 256 belongs to the next exponent.
-    step = np.where(rounded.max(axis=2, keepdims=True) > 255, 2 * step, step)
-    rounded = np.rint(held / step) * step
-    return np.asarray(np.where(held.max(axis=2, keepdims=True) < _LEAST, 0.0, rounded), dtype=np.float32)
+    step = np.where(np.rint(most / step) > 255, 2 * step, step)
+    return np.asarray(np.where(most < _LEAST, 0.0, np.rint(held / step) * step))

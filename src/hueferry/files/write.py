@@ -46,8 +46,9 @@ def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int
     if picture.path is not None and path.exists() and picture.path.exists() and path.samefile(picture.path):
         raise OutputError(path, "this is the original; choose another folder")
     _check_holds(path, picture, format_)
-    data = encode(picture, format_.name, quality=quality)
-    shape = fitted(picture, format_).shape
+    stored = fitted(picture, format_)
+    data = _encoded(stored, format_, quality=quality)
+    shape = stored.shape
     return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, shape, format_.name))
 
 
@@ -83,15 +84,18 @@ def _depth(format_: Format, bits: int) -> int | None:
 
 def encode(picture: Picture, format_: str, *, quality: int | None = None) -> bytes:
     """Return the file of a picture in a format that can hold it."""
-    write_format = codec(format_).write
+    return _encoded(fitted(picture, FORMATS[format_]), FORMATS[format_], quality=quality)
+
+
+def _encoded(stored: Picture, format_: Format, *, quality: int | None) -> bytes:
+    write_format = codec(format_.name).write
     if write_format is None:
-        raise InputError(f"{FORMATS[format_].title} is read only; name another format")
-    stored = fitted(picture, FORMATS[format_])
+        raise InputError(f"{format_.title} is read only; name another format")
     profile = stored.encoding.profile
-    if profile is None and not FORMATS[format_].scene_linear:
+    if profile is None and not format_.scene_linear:
         from hueferry.colour.make_profile import gray_profile_of, profile_of
 
-        alone = stored.is_gray and FORMATS[format_].gray
+        alone = stored.is_gray and format_.gray
         profile = gray_profile_of(stored.encoding) if alone else profile_of(stored.encoding)
     return write_format(stored, profile, quality=quality)
 
