@@ -48,7 +48,7 @@ def opencolorio(path: Path) -> Callable[[np.ndarray], np.ndarray]:
     )
 
     def run(codes: np.ndarray) -> np.ndarray:
-        values = np.ascontiguousarray(codes, dtype=np.float32)
+        values = np.array(codes, dtype=np.float32, order="C")
         exact.applyRGB(values)
         return values
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Annotated
 
+import attrs
 import typer
 
 from hueferry.cli import options
@@ -90,6 +91,7 @@ def apply(
         show_json(
             {
                 "schema": "hueferry/apply-1",
+                "misfit": None if saved.misfit is None else attrs.asdict(saved.misfit),
                 "written": [path.as_posix() for path in written],
                 "failures": [{"path": failure.path, "reason": failure.reason} for failure in failures],
             }
