@@ -94,11 +94,10 @@ def _do(context: Context, job: Job) -> Done:
 
     picture = read(job.source)
     fitted = fit_picture(picture, context.references, context.settings, hold=context.hold)
-    if fitted.leaves_alone:  # no second generation of loss for nothing
-        result = picture
+    result = picture if fitted.leaves_alone else fitted.apply(picture)
+    if fitted.leaves_alone and job.stage.suffix == job.source.suffix:  # no second generation of loss for nothing
         write_bytes(job.stage, job.source.read_bytes(), overwrite=True)
     else:
-        result = fitted.apply(picture)
         write(result, job.stage, overwrite=True)  # a worker that died may have left one
     glimpse = take_glimpse(picture, result, count=context.count)
     palettes = thin(fitted.palette, _SMALL), thin(fitted.palette_after, _SMALL)

@@ -44,6 +44,11 @@ class Step:
         return "to do" if self.known is None else self.known.state
 
 
+def _why(renamed: Errand) -> str:
+    same = renamed.output.suffix == renamed.source.suffix
+    return "the name was taken" if same else f"{renamed.source.suffix} is not written"
+
+
 @attrs.frozen
 class Schedule:
     """All pictures of a run.
@@ -69,7 +74,7 @@ class Schedule:
 
     @property
     def renamed(self) -> list[Errand]:
-        """Pictures whose result has another name, because another result has theirs."""
+        """Pictures whose result has another name: another result has theirs, or their format is not written."""
         return [step.errand for step in self.steps if step.errand.output.name != step.errand.source.name]
 
     @property
@@ -83,7 +88,7 @@ class Schedule:
             said.append(f"{kept} of {len(self.steps)} pictures were dealt with by an earlier run; {count} to do")
         if count > 1:
             said.append(f"{count} pictures, {self.workers} at a time, at most {self.memory / 1e9:.1f} GB of memory")
-        said += [f"{one.source} becomes {one.output.name}: the name was taken" for one in self.renamed]
+        said += [f"{one.source} becomes {one.output.name}: {_why(one)}" for one in self.renamed]
         said += [f"{path} exists already and is not an unchanged result of an earlier run" for path in self.taken]
         return said
 
