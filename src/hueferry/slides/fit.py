@@ -16,6 +16,7 @@ from hueferry.slides.density import Density
 from hueferry.slides.look import Look
 from hueferry.slides.reference import SlideReference, density_palette
 from hueferry.slides.register import Sample, register_distributions, register_pairs
+from hueferry.slides.same_field import same_field
 from hueferry.tables.cells import Occupied
 from hueferry.tables.certificate import Certificate, certify, table_error
 from hueferry.tables.table import Table
@@ -23,7 +24,6 @@ from hueferry.tables.table import Table
 MAX_GAIN = 4.0
 """Stretch of codes that is accepted: a stain twice as strong stretches pale codes by two, by design."""
 
-_LEAST_PAIRS = 300
 _PALE = 0.08
 _CELLS = 4096
 _DENSEST, _MARGIN = 0.995, 0.05
@@ -78,27 +78,34 @@ class PinnedMap:
 
 @attrs.frozen(eq=False)
 class BoundedMap:
-    """A map of densities that shifts what is denser than a slide's tissue as it shifts the densest tissue.
+    """A map of densities that shifts what is unlike a slide's tissue as it shifts the nearest that is like it.
 
-    A matrix in density is a product of powers in codes, which runs away where no tissue is: all of the table would
-    have to be smoothed for colours that the slide does not hold.
+    A matrix in density is a product of powers in codes, which runs away where no tissue is, and most of all across the
+    plane of the stains, where nothing tells how it should go: all of the table would have to be smoothed for colours
+    that the slide does not hold.
 
     Attributes:
         inner: density to density.
-        densest: (3,) density beyond which the shift stays.
+        axes: (3, 3) columns: directions in which the slide's densities lie, the widest last.
+        low: (3,) along these axes, where the shift begins to stay; glass, at 0, lies within.
+        high: (3,) the same at the other end.
     """
 
     inner: Map
-    densest: NDArray[np.float64] = attrs.field(converter=read_only)
+    axes: NDArray[np.float64] = attrs.field(converter=read_only)
+    low: NDArray[np.float64] = attrs.field(converter=read_only)
+    high: NDArray[np.float64] = attrs.field(converter=read_only)
 
     @classmethod
     def around(cls, inner: Map, density: Colours) -> BoundedMap:
         """Bound a map to the densities of a slide."""
-        return cls(inner, np.quantile(density, _DENSEST, axis=0) + _MARGIN)
+        axes = np.linalg.eigh(density.T @ density)[1]
+        ends = np.quantile(density @ axes, [1 - _DENSEST, _DENSEST], axis=0)
+        return cls(inner, axes, np.minimum(ends[0], 0.0) - _MARGIN, np.maximum(ends[1], 0.0) + _MARGIN)
 
     def __call__(self, colours: Colours) -> Colours:
         """Carry (n, 3) densities over."""
-        held = np.clip(colours, -_MARGIN, self.densest)
+        held = np.clip(colours @ self.axes, self.low, self.high) @ self.axes.T
         return np.asarray(colours + self.inner(held) - held)
 
 
@@ -154,20 +161,11 @@ def find_map(
 
 def _by_pairs(look: Look, reference: SlideReference) -> tuple[AffineMap, float] | None:
     """Use the evidence of a field that both show, such as one slide on two scanners."""
-    if reference.picture is None or min(look.thumbnail.shape[:2]) < 64:
+    field = same_field(look, reference)
+    if field is None:
         return None
-    from hueferry.colour.encoding import from_oklab
-    from hueferry.evidence.pairs import find_pairs
-    from hueferry.evidence.reduced import reduce_picture
-
-    pairs = find_pairs(reduce_picture(look.picture), reduce_picture(reference.picture))
-    if pairs is None or len(pairs) < _LEAST_PAIRS:
-        return None
-    encoding = look.scale.encoding
-    here = look.scale.of(np.clip(from_oklab(encoding, pairs.source), 0.0, 1.0))
-    there = reference.scale(encoding).of(np.clip(from_oklab(encoding, pairs.reference), 0.0, 1.0))
     free = not (look.regions.glass.seen and reference.glass_seen)
-    return register_pairs(here, there, pairs.weights, free_glass=free)
+    return register_pairs(field.source, field.reference, field.weights, free_glass=free)
 
 
 def code_function(map_: Map, source: Density, target: Density, strength: float) -> _CodeMap:
