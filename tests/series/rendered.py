@@ -10,15 +10,15 @@ from numpy.typing import NDArray
 
 from hueferry.colour.difference import delta_e_2000
 from hueferry.colour.encoding import SRGB
-from hueferry.colour.spaces import xyz_to_lab, xyz_to_oklab
+from hueferry.colour.spaces import oklab_to_xyz, xyz_to_lab, xyz_to_oklab
 from hueferry.maps.protocol import Map
 from hueferry.picture import Metadata, Picture
-from hueferry.samples.camera import Exposure, lit, photograph
+from hueferry.samples.camera import Exposure, Light, lit, photograph
 from hueferry.samples.photographs import HERO
 from hueferry.samples.render import Framing, Layers, render_layers
 from hueferry.series.views import View, view_of
 
-SIZE = (160, 240)
+SIZE = (140, 210)
 GRAIN = 0.35
 
 
@@ -51,7 +51,7 @@ def layers(seed: int, index: int) -> Layers:
         tilt=float(-7 + 2 * np.cos(phase) + rng.normal(0, 0.7)), roll=float(rng.normal(0, 0.8)),
         field=float(rng.uniform(33, 44)),
     )  # fmt: skip
-    return render_layers(framing, SIZE, samples=4, seed=index)
+    return render_layers(framing, SIZE, samples=1, seed=index)
 
 
 def cast(rng: np.random.Generator) -> Exposure:
@@ -79,13 +79,32 @@ def shoot(seed: int, count: int = 24) -> list[Shot]:
     return shots
 
 
-def error(shot: Shot, map_: Map | None = None) -> float:
-    """Mean ΔE00 between the frame through the map, and what it should be."""
-    codes = picture_of(shot.taken).pixels.reshape(-1, 3) / 255
-    xyz = SRGB.to_xyz(codes)
-    oklab = xyz_to_oklab(xyz)
-    from hueferry.colour.spaces import oklab_to_xyz
+def picture_oklab(codes: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the (n, 3) Oklab colours of the picture that these codes make."""
+    return xyz_to_oklab(SRGB.to_xyz(picture_of(codes).pixels.reshape(-1, 3) / 255))
 
-    carried = SRGB.to_xyz(np.clip(SRGB.from_xyz(oklab_to_xyz(map_(oklab))), 0, 1)) if map_ is not None else xyz
+
+def error(shot: Shot, map_: Map | None = None) -> float:
+    """Mean ΔE00 between the frame through the map, inside sRGB, and what it should be."""
+    oklab = picture_oklab(shot.taken)
+    carried = oklab if map_ is None else map_(oklab)
+    inside = SRGB.to_xyz(np.clip(SRGB.from_xyz(oklab_to_xyz(carried)), 0, 1))
     wanted = SRGB.to_xyz(shot.wanted.reshape(-1, 3))
-    return float(delta_e_2000(xyz_to_lab(carried), xyz_to_lab(wanted)).mean())
+    return float(delta_e_2000(xyz_to_lab(inside), xyz_to_lab(wanted)).mean())
+
+
+def sunset(seed: int, *, ramp: float, count: int = 24) -> tuple[list[Shot], list[View]]:
+    """Take a time-lapse: flicker of exposure and white balance over light that falls linearly by the share `ramp`."""
+    scene, shots, views = render_layers(Framing(), SIZE, samples=1, seed=1), [], []
+    for index in range(count):
+        rng = np.random.default_rng([seed, index])
+        gone = ramp * index / (count - 1)
+        red, green, blue = 1 - gone, 1 - 1.2 * gone, 1 - 1.5 * gone
+        light = Light((1.2 * red, 1.0 * green, 0.85 * blue), (red, 0.97 * green, 0.92 * blue))
+        gains = tuple(float(gain) for gain in np.exp(rng.normal(0, 0.04, 3)))
+        flicker = Exposure(float(rng.normal(0, 0.12)), (gains[0], gains[1], gains[2]))
+        linear, name = lit(scene, light), f"{index}.png"
+        taken, wanted = (photograph(linear, one, grain=GRAIN, seed=index) for one in (flicker, Exposure()))
+        shots.append(Shot(name, taken, wanted))
+        views.append(view_of(picture_of(taken), name, taken=60.0 * index))
+    return shots, views

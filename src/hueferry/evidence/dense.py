@@ -39,11 +39,12 @@ _BLOCKS = 4
 
 @attrs.frozen(eq=False)
 class DenseColours:
-    """Colours of the same surfaces, with the block of the source each lies in; see `Pairs`."""
+    """Colours of the same surfaces, with the (n, 2) source pixel (x, y) and the block each lies in; see `Pairs`."""
 
     source: Colours
     reference: Colours
     weights: NDArray[np.float64]
+    places: NDArray[np.int64]
     blocks: NDArray[np.int64]
     low: NDArray[np.bool_]
     high: NDArray[np.bool_]
@@ -93,6 +94,7 @@ def read_colours(source: Reduced, reference: Reduced, homography: NDArray[np.flo
         source=ours.reshape(-1, 3)[picked].astype(np.float64),
         reference=warped.reshape(-1, 3)[picked].astype(np.float64),
         weights=weights / weights.mean(),
+        places=np.column_stack([columns, rows]),
         blocks=blocks,
         low=low.reshape(-1, 3)[picked] > 0.5,
         high=high.reshape(-1, 3)[picked] > 0.5,

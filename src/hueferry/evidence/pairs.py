@@ -126,7 +126,7 @@ def find_homography(
     homography = np.asarray(found, dtype=np.float64)
     if not np.isfinite(homography).all() or not _is_sane(homography, here):
         return None
-    inside = np.linalg.norm(_carry(homography, here) - there, axis=1) < REACH
+    inside = np.linalg.norm(carry(homography, here) - there, axis=1) < REACH
     distinct = min(_distinct(here[inside]), _distinct(there[inside]))
     chance = _log_false_alarms(len(here), distinct, pi * REACH**2 / (shape[0] * shape[1]))
     if distinct < FEWEST or chance > SURE:
@@ -134,7 +134,8 @@ def find_homography(
     return homography, inside, chance
 
 
-def _carry(homography: Homography, points: Points) -> Points:
+def carry(homography: Homography, points: Points) -> Points:
+    """Carry (n, 2) pixels (x, y) over."""
     lifted = np.column_stack([points, np.ones(len(points))]) @ homography.T
     return np.asarray(lifted[:, :2] / lifted[:, 2:])
 

@@ -1,13 +1,15 @@
 """All maps of a series at once: every picture's camera map, so that linked surfaces come out alike everywhere.
 
 Unknown are fifteen numbers a picture. A link asks that a surface, carried over from either of its two pictures, comes
-out the same. References are fixed. All links are heard together, so an error in one is outvoted by the loops around
-it, and nothing adds up along a chain.
+out the same. One number more, common to all, says how lenses darken corners: left out, it would make a chain of
+overlapping pictures drift. References are fixed. All links are heard together, so an error in one is outvoted by the
+loops around it, and nothing adds up along a chain.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING
 
 import attrs
 import numpy as np
@@ -15,11 +17,14 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Colours, Linear, Weights, read_only
 from hueferry.colour.spaces import oklab_to_linear_srgb
-from hueferry.evidence.camera import SIZE, Parameters, render
+from hueferry.evidence.camera import NAMES, SIZE, Parameters, render
 from hueferry.evidence.prior import Prior
 from hueferry.evidence.sensitivities import sensitivities
 from hueferry.series.candidates import Pair
 from hueferry.series.links import Link
+
+if TYPE_CHECKING:
+    from scipy.sparse import csc_array
 
 Planes = NDArray[np.float64]
 
@@ -29,11 +34,20 @@ HEAVY = 4.0
 LEAST_SCALE = 0.006
 """Oklab; what rounding and sharpness leave at best."""
 
-_SCALES = (0.06, 0.04, 0.025, 0.015, 0.01, *(LEAST_SCALE,) * 7)
+_SCALES = (0.06, 0.04, 0.025, 0.015, 0.01, *(LEAST_SCALE,) * 12)
 """Smallest scale in each step, from wide to narrow."""
 
 _SETTLED = 0.02
 """Largest step, in deviations of the prior, after which nothing moves any more."""
+
+STIFF = 0.05
+"""Share of its usual deviation that the knee keeps: it and the shoulder do alike, and the two would seesaw."""
+
+FALLOFF = 0.03
+"""Deviation of the falloff of light towards the corners, as a share of Oklab lightness."""
+
+MOST_FALLOFF = 0.3
+"""Largest falloff that is thought of, either way."""
 
 _STEP = 1e-4
 _FARTHEST = 3.0
@@ -48,6 +62,7 @@ class JointFit:
         parameters: (n, 15) of each picture.
         scales: (links,) robust deviation between the two sides of each link, Oklab, a channel.
         trust: (links,) how far each link was believed, 0 … 1.
+        falloff: how much darker the corners of all pictures are than the middle, as a share of Oklab lightness.
         precision: (n, 15, 15) of each picture's parameters, its partners being right: links and prior.
         steps: steps taken.
     """
@@ -55,6 +70,7 @@ class JointFit:
     parameters: Parameters = attrs.field(converter=read_only)
     scales: NDArray[np.float64] = attrs.field(converter=read_only)
     trust: NDArray[np.float64] = attrs.field(converter=read_only)
+    falloff: float
     precision: Planes = attrs.field(converter=read_only)
     steps: int
 
@@ -65,6 +81,15 @@ class _Side:
 
     light: Linear
     spans: tuple[tuple[int, int, slice], ...]
+
+
+@attrs.frozen(eq=False)
+class _Gaps:
+    """Of every link: its (n, 3) gap, the (15, 3 n) slopes of both ends, and the (n, 3) slope of the falloff."""
+
+    gaps: Sequence[Planes]
+    slopes: Sequence[Sequence[Planes]]
+    lifted: Sequence[Planes]
 
 
 def solve_joint(links: Mapping[Pair, Link], priors: Sequence[Prior], fixed: Mapping[int, Parameters]) -> JointFit:
@@ -81,26 +106,34 @@ def solve_joint(links: Mapping[Pair, Link], priors: Sequence[Prior], fixed: Mapp
     References:
         Lange, Little & Taylor (1989) for the Student likelihood; Triggs et al. (2000), Bundle adjustment: a modern
         synthesis, section 6 (sparse normal equations), section 9 (gauge); Fuller (1987), Measurement error models,
-        section 2.4 (slopes and errors that do not know of each other).
+        section 2.4 (slopes and errors that do not know of each other); Goldman (2010), Vignette and exposure
+        calibration and compensation (the falloff).
     """
-    ends = list(links)
-    sides = _sides(len(priors), ends, list(links.values()))
+    ends, found = list(links), list(links.values())
+    priors = [_stiffened(prior) for prior in priors]
+    sides = _sides(len(priors), ends, found)
     parameters = np.array([fixed.get(index, prior.mean) for index, prior in enumerate(priors)])
     trust = np.ones(len(ends))
     scales = np.full(len(ends), _SCALES[0])
-    taken = 0
+    falloff, taken = 0.0, 0
     for blur in _SCALES:
-        gaps, slopes = _read(sides, parameters, scales)
-        weights, scales = _weigh(gaps, list(links.values()), blur)
+        read = _read(sides, parameters, scales, found, falloff)
+        weights, scales = _weigh(read.gaps, found, blur)
         trust = _believe(scales)
-        normal = _normal_equations(gaps, slopes, _weighted(weights, scales, trust), ends, parameters, priors)
-        step = _step(normal, priors, fixed)
-        parameters = parameters + step
+        normal = _normal_equations(read, _weighted(weights, scales, trust), ends, parameters, priors)
+        step, lift = _step(normal, priors, fixed, falloff)
+        parameters, falloff = parameters + step, float(np.clip(falloff + lift, -MOST_FALLOFF, MOST_FALLOFF))
         taken += 1
         largest = max(float(np.abs(one / prior.deviations).max()) for one, prior in zip(step, priors, strict=True))
         if blur == LEAST_SCALE and largest < _SETTLED:
             break
-    return JointFit(parameters, scales, trust, normal.diagonal, taken)
+    return JointFit(parameters, scales, trust, falloff, normal.diagonal, taken)
+
+
+def _stiffened(prior: Prior) -> Prior:
+    factor = np.ones(SIZE)
+    factor[NAMES.index("knee")] = 1 / STIFF
+    return Prior(prior.mean, prior.precision * np.outer(factor, factor))
 
 
 def _sides(count: int, ends: Sequence[Pair], links: Sequence[Link]) -> list[_Side]:
@@ -118,22 +151,29 @@ def _sides(count: int, ends: Sequence[Pair], links: Sequence[Link]) -> list[_Sid
     ]
 
 
-def _read(sides: Sequence[_Side], parameters: Parameters, scales: Planes) -> tuple[list[Planes], list[list[Planes]]]:
-    """Return the (n, 3) gap of every link, and the (15, 3 n) slopes of both its ends."""
-    carried: list[list[Planes]] = [[np.empty(0)] * 2 for _ in scales]
-    slopes: list[list[Planes]] = [[np.empty(0)] * 2 for _ in scales]
+def _read(
+    sides: Sequence[_Side], parameters: Parameters, scales: Planes, links: Sequence[Link], falloff: float
+) -> _Gaps:
+    """Carry all colours over, lift them by `falloff`, and read gaps and slopes."""
+    carried: list[list[Planes]] = [[np.empty(0)] * 2 for _ in links]
+    slopes: list[list[Planes]] = [[np.empty(0)] * 2 for _ in links]
     linked = [(side, own) for side, own in zip(sides, parameters, strict=True) if side.spans]
     for side, own in linked:
         out = render(own, side.light)
         for number, end, rows in side.spans:
             carried[number][end] = out[rows]
-    gaps = [second - first for first, second in carried]
+    lifts = [1 / (1 - falloff * link.out) for link in links]
+    gaps = [second * lift[:, 1:] - first * lift[:, :1] for (first, second), lift in zip(carried, lifts, strict=True)]
     for side, own in linked:
         wanted = np.concatenate([_halfway(gaps[number], end, scales[number]) for number, end, _ in side.spans])
-        slope = sensitivities(own, _moved(own, side.light, wanted))[1]
+        slope = sensitivities(own, move_light(own, side.light, wanted))[1]
         for number, end, rows in side.spans:
-            slopes[number][end] = slope[:, :, rows].reshape(SIZE, -1)
-    return gaps, slopes
+            slopes[number][end] = (slope[:, :, rows] * lifts[number][:, end]).reshape(SIZE, -1)
+    lifted = [
+        (first * lift[:, :1] + second * lift[:, 1:]) / 2 * np.diff(link.out * lift, axis=1)
+        for (first, second), lift, link in zip(carried, lifts, links, strict=True)
+    ]
+    return _Gaps(gaps, slopes, lifted)
 
 
 def _halfway(gap: Planes, end: int, scale: float) -> Planes:
@@ -142,7 +182,7 @@ def _halfway(gap: Planes, end: int, scale: float) -> Planes:
     return np.asarray(half * np.minimum(1.0, limit / np.maximum(np.linalg.norm(half, axis=1, keepdims=True), 1e-12)))
 
 
-def _moved(own: Parameters, light: Linear, wanted: Planes) -> Linear:
+def move_light(own: Parameters, light: Linear, wanted: Planes) -> Linear:
     """Move (n, 3) light so that its image moves by (n, 3) `wanted`, to first order."""
     step = _STEP + 0.01 * np.abs(light)
     base = render(own, light)
@@ -184,52 +224,74 @@ def _weighted(weights: Sequence[Weights], scales: Planes, trust: Planes) -> list
 
 @attrs.frozen(eq=False)
 class _Normal:
-    """Normal equations: (n, 15, 15) blocks of the diagonal, blocks across by pair, (n, 15) right side."""
+    """Normal equations.
+
+    Attributes:
+        diagonal: (n, 15, 15) blocks.
+        across: (15, 15) blocks by pair.
+        right: (n, 15) right side.
+        border: (n, 15) what ties each picture to the falloff.
+        corner: what the links know of the falloff, and its right side.
+    """
 
     diagonal: Planes
     across: Mapping[Pair, Planes]
     right: Planes
+    border: Planes
+    corner: tuple[float, float]
 
 
 def _normal_equations(
-    gaps: Sequence[Planes],
-    slopes: Sequence[Sequence[Planes]],
-    weights: Sequence[Weights],
-    ends: Sequence[Pair],
-    parameters: Parameters,
-    priors: Sequence[Prior],
+    read: _Gaps, weights: Sequence[Weights], ends: Sequence[Pair], parameters: Parameters, priors: Sequence[Prior]
 ) -> _Normal:
     diagonal = np.array([prior.precision for prior in priors])
     right = np.array([p.precision @ (p.mean - own) for p, own in zip(priors, parameters, strict=True)])
-    across: dict[Pair, Planes] = {}
-    for (i, j), gap, (first, second), weight in zip(ends, gaps, slopes, weights, strict=True):
-        say, lack = np.tile(weight, 3), gap.T.ravel()
+    border, across, corner = np.zeros_like(right), {}, np.zeros(2)
+    for (i, j), gap, (first, second), lifted, weight in zip(
+        ends, read.gaps, read.slopes, read.lifted, weights, strict=True
+    ):
+        say, lack, lift = np.tile(weight, 3), gap.T.ravel(), lifted.T.ravel()
         ours, theirs = first * say, second * say
         diagonal[i] += ours @ first.T
         diagonal[j] += theirs @ second.T
         right[i] += ours @ lack
         right[j] -= theirs @ lack
+        border[i] -= ours @ lift
+        border[j] += theirs @ lift
         across[i, j] = -ours @ second.T
-    return _Normal(diagonal, across, right)
+        corner += (lift * say) @ np.column_stack([lift, -lack])
+    return _Normal(diagonal, across, right, border, (float(corner[0]), float(corner[1])))
 
 
-def _step(normal: _Normal, priors: Sequence[Prior], fixed: Mapping[int, Parameters]) -> Parameters:
-    """Solve the normal equations for the (n, 15) step, bounded; 0 for what is fixed."""
-    from scipy.sparse import bsr_array
+def _step(
+    normal: _Normal, priors: Sequence[Prior], fixed: Mapping[int, Parameters], falloff: float
+) -> tuple[Parameters, float]:
+    """Solve the normal equations for the (n, 15) step, bounded, 0 for what is fixed; and for that of the falloff."""
     from scipy.sparse.linalg import splu
 
-    count = len(priors)
-    diagonal, right = normal.diagonal.copy(), normal.right.copy()
-    for index in fixed:
-        diagonal[index], right[index] = np.eye(SIZE), 0.0
+    free = np.ones((len(priors), 1))
+    free[list(fixed)] = 0.0
+    solver = splu(_matrix(normal, fixed), permc_spec="MMD_AT_PLUS_A", options={"SymmetricMode": True})
+    right, border = (normal.right * free).ravel(), (normal.border * free).ravel()
+    alone, along = solver.solve(right), solver.solve(border)
+    known, wanted = normal.corner[0] + FALLOFF**-2, normal.corner[1] - falloff * FALLOFF**-2
+    lift = float((wanted - border @ alone) / (known - border @ along))
+    step = (alone - lift * along).reshape(len(priors), SIZE)
+    reach = np.array([np.abs(one / prior.deviations).max() for one, prior in zip(step, priors, strict=True)])
+    return np.asarray(step * np.minimum(1.0, 4.0 / np.maximum(reach, 1e-12))[:, None]), lift
+
+
+def _matrix(normal: _Normal, fixed: Mapping[int, Parameters]) -> csc_array:
+    """Return the sparse matrix of the normal equations, columns first; what is fixed stands apart."""
+    from scipy.sparse import bsr_array
+
+    count = len(normal.right)
+    diagonal = normal.diagonal.copy()
+    diagonal[list(fixed)] = np.eye(SIZE)
     across = {pair: block for pair, block in normal.across.items() if not fixed.keys() & set(pair)}
     rows = np.array([*range(count), *(i for i, _ in across), *(j for _, j in across)])
     columns = np.array([*range(count), *(j for _, j in across), *(i for i, _ in across)])
     blocks = np.array([*diagonal, *across.values(), *(block.T for block in across.values())])
     order = np.lexsort((columns, rows))
     starts = np.searchsorted(rows[order], np.arange(count + 1))
-    matrix = bsr_array((blocks[order], columns[order], starts), shape=(count * SIZE, count * SIZE))
-    solver = splu(matrix.tocsc(), permc_spec="MMD_AT_PLUS_A", options={"SymmetricMode": True})
-    step = solver.solve(right.ravel()).reshape(count, SIZE)
-    reach = np.array([np.abs(one / prior.deviations).max() for one, prior in zip(step, priors, strict=True)])
-    return np.asarray(step * np.minimum(1.0, 4.0 / np.maximum(reach, 1e-12))[:, None])
+    return bsr_array((blocks[order], columns[order], starts), shape=(count * SIZE, count * SIZE)).tocsc()

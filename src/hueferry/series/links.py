@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from hueferry.arrays import Colours, Weights, read_only
 from hueferry.evidence.dense import read_colours
 from hueferry.evidence.keypoints import match
-from hueferry.evidence.pairs import find_homography
+from hueferry.evidence.pairs import carry, find_homography
 from hueferry.evidence.reduced import Reduced
 from hueferry.series.candidates import Pair, bridging_pairs, candidate_pairs, further_pairs
 from hueferry.series.views import View
@@ -22,8 +22,8 @@ KEPT = 240
 FEWEST = 40
 """Pairs of colours below which there is no link."""
 
-PER_BLOCK = 12.0
-"""Independent pairs that one block of a picture is worth at most: neighbours err alike."""
+PER_BLOCK = 2.5
+"""Independent pairs that one block of a picture is worth at most: neighbours err alike, and so do links."""
 
 Finder = Callable[[View, View], "Link | None"]
 Spread = Callable[[Sequence[tuple[View, View]]], Iterable["Link | None"]]
@@ -37,6 +37,8 @@ class Link:
     Attributes:
         first: (n, 3) Oklab in the first picture.
         second: (n, 3) Oklab of the same surfaces in the second.
+        out: (n, 2) how far each lies from the middle of the first, and of the second picture: the square of the
+            distance, 1 in the corners.
         weights: (n,) trust; they sum to the number of independent pairs that these are worth.
         coverage: share of the first picture that the second shows, 0 … 1.
         inliers: keypoints explained.
@@ -44,6 +46,7 @@ class Link:
 
     first: Colours = attrs.field(converter=read_only)
     second: Colours = attrs.field(converter=read_only)
+    out: NDArray[np.float64] = attrs.field(converter=read_only)
     weights: Weights = attrs.field(converter=read_only)
     coverage: float
     inliers: int
@@ -67,11 +70,14 @@ def find_link(first: View, second: View) -> Link | None:
     kept = _thinned(np.flatnonzero(~ended))
     if len(kept) < FEWEST:
         return None
-    weights = dense.weights[kept]
+    weights, places = dense.weights[kept], dense.places[kept].astype(np.float64)
     worth = min(PER_BLOCK * len(np.unique(dense.blocks[kept])), float(len(kept)))
     return Link(
         first=dense.source[kept],
         second=dense.reference[kept],
+        out=np.column_stack(
+            [_out(places, first.flags.shape), _out(carry(dense.homography, places), second.flags.shape)]
+        ),
         weights=weights * (worth / weights.sum()),
         coverage=dense.coverage,
         inliers=int(inside.sum()),
@@ -113,11 +119,17 @@ def _here(pairs: Sequence[tuple[View, View]]) -> Iterator[Link | None]:
 
 def _unclipped(reduced: Reduced) -> Reduced:
     """Leave out what is clipped and its neighbourhood, unless too little would be left."""
-    import cv2
+    from scipy.ndimage import maximum_filter
 
-    clipped = cv2.dilate(reduced.clipped.astype(np.uint8), np.ones((5, 5), np.uint8)) > 0
+    clipped = maximum_filter(reduced.clipped, size=5)
     usable = reduced.usable & ~clipped
     return attrs.evolve(reduced, usable=usable) if usable.sum() > 1000 else reduced
+
+
+def _out(places: NDArray[np.float64], shape: tuple[int, ...]) -> NDArray[np.float64]:
+    """Return the (n,) squared distance of (n, 2) pixels (x, y) from the middle, 1 in the corners."""
+    middle = (np.array([shape[1], shape[0]]) - 1) / 2
+    return np.asarray(((places - middle) ** 2).sum(axis=1) / max(float(middle @ middle), 1.0))
 
 
 def _thinned(places: NDArray[np.int64]) -> NDArray[np.int64]:
