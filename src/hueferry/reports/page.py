@@ -200,6 +200,8 @@ def _series(overview: Json) -> list[dict[str, Any]]:
     numbers = [f"{index} {name}" for index, name in enumerate(names, 1)]
     drawn: list[dict[str, Any]] = []
     for when in ("before", "after"):
+        if not overview[f"distances_{when}"]:
+            continue
         distances = np.array(overview[f"distances_{when}"])
         drawn.append(
             {

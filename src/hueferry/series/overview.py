@@ -13,6 +13,9 @@ from hueferry.measure.matrix import compare
 from hueferry.palettes.palette import Palette
 from hueferry.series.keepsake import Done
 
+MOST_IN_A_MATRIX = 150
+"""Pictures beyond which nobody reads a matrix of each with each, and the record leaves it out."""
+
 LEAST = 3
 """Pictures below which there is no series to look over."""
 
@@ -20,7 +23,8 @@ LEAST = 3
 def overview(done: Sequence[Done]) -> dict[str, Any]:
     """Return distances before and after, one map of both, outliers and traces, as JSON values; empty below three.
 
-    Distances are sliced W2 in ΔE*ab (D50). The map shows every picture before and after on the same two axes.
+    Distances are sliced W2 in ΔE*ab (D50), and left out for very many pictures. The map shows every picture before and
+    after on the same two axes.
     """
     if len(done) < LEAST:
         return {}
@@ -30,8 +34,8 @@ def overview(done: Sequence[Done]) -> dict[str, Any]:
     first, second = compare(before, names), compare(after, names)
     return {
         "names": names,
-        "distances_before": _rounded(first.distances),
-        "distances_after": _rounded(second.distances),
+        "distances_before": _rounded(first.distances) if len(done) <= MOST_IN_A_MATRIX else [],
+        "distances_after": _rounded(second.distances) if len(done) <= MOST_IN_A_MATRIX else [],
         "map_before": _rounded(together.positions[: len(done)]),
         "map_after": _rounded(together.positions[len(done) :]),
         "shown": round(together.shown, 3),
