@@ -36,6 +36,8 @@ def match(
     max_gain: options.MaxGain = None,
     seed: options.Seed = 0,
     workers: options.Workers = None,
+    one_by_one: options.OneByOne = False,
+    time_lapse: options.TimeLapse = False,
     cluster: options.ClusterAddress = None,
     tls_ca: options.TlsCa = None,
     tls_certificate: options.TlsCertificate = None,
@@ -71,6 +73,8 @@ def match(
         hold=hold,
         overwrite=overwrite,
         workers=workers,
+        joint=not (one_by_one or watch),
+        time_lapse=time_lapse,
         cluster=None if cluster is None else Cluster(cluster, tls_ca, tls_certificate, tls_key),
     )
     if dry_run:
@@ -114,7 +118,9 @@ def show_costs(record: Record) -> None:
     """Print what every picture cost before and after, and where it went."""
     rows = [_row(entry) for entry in record.entries]
     if rows:
-        title = f"Transport cost, {' '.join(record.sentences)} (root mean square, ΔE*ab, D50)"
+        title = f"Transport cost, {record.sentences[0]} (root mean square, ΔE*ab, D50)"
+        for sentence in record.sentences[1:]:
+            remark(sentence)
         show_table(title, ("picture", "before", "after", "moved", "largest gain", "evidence"), rows)
     if record.failures:
         count = len(record.failures)

@@ -57,6 +57,12 @@ ClusterAddress = Annotated[
 TlsCa = Annotated[Path | None, typer.Option("--tls-ca", help="Certificates of the cluster's authority (PEM).")]
 TlsCertificate = Annotated[Path | None, typer.Option("--tls-certificate", help="Our certificate (PEM).")]
 TlsKey = Annotated[Path | None, typer.Option("--tls-key", help="Its private key (PEM).")]
+OneByOne = Annotated[
+    bool, typer.Option("--one-by-one", help="Fit each picture by itself, not three or more as one series.")
+]
+TimeLapse = Annotated[
+    bool, typer.Option("--time-lapse", help="Keep what changes slowly over the series; take out what flickers.")
+]
 Watch = Annotated[bool, typer.Option("--watch", help="Go on with pictures as they arrive, until stopped.")]
 DryRun = Annotated[bool, typer.Option("--dry-run", help="Print what would be done, and write nothing.")]
 Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace files of the same names.")]

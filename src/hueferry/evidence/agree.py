@@ -12,7 +12,7 @@ from hueferry.arrays import Colours, Mask
 from hueferry.colour.difference import delta_e_2000
 from hueferry.colour.spaces import oklab_to_lab
 from hueferry.errors import InputError
-from hueferry.evidence.camera import SIZE, CameraMap
+from hueferry.evidence.camera import SIZE, CameraMap, Parameters
 from hueferry.evidence.controls import hold_colours, keep_neutrals_of, only_chroma, only_tone
 from hueferry.evidence.estimate import expected_error
 from hueferry.evidence.evidence import Basis, Evidence
@@ -28,11 +28,14 @@ from hueferry.picture import Picture
 HOLD_LIMIT = 1.0
 """ΔE00 that held colours may move."""
 
+KNOWN = 0.1
+"""How far a map that is already likely may be off, as a share of the deviations of an unknown one."""
+
 _ONLY = MappingProxyType({"tone": only_tone, "chroma": only_chroma})
 _SAMPLE = 500
 
 
-def agree(
+def agree(  # noqa: PLR0913 - the settings of a fit, by name
     source: Picture | Reduced,
     references: Sequence[Picture | Reduced | Palette],
     *,
@@ -41,6 +44,7 @@ def agree(
     hold: Mask | None = None,
     mask: Mask | None = None,
     seed: int = 0,
+    known: Parameters | None = None,
 ) -> tuple[Map, Evidence]:
     """Find the change of light and camera between `source` and `references`, and undo it as far as it is known.
 
@@ -52,6 +56,7 @@ def agree(
         hold: (height, width) of the source, true where colours must not move more than `HOLD_LIMIT`.
         mask: (height, width) of the source, true where pixels count.
         seed: seed of every draw.
+        known: (15,) parameters of the camera map that is already likely; None expects no change.
 
     Returns:
         The map, Oklab to Oklab, and the evidence. Where the evidence carries no correction the map moves nothing,
@@ -69,9 +74,9 @@ def agree(
     sample = _sample(ours.colours, seed)
     if not len(sample):
         return _nothing("nothing of the picture counts: every pixel is masked, transparent or not finite", len(theirs))
-    priors = [no_change(source_exposure=ours.exposure, reference_exposure=_exposure(their)) for their in theirs]
+    priors = [_prior(ours, their, known) for their in theirs]
     witnesses = [hear(ours, their, prior) for their, prior in zip(theirs, priors, strict=True)]
-    prior = priors[0] if len(theirs) == 1 else no_change()
+    prior = priors[0] if len(theirs) == 1 or known is not None else no_change()
     if all(witness.basis is Basis.NONE for witness in witnesses):
         return _nothing(witnesses[0].reason, len(theirs), witnesses=witnesses, error=_left(witnesses, prior, sample))
     verdict = combine(witnesses, prior, sample)
@@ -79,6 +84,12 @@ def agree(
         only = "tone"
     map_ = _controlled(_refined(verdict, witnesses, sample), ours, keep_neutrals=keep_neutrals, only=only, hold=hold)
     return map_, _evidence(map_, verdict, witnesses, sample, _stops(ours, theirs))
+
+
+def _prior(ours: Reduced, theirs: Reduced | Palette, known: Parameters | None) -> Prior:
+    if known is None:
+        return no_change(source_exposure=ours.exposure, reference_exposure=_exposure(theirs))
+    return Prior(known, no_change().precision / KNOWN**2)
 
 
 def identity() -> Map:

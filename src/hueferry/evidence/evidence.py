@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from enum import StrEnum
+from functools import partial
 from types import MappingProxyType
 from typing import Any
 
@@ -60,6 +61,11 @@ class Evidence:
     judged_after: float | None = None
     exposure_stops: float | None = None
     camera: Mapping[str, float] = attrs.field(factory=dict, converter=_frozen)
+
+    def __reduce__(self) -> tuple[Callable[[], Evidence], tuple[()]]:
+        """Cross to worker processes, which a read-only view of a dictionary does not."""
+        values = {field.name: getattr(self, field.name) for field in attrs.fields(type(self))}
+        return partial(type(self), **{**values, "camera": dict(self.camera)}), ()
 
     def as_dict(self) -> dict[str, Any]:
         """Return everything as JSON values."""

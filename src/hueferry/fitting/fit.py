@@ -9,9 +9,11 @@ from types import MappingProxyType
 from typing import Any
 
 import attrs
+import numpy as np
 
 from hueferry.arrays import Mask
 from hueferry.evidence.agree import HOLD_LIMIT, agree
+from hueferry.evidence.camera import NAMES, Parameters
 from hueferry.evidence.controls import hold_colours, keep_neutrals_of, only_chroma, only_tone
 from hueferry.evidence.evidence import Basis, Evidence
 from hueferry.evidence.reduced import Reduced
@@ -33,6 +35,14 @@ DEFAULT_METHOD = Method.ENTROPIC
 """What `auto` means under `adopt`: the best of the truth benchmark where the content is the same."""
 
 _PARTS: Mapping[Only, Callable[[Map], Map]] = MappingProxyType({Only.TONE: only_tone, Only.CHROMA: only_chroma})
+
+
+@attrs.frozen(eq=False)
+class Given:
+    """A map that was decided elsewhere, with the evidence for it."""
+
+    map: Map
+    evidence: Evidence
 
 
 @attrs.frozen(eq=False)
@@ -113,6 +123,7 @@ def fit_picture(
     *,
     mask: Mask | None = None,
     hold: Mask | None = None,
+    given: Given | None = None,
 ) -> Fit:
     """Find the table that brings `source` towards its references.
 
@@ -122,6 +133,7 @@ def fit_picture(
         settings: what is wanted.
         mask: (height, width) of the source, true where pixels count.
         hold: (height, width) of the source, true where colours must stay.
+        given: what a series decided for this picture under the aim `agree`; None finds it here.
 
     Raises:
         InputError: no reference, or a mask of another size than the picture.
@@ -131,7 +143,7 @@ def fit_picture(
     with ThreadPoolExecutor(1) as pool:
         counting = pool.submit(palette_of, source, mask=mask)
         target = joint_palette(references)
-        task = _Task(source, counting, references, target, settings, mask, hold)
+        task = _Task(source, counting, references, target, settings, mask, hold, given)
         wanted, evidence = _FITTERS[settings.aim](task)
         palette = task.palette
     result = tabulate(wanted, source.encoding, palette, settings, bits=source.bits)
@@ -163,6 +175,7 @@ class _Task:
     settings: Settings
     mask: Mask | None
     hold: Mask | None
+    given: Given | None
 
     @property
     def palette(self) -> Palette:
@@ -191,7 +204,16 @@ def _controlled(map_: Map, task: _Task) -> Map:
 
 def _fit_agree(task: _Task) -> tuple[Map, Evidence]:
     settings = task.settings
-    map_, evidence = agree(
+    map_, evidence = _agreed(task) if task.given is None else _agreed_with_series(task, task.given)
+    if settings.method is not None and evidence.basis is not Basis.NONE:
+        wanted = attrs.evolve(task.palette, colours=map_(task.palette.colours))
+        map_ = fit_map(task.palette, wanted, method=settings.method, seed=settings.seed)
+    return map_, evidence
+
+
+def _agreed(task: _Task, *, known: Parameters | None = None) -> tuple[Map, Evidence]:
+    settings = task.settings
+    return agree(
         task.source,
         _witnesses(task.references),
         keep_neutrals=settings.keep_neutrals,
@@ -199,11 +221,18 @@ def _fit_agree(task: _Task) -> tuple[Map, Evidence]:
         hold=task.hold,
         mask=task.mask,
         seed=settings.seed,
+        known=known,
     )
-    if settings.method is not None and evidence.basis is not Basis.NONE:
-        wanted = attrs.evolve(task.palette, colours=map_(task.palette.colours))
-        map_ = fit_map(task.palette, wanted, method=settings.method, seed=settings.seed)
-    return map_, evidence
+
+
+def _agreed_with_series(task: _Task, given: Given) -> tuple[Map, Evidence]:
+    """Take the series' map; where the picture itself shows surfaces of a reference, they say the rest."""
+    if given.evidence.basis is Basis.PAIRS and any(one.witness is not None for one in task.references):
+        known = np.array([given.evidence.camera[name] for name in NAMES])
+        map_, evidence = _agreed(task, known=known)
+        if evidence.basis is Basis.PAIRS:
+            return map_, evidence
+    return _controlled(given.map, task), given.evidence
 
 
 def _witnesses(references: Sequence[Reference]) -> list[Reduced | Palette]:

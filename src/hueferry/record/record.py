@@ -99,6 +99,7 @@ class Record:
         overview: the series as a whole.
         versions: of Python and of the packages whose code touches a colour.
         hold: the mask of what had to keep its colours, or None.
+        series: whether the pictures were solved together (`joint`) and as a time-lapse (`time_lapse`).
     """
 
     command: str
@@ -110,6 +111,7 @@ class Record:
     overview: Mapping[str, Any] = attrs.field(factory=dict)
     versions: Mapping[str, str] = attrs.field(factory=installed_versions)
     hold: FileFact | None = None
+    series: Mapping[str, bool] = attrs.field(factory=dict)
 
     def as_dict(self) -> dict[str, Any]:
         """Return the record as JSON values."""

@@ -9,7 +9,7 @@ import attrs
 
 from hueferry.arrays import Mask
 from hueferry.errors import HueferryError, OutputError, PictureError
-from hueferry.fitting.fit import Fit, fit_picture
+from hueferry.fitting.fit import Fit, Given, fit_picture
 from hueferry.fitting.reference import Reference
 from hueferry.fitting.settings import Settings
 from hueferry.palettes.reduce import thin
@@ -48,12 +48,14 @@ class Job:
         source_name: its path as the caller gave it.
         stage: absolute path under which the result is written and verified first.
         output_name: the name below the folder of the run that it will have.
+        given: the map that its series decided, or None: then it is found from this picture alone.
     """
 
     source: Path
     source_name: str
     stage: Path
     output_name: str
+    given: Given | None = None
 
 
 @attrs.frozen
@@ -93,7 +95,7 @@ def _do(context: Context, job: Job) -> Done:
     from hueferry.files.write import write
 
     picture = read(job.source)
-    fitted = fit_picture(picture, context.references, context.settings, hold=context.hold)
+    fitted = fit_picture(picture, context.references, context.settings, hold=context.hold, given=job.given)
     result = picture if fitted.leaves_alone else fitted.apply(picture)
     if fitted.leaves_alone and job.stage.suffix == job.source.suffix:  # no second generation of loss for nothing
         write_bytes(job.stage, job.source.read_bytes(), overwrite=True)

@@ -2,26 +2,26 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Sequence
 from functools import partial
 from pathlib import Path
 
 import attrs
 
 from hueferry.errors import OutputError
-from hueferry.fitting.settings import Settings
+from hueferry.fitting.settings import Aim, Settings
 from hueferry.record.record import NAME, Failure, FileFact, Record, to_json
-from hueferry.series.cluster import Cluster, run_on_cluster
-from hueferry.series.job import Context, Failed, Job, run_job
-from hueferry.series.journal import Journal, Row
-from hueferry.series.keepsake import Done, Kept, record_from, unpack
+from hueferry.series.cluster import Cluster
+from hueferry.series.job import Context
+from hueferry.series.journal import Journal
+from hueferry.series.keepsake import Done, record_from
 from hueferry.series.memory import choose_workers, memory_of
 from hueferry.series.overview import overview
 from hueferry.series.plan import plan_errands
-from hueferry.series.publish import publish
-from hueferry.series.references import load_mask, load_references
-from hueferry.series.schedule import Schedule, Step, identity, is_sealed, make_schedule, seal_of
-from hueferry.series.workers import Died, run_tasks
+from hueferry.series.references import load_mask
+from hueferry.series.schedule import Schedule, identity, is_sealed, make_schedule, seal_of
+from hueferry.series.together import LEAST_TOGETHER, Together, bring_together
+from hueferry.series.work import Work
 
 OnPlan = Callable[[Schedule], None]
 """Called once, before anything is done."""
@@ -61,6 +61,8 @@ class MatchOrder:
         workers: pictures done at a time, each but the only one by a process of its own; None chooses.
         cluster: who does them instead, or None.
         arrived: those of the pictures that are complete and may be read, or None for all.
+        joint: solve three pictures or more as one series under the aim `agree`; else each by itself.
+        time_lapse: keep what changes slowly over the series.
     """
 
     inputs: Sequence[Path]
@@ -72,6 +74,8 @@ class MatchOrder:
     workers: int | None = 1
     cluster: Cluster | None = None
     arrived: frozenset[Path] | None = None
+    joint: bool = True
+    time_lapse: bool = False
 
 
 def plan_match(order: MatchOrder) -> Schedule:
@@ -99,16 +103,16 @@ def match_pictures(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done:
             on_plan(schedule)
         if is_sealed(schedule, order.out, journal.read_seal()):
             return Run(record_from(order.out), (), schedule, unchanged=True)
-        references, sentence = load_references(order.to, [step.errand for step in schedule.steps], order.settings)
+        work = Work(schedule, journal, journal.begin(), order.cluster, order.overwrite)
+        together = bring_together(work, order.to, order.settings)
         hold = load_mask(order.hold) if order.hold is not None else None
-        context = Context(references, order.settings, hold, len(schedule.steps))
-        work = _Work(schedule, journal, journal.begin(), cluster=order.cluster, overwrite=order.overwrite)
+        context = Context(together.references, order.settings, hold, len(schedule.steps))
         outcomes = dict(work.kept())
-        for number, (step, outcome) in enumerate(work.do(context), 1):
+        for number, (step, outcome) in enumerate(work.do(context, together.given), 1):
             outcomes[step.output] = outcome
             if on_done is not None:
                 on_done(number, len(schedule.to_do), outcome)
-        return _finish(order, schedule, [outcomes[step.output] for step in schedule.steps], sentence)
+        return _finish(order, schedule, [outcomes[step.output] for step in schedule.steps], together)
 
 
 def seal_run(order: MatchOrder, schedule: Schedule, files: Sequence[Path]) -> None:
@@ -126,11 +130,12 @@ def _journal_of(order: MatchOrder) -> Journal:
 
 def _schedule(order: MatchOrder, journal: Journal) -> Schedule:
     errands = plan_errands(order.inputs, order.out, find=partial(_find, arrived=order.arrived))
-    wanted = identity(order.settings, order.to, order.hold)
-    schedule = make_schedule(errands, order.out, journal, wanted=wanted)
+    joint = order.joint and order.settings.aim is Aim.AGREE and len(errands) >= LEAST_TOGETHER
+    wanted = [*identity(order.settings, order.to, order.hold), order.time_lapse]
+    schedule = make_schedule(errands, order.out, journal, wanted=wanted, together=joint or not order.to)
     files = [step.errand.source for step in schedule.to_do]
     workers = choose_workers(files, asked=order.workers)
-    return attrs.evolve(schedule, workers=workers, memory=workers * memory_of(files))
+    return attrs.evolve(schedule, workers=workers, memory=workers * memory_of(files), joint=joint)
 
 
 def _find(paths: Sequence[Path], *, arrived: frozenset[Path] | None) -> list[Path]:
@@ -148,75 +153,7 @@ def _check_names(order: MatchOrder, schedule: Schedule, journal: Journal) -> Non
         raise OutputError(path, f"{reason}; choose another folder, or add --overwrite")
 
 
-@attrs.frozen(eq=False)
-class _Work:
-    """A run at work: what is to do, and where it is written down."""
-
-    schedule: Schedule
-    journal: Journal
-    stage: Path
-    cluster: Cluster | None = attrs.field(kw_only=True)
-    overwrite: bool = attrs.field(kw_only=True)
-
-    def kept(self) -> Iterator[tuple[str, Done | Failure]]:
-        for step in self.schedule.steps:
-            if step.known is not None and step.known.state == "failed":
-                yield step.output, Failure(step.fact.path, step.known.reason)
-            elif step.known is not None:
-                row = self.journal.whole(step.output)
-                yield step.output, unpack(Kept(row.entry, row.arrays))
-
-    def do(self, context: Context) -> Iterator[tuple[Step, Done | Failure]]:
-        steps = self.schedule.to_do
-        jobs = [self._job(number, step) for number, step in enumerate(steps)]
-        do = partial(run_job, context)
-        if self.cluster is None:
-            answers = run_tasks(do, jobs, workers=self.schedule.workers)
-        else:
-            answers = run_on_cluster(do, jobs, cluster=self.cluster, folder=self.stage)
-        for number, answer in answers:
-            yield steps[number], self._settle(steps[number], jobs[number], answer)
-
-    def _job(self, number: int, step: Step) -> Job:
-        stage = self.stage.absolute() / f"{number}{step.errand.output.suffix}"
-        return Job(step.errand.source.absolute(), step.fact.path, stage, step.output)
-
-    def _settle(self, step: Step, job: Job, answer: Kept | Failed | Died) -> Done | Failure:
-        path = step.fact.path
-        if isinstance(answer, Died):
-            return Failure(path, f"{path} ({step.fact.size:,} bytes): {answer}")
-        if isinstance(answer, Failed):
-            if answer.lasting and step.fact.sha256:
-                self.journal.store(self._row(step, state="failed", reason=answer.reason))
-            return Failure(path, answer.reason)
-        done = unpack(answer)
-        written = done.entry.output.sha256 if done.entry.output is not None else ""
-        row = self._row(step, state="done", output_sha256=written, entry=answer.entry, arrays=answer.arrays)
-        read = done.entry.source
-        # A picture that was replaced while the run was on its way to it: the journal speaks of what was read.
-        self.journal.store(row if read.sha256 == row.sha256 else attrs.evolve(row, sha256=read.sha256, changed=0))
-        try:
-            publish(job.stage, step.errand.output, replace=self.overwrite or bool(step.present))
-        except OutputError as error:
-            self.journal.forget(step.output)
-            return Failure(path, str(error))
-        return done
-
-    def _row(self, step: Step, *, state: str, **facts: str | bytes) -> Row:
-        return Row(
-            output=step.output,
-            source=step.fact.path,
-            size=step.fact.size,
-            changed=step.changed,
-            sha256=step.fact.sha256,
-            wanted=self.schedule.wanted,
-            state=state,
-            former_sha256=step.present,
-            **facts,  # type: ignore[arg-type]  # strings but for the arrays
-        )
-
-
-def _finish(order: MatchOrder, schedule: Schedule, outcomes: Sequence[Done | Failure], sentence: str) -> Run:
+def _finish(order: MatchOrder, schedule: Schedule, outcomes: Sequence[Done | Failure], together: Together) -> Run:
     from hueferry.files.atomic import write_bytes
 
     done = [outcome for outcome in outcomes if isinstance(outcome, Done)]
@@ -226,9 +163,10 @@ def _finish(order: MatchOrder, schedule: Schedule, outcomes: Sequence[Done | Fai
         references=[FileFact.of(path) for path in order.to],
         entries=[outcome.entry for outcome in done],
         failures=[outcome for outcome in outcomes if isinstance(outcome, Failure)],
-        sentences=[sentence],
-        overview=overview(done),
+        sentences=together.sentences,
+        overview={**overview(done), **together.overview},
         hold=None if order.hold is None else FileFact.of(order.hold),
+        series={"joint": schedule.joint, "time_lapse": order.time_lapse},
     )
     if done:
         write_bytes(order.out / NAME, to_json(record).encode(), overwrite=True)

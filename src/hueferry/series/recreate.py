@@ -54,8 +54,9 @@ def _entry(record: Json, name: str) -> Json:
 
 
 def _sources(record: Json, entry: Json) -> list[Json]:
-    """Return the inputs that decide how a picture comes out: without a reference, all of them."""
-    return [entry["source"]] if record["references"] else [one["source"] for one in record["entries"]]
+    """Return the inputs that decide how a picture comes out: all of them where they decided it together."""
+    alone = record["references"] and not record.get("series", {}).get("joint")
+    return [entry["source"]] if alone else [one["source"] for one in record["entries"]]
 
 
 def _inputs(record: Json, entry: Json) -> list[Json]:
@@ -71,14 +72,23 @@ def _changed(fact: Json) -> str:
 
 
 def _order(record: Json, entry: Json, out: Path) -> MatchOrder:
-    held = record.get("hold")
+    sources = [source["path"] for source in _sources(record, entry)]
+    held, series = record.get("hold"), record.get("series", {})
     return MatchOrder(
-        inputs=[Path(source["path"]) for source in _sources(record, entry)],
+        # What failed took part in nothing, but counts among the pictures of the run.
+        inputs=[Path(path) for path in dict.fromkeys([*sources, *_failed(record)])],
         to=[Path(fact["path"]) for fact in record["references"]],
         out=out,
         settings=Settings.from_dict(record["settings"]),
         hold=None if held is None else Path(held["path"]),
+        joint=bool(series.get("joint")),
+        time_lapse=bool(series.get("time_lapse")),
     )
+
+
+def _failed(record: Json) -> list[str]:
+    paths = [str(failure["path"]) for failure in record["failures"]]
+    return [path for path in paths if record.get("series", {}).get("joint") and Path(path).exists()]
 
 
 def _other_versions(recorded: Mapping[str, str]) -> Sequence[str]:

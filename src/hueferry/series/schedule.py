@@ -59,6 +59,7 @@ class Schedule:
         taken: names of results that somebody else's files have.
         workers: pictures done at a time.
         memory: bytes that they may take together, at most.
+        joint: the pictures are solved as one series.
     """
 
     steps: Sequence[Step]
@@ -66,6 +67,7 @@ class Schedule:
     taken: Sequence[Path]
     workers: int = 1
     memory: int = 0
+    joint: bool = False
 
     @property
     def to_do(self) -> list[Step]:
@@ -112,20 +114,22 @@ class Schedule:
         return _hash([self.wanted, *([step.output, step.fact.path, step.fact.sha256] for step in self.steps)])
 
 
-def make_schedule(errands: Sequence[Errand], out: Path, journal: Journal, *, wanted: Sequence[object]) -> Schedule:
+def make_schedule(
+    errands: Sequence[Errand], out: Path, journal: Journal, *, wanted: Sequence[object], together: bool
+) -> Schedule:
     """Compare what is asked with what the journal and the folder hold.
 
     Args:
         errands: the plan.
         out: folder of the run.
         journal: of that folder.
-        wanted: JSON values that stand for all that decides how a picture comes out, besides the picture itself; where
-            it is empty, the pictures decide it together.
+        wanted: JSON values that stand for all that decides how a picture comes out, besides the pictures.
+        together: the pictures decide together how each comes out; else each decides for itself.
     """
     rows = journal.rows()
     inputs = [_fact(errand.source, rows.get(_below(errand, out))) for errand in errands]
-    joint = [] if wanted[-1] else [[Path(fact.path).name, fact.sha256] for fact, _ in inputs]
-    key = _hash([*wanted, joint])
+    all_of_them = [[Path(fact.path).name, fact.sha256] for fact, _ in inputs] if together else []
+    key = _hash([*wanted, all_of_them])
     taken, steps = [], []
     for errand, (fact, changed) in zip(errands, inputs, strict=True):
         row = rows.get(_below(errand, out))
@@ -139,7 +143,7 @@ def make_schedule(errands: Sequence[Errand], out: Path, journal: Journal, *, wan
 
 
 def identity(settings: Settings, to: Sequence[Path], hold: Path | None) -> list[object]:
-    """Return what decides how pictures come out, as JSON values; the references are last."""
+    """Return what decides how pictures come out, besides themselves, as JSON values."""
     held = [] if hold is None else [fact_or_empty(hold).sha256]
     references = [[path.name, fact_or_empty(path).sha256] for path in to]
     return [settings.as_dict(), installed_versions(), held, references]

@@ -31,6 +31,7 @@ class Solution:
         links: how many links were found, references counted.
         falloff: how much darker corners are than the middle, as a share of Oklab lightness.
         sentences: the series in words.
+        base: name of the picture that the others were brought towards, where there was no reference; else None.
     """
 
     frames: tuple[FrameSolution, ...]
@@ -39,6 +40,7 @@ class Solution:
     links: int
     falloff: float
     sentences: tuple[str, ...]
+    base: str | None = None
 
 
 def solve_series(
@@ -93,6 +95,7 @@ def solve_series(
         links=len(links),
         falloff=fit.falloff,
         sentences=_words(series, frames, base),
+        base=None if base is None else views[base].name,
     )
 
 

@@ -119,9 +119,8 @@ def _schedule(order: StainOrder, slides: Sequence[Path], journal: Journal) -> Sc
         for output in (output_path(slide, order.out, order.settings.layout), overlay_path(slide, order.out))
     ]
     references = [[path.name, fact_or_empty(path).sha256] for path in order.to]
-    return make_schedule(
-        errands, order.out, journal, wanted=[order.settings.as_dict(), installed_versions(), [], references]
-    )
+    wanted = [order.settings.as_dict(), installed_versions(), [], references]
+    return make_schedule(errands, order.out, journal, wanted=wanted, together=not references)
 
 
 def _check_taken(order: StainOrder, schedule: Schedule, journal: Journal) -> None:
