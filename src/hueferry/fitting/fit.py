@@ -39,10 +39,17 @@ _PARTS: Mapping[Only, Callable[[Map], Map]] = MappingProxyType({Only.TONE: only_
 
 @attrs.frozen(eq=False)
 class Given:
-    """A map that was decided elsewhere, with the evidence for it."""
+    """A map that was decided elsewhere.
+
+    Attributes:
+        map: Oklab to Oklab.
+        evidence: for it.
+        open: where the picture itself shows surfaces of a reference, these may say the rest.
+    """
 
     map: Map
     evidence: Evidence
+    open: bool = True
 
 
 @attrs.frozen(eq=False)
@@ -227,7 +234,7 @@ def _agreed(task: _Task, *, known: Parameters | None = None) -> tuple[Map, Evide
 
 def _agreed_with_series(task: _Task, given: Given) -> tuple[Map, Evidence]:
     """Take the series' map; where the picture itself shows surfaces of a reference, they say the rest."""
-    if given.evidence.basis is Basis.PAIRS and any(one.witness is not None for one in task.references):
+    if given.open and given.evidence.basis is Basis.PAIRS and any(one.witness is not None for one in task.references):
         known = np.array([given.evidence.camera[name] for name in NAMES])
         map_, evidence = _agreed(task, known=known)
         if evidence.basis is Basis.PAIRS:

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import attrs
 
-from hueferry.errors import OutputError
+from hueferry.errors import InputError, OutputError
 from hueferry.fitting.settings import Aim, Settings
 from hueferry.record.record import NAME, Failure, FileFact, Record, to_json
 from hueferry.series.cluster import Cluster
@@ -104,7 +104,7 @@ def match_pictures(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done:
         if is_sealed(schedule, order.out, journal.read_seal()):
             return Run(record_from(order.out), (), schedule, unchanged=True)
         work = Work(schedule, journal, journal.begin(), order.cluster, order.overwrite)
-        together = bring_together(work, order.to, order.settings)
+        together = bring_together(work, order.to, order.settings, time_lapse=order.time_lapse)
         hold = load_mask(order.hold) if order.hold is not None else None
         context = Context(together.references, order.settings, hold, len(schedule.steps))
         outcomes = dict(work.kept())
@@ -129,6 +129,8 @@ def _journal_of(order: MatchOrder) -> Journal:
 
 
 def _schedule(order: MatchOrder, journal: Journal) -> Schedule:
+    if order.time_lapse and order.to:
+        raise InputError("a time-lapse keeps its own slow changes and follows no reference; leave out --to")
     errands = plan_errands(order.inputs, order.out, find=partial(_find, arrived=order.arrived))
     joint = order.joint and order.settings.aim is Aim.AGREE and len(errands) >= LEAST_TOGETHER
     wanted = [*identity(order.settings, order.to, order.hold), order.time_lapse]

@@ -41,8 +41,14 @@ class Together:
     overview: Mapping[str, Any] = attrs.field(factory=dict)
 
 
-def bring_together(work: Work, to: Sequence[Path], settings: Settings) -> Together:
+def bring_together(work: Work, to: Sequence[Path], settings: Settings, *, time_lapse: bool = False) -> Together:
     """Decide what the pictures of a run are brought towards, and how, as far as they decide it together.
+
+    Args:
+        work: the run.
+        to: references as the caller named them.
+        settings: of every fit.
+        time_lapse: keep what changes slowly over the series; then there are no references.
 
     Raises:
         InputError: a named reference cannot be read, or no picture can serve as one.
@@ -60,11 +66,16 @@ def bring_together(work: Work, to: Sequence[Path], settings: Settings) -> Togeth
         references, sentence = (named, sentence) if to else load_references(to, errands, settings)
         return Together(references, [sentence])
     palette = joint_palette(named) if named and not shown else None
-    solution = solve_series(views, references=shown, palette=palette, spread=partial(_links, work))
-    if not to:
+    solution = solve_series(
+        views, references=shown, palette=palette, time_lapse=time_lapse, spread=partial(_links, work)
+    )
+    if solution.base is not None:
         base = next(step.errand.source for step in steps if step.output == solution.base)
         named, sentence = [Reference.of_file(base)], f"towards {base.name}, the middle of the series"
-    given = {frame.name: Given(frame.map, frame.evidence) for frame in solution.frames}
+    elif time_lapse:
+        named, sentence = load_references(to, errands, settings)
+        sentence = f"along its own slow changes; costs are {sentence}"
+    given = {frame.name: Given(frame.map, frame.evidence, open=not time_lapse) for frame in solution.frames}
     return Together(named, [sentence, *solution.sentences], given, _overview(solution))
 
 
