@@ -26,6 +26,7 @@ from hueferry.applying.gray import integer_gray_curve, map_float_grays
 from hueferry.applying.processor import DEPTHS, FLOAT, make_processor, run_processor
 from hueferry.arrays import Pixels
 from hueferry.errors import InputError
+from hueferry.files.exif import without_thumbnail
 from hueferry.picture import Encoding, Picture, PictureSink, PictureSource, Window, strips
 from hueferry.tables.identity import is_identity
 from hueferry.tables.table import Table
@@ -169,7 +170,9 @@ def apply_table(table: Table, picture: Picture, *, dither: bool = False, threads
     else:
         with ThreadPoolExecutor(count) as pool:
             deque(pool.map(work, windows), maxlen=0)
-    return attrs.evolve(picture, pixels=result)
+    metadata = picture.metadata
+    metadata = attrs.evolve(metadata, exif=without_thumbnail(metadata.exif)) if metadata.exif else metadata
+    return attrs.evolve(picture, pixels=result, metadata=metadata)
 
 
 def apply_windows(

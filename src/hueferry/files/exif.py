@@ -1,4 +1,4 @@
-"""The little of EXIF that is read: orientation and time. Everything else travels byte for byte."""
+"""The little of EXIF that is read or changed: orientation, time, small picture. All else travels byte for byte."""
 
 from __future__ import annotations
 
@@ -6,6 +6,7 @@ from datetime import UTC, datetime
 from typing import Literal
 
 _ORIENTATION, _EXIF_POINTER, _TAKEN = 0x0112, 0x8769, 0x9003
+_SMALL_START, _SMALL_LENGTH = 0x0201, 0x0202
 _MOST_ENTRIES = 1000
 _ALONE = b"MM\0*\0\0\0\x08\0\x01" + _ORIENTATION.to_bytes(2, "big") + b"\0\x03\0\0\0\x01"
 """A block of one entry, an orientation, up to its value."""
@@ -66,3 +67,26 @@ def _entry(exif: bytes, start: int, tag: int) -> int:
 
 def _number(exif: bytes, start: int, size: int) -> int:
     return int.from_bytes(exif[start : start + size], _order(exif))
+
+
+def without_thumbnail(exif: bytes) -> bytes:
+    """Return an EXIF block whose small picture of the uncorrected colours is gone; other bytes stay where they were.
+
+    The link to the directory of the small picture is cut and its JPEG data are blanked, so that no offset elsewhere in
+    the block, also in makers' notes, is moved (Exif 3.0, clause 4.5.4).
+    """
+    if exif[:4] not in (b"II*\0", b"MM\0*"):
+        return exif
+    order = _order(exif)
+    first = int.from_bytes(exif[4:8], order)
+    link = first + 2 + 12 * int.from_bytes(exif[first : first + 2], order)
+    second = int.from_bytes(exif[link : link + 4], order)
+    if link + 4 > len(exif) or not 8 <= second < len(exif):
+        return exif
+    block = bytearray(exif)
+    places = (_entry(exif, second, tag) for tag in (_SMALL_START, _SMALL_LENGTH))
+    start, length = (_number(exif, place, 4) if place else 0 for place in places)
+    if start >= 8 and start + length <= len(exif) and exif[start : start + 2] == b"\xff\xd8":
+        block[start : start + length] = bytes(length)
+    block[link : link + 4] = bytes(4)
+    return bytes(block)

@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from functools import cache
 from pathlib import Path
-from typing import Any
 
 import attrs
 import numpy as np
@@ -13,15 +12,15 @@ from numpy.typing import NDArray
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
+from hueferry.files.codec import Decoded
+from hueferry.files.jpeg_blocks import APP1, EXIF, blocks_of, first, holds_more, iptc_in, profile_in, xmp_in
+from hueferry.files.jpeg_scans import check_whole, read_scans
 from hueferry.files.probe import check_size
 from hueferry.picture import Metadata
 
-_SOI, _EOI, _SOS, _DQT, _COM = 0xD8, 0xD9, 0xDA, 0xDB, 0xFE
-_APP0, _APP1, _APP2, _APP13, _APP14, _APP15 = 0xE0, 0xE1, 0xE2, 0xED, 0xEE, 0xEF
+_SOS, _DQT, _COM = 0xDA, 0xDB, 0xFE
+_APP0, _APP1, _APP14, _APP15 = 0xE0, 0xE1, 0xEE, 0xEF
 _FRAMES = frozenset({*range(0xC0, 0xD0)} - {0xC4, 0xC8, 0xCC})
-_EXIF, _XMP, _IPTC = b"Exif\0\0", b"http://ns.adobe.com/xap/1.0/\0", b"Photoshop 3.0\0"
-_ICC, _MULTI = b"ICC_PROFILE\0", b"MPF\0"
-_BLOCK_LIMIT = 65_533
 
 
 @attrs.frozen(eq=False)
@@ -30,11 +29,13 @@ class Segments:
 
     Attributes:
         parts: (marker, payload) in order.
+        marker: of the frame header, which says how the picture is coded.
         frame: payload of the frame header: precision, rows, columns, components.
         scan: offset of the first scan.
     """
 
     parts: tuple[tuple[int, bytes], ...]
+    marker: int
     frame: bytes
     scan: int
 
@@ -64,19 +65,19 @@ def read_segments(path: Path, data: bytes) -> Segments:
         PictureError: the stream is broken, or ends before its picture does.
     """
     parts: list[tuple[int, bytes]] = []
-    frame, position = b"", 2
+    kind, frame, position = 0, b"", 2
     for marker, payload, end in _walk(path, data):
         position = end
         if marker == _SOS:
             break
         if marker in _FRAMES:
-            frame = payload
+            kind, frame = marker, payload
         parts.append((marker, payload))
     if len(frame) < 6 + 3 * (frame[5] if len(frame) > 5 else 255):
         raise PictureError(path, "the JPEG stream has no frame header; the file is broken")
     if data.rfind(b"\xff\xd9") < position:
         raise PictureError(path, "the JPEG stream ends early; copy the file again from its source")
-    return Segments(tuple(parts), frame, position)
+    return Segments(tuple(parts), kind, frame, position)
 
 
 def _walk(path: Path, data: bytes) -> Iterator[tuple[int, bytes, int]]:
@@ -95,11 +96,11 @@ def _walk(path: Path, data: bytes) -> Iterator[tuple[int, bytes, int]]:
         position += 2 + length
 
 
-def read_jpeg(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Metadata, bytes | None]:
+def read_jpeg(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
     """Decode a JPEG: pixels, metadata and the ICC profile if there is one.
 
     Raises:
-        PictureError: the stream is broken.
+        PictureError: the stream is broken or was cut short.
         RefusedError: CMYK, more than 8 bits, or further pictures in the file that would be lost.
     """
     import imagecodecs
@@ -109,26 +110,37 @@ def read_jpeg(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Me
         raise RefusedError(path, "this is a CMYK JPEG; convert it to RGB with its profile first")
     if segments.frame[0] != 8:
         raise RefusedError(path, f"this JPEG has {segments.frame[0]} bits a channel; save it as TIFF")
-    if not accept_loss and any(m == _APP2 and p.startswith(_MULTI) for m, p in segments.parts):
-        reason = "the file holds a gain map or further pictures, which would be lost; accept the loss to go on"
-        raise RefusedError(path, reason)
+    scans = read_scans(path, data, segments.scan)
+    notes = _notes(path, segments, data[scans.end + 2 :], accept_loss=accept_loss)
     check_size(path, segments.shape)
     try:
-        pixels = imagecodecs.jpeg8_decode(data)
+        pixels = np.atleast_3d(imagecodecs.jpeg8_decode(data))
+        check_whole(path, data, pixels, scans, marker=segments.marker)
     except (imagecodecs.Jpeg8Error, ValueError, MemoryError) as error:
         raise PictureError(path, f"the JPEG stream cannot be decoded: {error}") from error
-    return np.atleast_3d(pixels), _metadata(segments), _profile(segments)
+    return Decoded(pixels, _metadata(segments), profile_in(path, segments.parts), notes=notes)
+
+
+def _notes(path: Path, segments: Segments, behind: bytes, *, accept_loss: bool) -> tuple[str, ...]:
+    if holds_more(segments.parts, behind):
+        if not accept_loss:
+            reason = "the file holds a gain map or further pictures, which would be lost; accept the loss to go on"
+            raise RefusedError(path, reason)
+        return ("the file holds a gain map or further pictures; their loss was accepted",)
+    if behind.strip(b"\0"):
+        return (f"{len(behind):,} bytes behind the end of the picture were left out",)
+    return ()
 
 
 def _metadata(segments: Segments) -> Metadata:
     from hueferry.files.exif import orientation_of
 
-    exif = _first(segments, _APP1, _EXIF)
+    exif = first(segments.parts, APP1, EXIF)
     return Metadata(
         format="jpeg",
         exif=exif,
-        xmp=_first(segments, _APP1, _XMP),
-        iptc=_first(segments, _APP13, _IPTC),
+        xmp=xmp_in(segments.parts),
+        iptc=iptc_in(segments.parts),
         orientation=orientation_of(exif),
         container={
             "sampling": segments.sampling,
@@ -137,16 +149,6 @@ def _metadata(segments: Segments) -> Metadata:
             "density": next((p[7:12] for m, p in segments.parts if m == _APP0 and p.startswith(b"JFIF\0")), b""),
         },
     )
-
-
-def _first(segments: Segments, marker: int, head: bytes) -> bytes:
-    return next((p[len(head) :] for m, p in segments.parts if m == marker and p.startswith(head)), b"")
-
-
-def _profile(segments: Segments) -> bytes | None:
-    """Join the numbered pieces of an ICC profile (ICC.1:2022, annex B.4)."""
-    pieces = sorted((p[12], p[14:]) for m, p in segments.parts if m == _APP2 and p.startswith(_ICC) and len(p) > 14)
-    return b"".join(piece for _, piece in pieces) or None
 
 
 def jpeg_bytes(pixels: NDArray[np.uint8], *, quality: int = 96, sampling: str = "444") -> bytes:
@@ -181,7 +183,7 @@ def write_jpeg(pixels: Pixels, metadata: Metadata, profile: bytes | None, *, qua
     chosen = quality if quality is not None else (_quality_for(tables) if tables else 95)
     stream = jpeg_bytes(pixels, quality=chosen, sampling=str(facts.get("sampling", "444")))
     head = 4 + int.from_bytes(stream[4:6], "big")  # SOI and the JFIF segment that the encoder wrote
-    parts = _parts(metadata, facts, profile)
+    parts = blocks_of(metadata, facts, profile)
     density = facts.get("density")
     jfif = (
         stream[:head]
@@ -189,20 +191,6 @@ def write_jpeg(pixels: Pixels, metadata: Metadata, profile: bytes | None, *, qua
         else stream[:13] + density + stream[18:head]
     )
     return jfif + b"".join(_segment(marker, payload) for marker, payload in parts) + stream[head:]
-
-
-def _parts(metadata: Metadata, facts: Mapping[str, Any], profile: bytes | None) -> list[tuple[int, bytes]]:
-    if facts:
-        kept = facts["segments"]
-        parts = [(m, p) for m, p in kept if not (m == _APP2 and p.startswith(_ICC))]
-    else:
-        named = ((_APP1, _EXIF, metadata.exif), (_APP1, _XMP, metadata.xmp), (_APP13, _IPTC, metadata.iptc))
-        parts = [(m, head + body) for m, head, body in named if body and len(head + body) <= _BLOCK_LIMIT]
-    if profile:
-        room = _BLOCK_LIMIT - len(_ICC) - 2
-        pieces = [profile[start : start + room] for start in range(0, len(profile), room)]
-        parts += [(_APP2, _ICC + bytes([number, len(pieces)]) + piece) for number, piece in enumerate(pieces, 1)]
-    return parts
 
 
 def _segment(marker: int, payload: bytes) -> bytes:

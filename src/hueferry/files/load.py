@@ -32,7 +32,7 @@ def load_jpeg() -> Codec:
     """JPEG."""
     from hueferry.files.jpeg import read_jpeg, write_jpeg
 
-    return Codec(_reads(read_jpeg), _writes(write_jpeg, with_quality=True))
+    return Codec(read_jpeg, _writes(write_jpeg, with_quality=True))
 
 
 def load_png() -> Codec:
@@ -53,7 +53,7 @@ def load_webp() -> Codec:
     """WebP."""
     from hueferry.files.webp import read_webp, write_webp
 
-    return Codec(_reads(read_webp), _writes(write_webp, with_quality=True))
+    return Codec(read_webp, _writes(write_webp, with_quality=True))
 
 
 def load_avif() -> Codec:

@@ -11,13 +11,15 @@ import numpy as np
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
 from hueferry.files.codec import Decoded
+from hueferry.files.png_colour import significant_bits_note, stated_by_chunks
+from hueferry.files.png_text import unpacked, xmp_body, xmp_of
 from hueferry.files.probe import check_size
 from hueferry.picture import Encoding, Metadata
 
 SIGNATURE = b"\x89PNG\r\n\x1a\n"
-_XMP = b"XML:com.adobe.xmp\0"
 _KEPT = frozenset({b"cICP", b"pHYs", b"tEXt", b"iTXt", b"zTXt", b"tIME", b"eXIf"})
-_PROFILE_LIMIT = 64 << 20
+_USED = frozenset({b"sBIT", b"sRGB", b"gAMA", b"cHRM", b"iCCP", b"tRNS", b"acTL", b"fcTL", b"fdAT"})
+"""Chunks that are understood on the way in and stated anew, or not at all, on the way out."""
 
 Chunk = tuple[bytes, bytes]
 
@@ -48,7 +50,8 @@ def read_png(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
     chunks = list(_chunks(path, data))
     if not chunks or chunks[0][0] != b"IHDR" or len(chunks[0][1]) != 13:
         raise PictureError(path, "the PNG stream has no header; the file is broken")
-    if not accept_loss and any(kind == b"acTL" for kind, _ in chunks):
+    animated = any(kind == b"acTL" for kind, _ in chunks)
+    if not accept_loss and animated:
         raise RefusedError(path, "this PNG is animated, and all frames but one would be lost; accept the loss to go on")
     width, height = (int.from_bytes(chunks[0][1][start : start + 4], "big") for start in (0, 4))
     check_size(path, (height, width))
@@ -56,8 +59,24 @@ def read_png(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
         pixels = np.atleast_3d(imagecodecs.png_decode(data))
     except (imagecodecs.PngError, ValueError, MemoryError) as error:
         raise PictureError(path, f"the PNG stream cannot be decoded: {error}") from error
+    metadata, notes = _metadata(path, chunks), _notes(chunks)
+    if animated:
+        notes = ("this PNG is animated; the loss of all frames but the first was accepted", *notes)
     encoding = _stated(path, chunks)
-    return Decoded(pixels, _metadata(chunks), None if encoding else _profile(path, chunks), encoding=encoding)
+    profile = None if encoding else _profile(path, chunks)
+    if encoding is None and profile is None:
+        encoding, said = stated_by_chunks(dict(reversed(chunks)))
+        notes += said
+    return Decoded(pixels, metadata, profile, encoding=encoding, notes=notes)
+
+
+def _notes(chunks: list[Chunk]) -> tuple[str, ...]:
+    depth = {3: 8}.get(chunks[0][1][9], chunks[0][1][8])
+    notes = significant_bits_note(next((body for kind, body in chunks if kind == b"sBIT"), b""), depth)
+    known = _KEPT | _USED
+    lost = sorted({kind.decode("latin-1") for kind, _ in chunks if kind not in known and kind[0] & 0x20})
+    named = ", ".join(name if name.isalnum() else "one without a name" for name in lost[:9])
+    return (*notes, f"PNG chunks that cannot be kept with changed pixels were left out: {named}") if lost else notes
 
 
 def _stated(path: Path, chunks: list[Chunk]) -> Encoding | None:
@@ -68,24 +87,17 @@ def _stated(path: Path, chunks: list[Chunk]) -> Encoding | None:
     return encoding_of(path, (numbers[0], numbers[1], numbers[2])) if numbers else None
 
 
-def _metadata(chunks: list[Chunk]) -> Metadata:
+def _metadata(path: Path, chunks: list[Chunk]) -> Metadata:
     from hueferry.files.exif import orientation_of
 
     exif = next((body for kind, body in chunks if kind == b"eXIf"), b"")
     return Metadata(
         format="png",
         exif=exif,
-        xmp=next((_text(body) for kind, body in chunks if kind == b"iTXt" and body.startswith(_XMP)), b""),
+        xmp=xmp_of(path, chunks),
         orientation=orientation_of(exif),
         container={"chunks": tuple(chunk for chunk in chunks if chunk[0] in _KEPT)},
     )
-
-
-def _text(body: bytes) -> bytes:
-    """Return the text of an uncompressed iTXt chunk (PNG specification, clause 11.3.3.4)."""
-    compressed = body[len(_XMP) : len(_XMP) + 1]
-    parts = body[len(_XMP) + 2 :].split(b"\0", 2)
-    return parts[2] if compressed == b"\0" and len(parts) == 3 else b""
 
 
 def _profile(path: Path, chunks: list[Chunk]) -> bytes | None:
@@ -93,12 +105,7 @@ def _profile(path: Path, chunks: list[Chunk]) -> bytes | None:
     if body is None:
         return None
     packed = body.split(b"\0", 1)[-1][1:]
-    try:
-        unpacker = zlib.decompressobj()
-        profile = unpacker.decompress(packed, _PROFILE_LIMIT)
-    except zlib.error as error:
-        raise PictureError(path, f"the embedded profile cannot be unpacked: {error}") from error
-    return profile or None
+    return unpacked(path, packed, "profile") or None
 
 
 def write_png(pixels: Pixels, metadata: Metadata, profile: bytes | None) -> bytes:
@@ -111,10 +118,12 @@ def write_png(pixels: Pixels, metadata: Metadata, profile: bytes | None) -> byte
     extra = b"" if profile is None else _chunk(b"iCCP", b"icc\0\0" + zlib.compress(profile, 6))
     kept = metadata.container.get("chunks") if metadata.format == "png" else None
     if isinstance(kept, tuple):
-        extra += b"".join(_chunk(kind, body) for kind, body in kept)
+        extra += b"".join(_chunk(kind, metadata.exif if kind == b"eXIf" else body) for kind, body in kept)
+        if metadata.exif and not any(kind == b"eXIf" for kind, _ in kept):
+            extra += _chunk(b"eXIf", metadata.exif)
     else:
         extra += _chunk(b"eXIf", metadata.exif) if metadata.exif else b""
-        extra += _chunk(b"iTXt", _XMP + b"\0\0\0\0" + metadata.xmp) if metadata.xmp else b""
+        extra += _chunk(b"iTXt", xmp_body(metadata.xmp)) if metadata.xmp else b""
     return stream[:head] + extra + stream[head:]
 
 

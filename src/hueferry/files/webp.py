@@ -8,6 +8,7 @@ import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
+from hueferry.files.codec import Decoded
 from hueferry.files.probe import check_size, webp_shape
 from hueferry.picture import Metadata
 
@@ -28,7 +29,7 @@ def _chunks(path: Path, data: bytes) -> dict[bytes, bytes]:
     return found
 
 
-def read_webp(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Metadata, bytes | None]:
+def read_webp(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
     """Decode a WebP: pixels, metadata and the ICC profile if there is one.
 
     Raises:
@@ -57,7 +58,8 @@ def read_webp(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Me
         orientation=orientation_of(exif),
         container={"lossless": b"VP8L" in chunks},
     )
-    return pixels, metadata, chunks.get(b"ICCP") or None
+    notes = ("this WebP is animated; the loss of all frames but the first was accepted",) if b"ANIM" in chunks else ()
+    return Decoded(pixels, metadata, chunks.get(b"ICCP") or None, notes=notes)
 
 
 def write_webp(pixels: Pixels, metadata: Metadata, profile: bytes | None, *, quality: int | None) -> bytes:

@@ -2,23 +2,22 @@
 
 from __future__ import annotations
 
-import io
-from collections.abc import Callable, Mapping
+from collections.abc import Callable
 from pathlib import Path
-from types import MappingProxyType
 
 import attrs
 import numpy as np
 
 from hueferry.colour.scene import is_scene_linear
-from hueferry.errors import HueferryError, InputError, OutputError
+from hueferry.errors import InputError, OutputError
 from hueferry.files.atomic import write_bytes
 from hueferry.files.exif import with_orientation
 from hueferry.files.formats import FORMATS, Format, codec, missing, named
+from hueferry.files.jpeg_blocks import MOST_EXIF
 from hueferry.files.light import light_of
 from hueferry.files.thumbnail import upright
+from hueferry.files.verify import verify
 from hueferry.picture import Picture
-from hueferry.threads import each
 
 
 def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int | None = None) -> Path:
@@ -48,8 +47,9 @@ def write(picture: Picture, path: Path, *, overwrite: bool = False, quality: int
     _check_holds(path, picture, format_)
     stored = fitted(picture, format_)
     data = _encoded(stored, format_, quality=quality)
-    shape = stored.shape
-    return write_bytes(path, data, overwrite=overwrite, verify=lambda made: _verify(made, path, shape, format_.name))
+    return write_bytes(
+        path, data, overwrite=overwrite, verify=lambda made: verify(made, path, stored.pixels, format_.name)
+    )
 
 
 def _check_holds(path: Path, picture: Picture, format_: Format) -> None:
@@ -100,6 +100,20 @@ def _encoded(stored: Picture, format_: Format, *, quality: int | None) -> bytes:
     return write_format(stored, profile, quality=quality)
 
 
+def lost_in(picture: Picture, path: Path) -> tuple[str, ...]:
+    """Return what of a picture's metadata has no place in the format that a path names, as notes for the record."""
+    format_, metadata = named(path), picture.metadata
+    if format_ is None or format_.name == metadata.format:
+        return ()
+    blocks = {"exif": metadata.exif, "xmp": metadata.xmp, "iptc": metadata.iptc}
+    lost = [
+        f"{name.upper()} ({len(body):,} bytes)" for name, body in blocks.items() if body and name not in format_.keeps
+    ]
+    if format_.name == "jpeg" and len(metadata.exif) > MOST_EXIF:
+        lost.append(f"EXIF ({len(metadata.exif):,} bytes, and a JPEG holds {MOST_EXIF:,})")
+    return (f"{format_.title} has no place for {', '.join(lost)}, which was left out",) if lost else ()
+
+
 def fitted(picture: Picture, format_: Format) -> Picture:
     """Return the picture as a format stores it: at a depth that it has, and upright where it keeps no orientation."""
     return _at_depth(_turned(_as_light(picture, format_), format_), format_)
@@ -137,59 +151,3 @@ def _at_depth(picture: Picture, format_: Format) -> Picture:
         return picture
     codes = np.rint(picture.pixels * ((2.0**depth - 1) / picture.top_code))
     return attrs.evolve(picture, pixels=codes.astype(np.uint8 if depth == 8 else np.uint16), bits=depth)
-
-
-def _verify(made: Path, path: Path, wanted: tuple[int, int], format_: str) -> None:
-    """Look at the written file with a second decoder: format, size, and that every pixel can be decoded."""
-    look: Callable[[Path], tuple[tuple[int, int], str]] = _SECOND.get(format_, _read_again)
-    try:
-        shape, kind = look(made)
-    except (HueferryError, OSError, SyntaxError, ValueError, RuntimeError) as error:
-        raise OutputError(path, f"the file that was written cannot be read again: {error}") from error
-    if shape != wanted or kind != format_:
-        raise OutputError(path, f"the file that was written came back as {kind} of {shape}")
-
-
-def _read_again(made: Path) -> tuple[tuple[int, int], str]:
-    from hueferry.files.read import read
-
-    picture = read(made)
-    return picture.shape, picture.metadata.format
-
-
-def _seen_by_pillow(made: Path) -> tuple[tuple[int, int], str]:
-    from PIL import Image
-
-    from hueferry.files.jpeg_parts import standing_alone
-
-    with Image.open(made) as image:
-        shape, kind = (image.height, image.width), (image.format or "").lower()
-        if kind != "jpeg":
-            image.load()
-            return shape, kind
-    parts = standing_alone(made.read_bytes())
-    return (sum(each(_decoded_rows, parts)), shape[1]), kind
-
-
-def _decoded_rows(stream: bytes) -> int:
-    """Decode a JPEG at an eighth of its size, which reads all of its data, and return its full height."""
-    from PIL import Image
-
-    with Image.open(io.BytesIO(stream)) as image:
-        height = image.height
-        image.draft(None, (1, 1))
-        image.load()
-    return height
-
-
-def _seen_by_another_binding(made: Path) -> tuple[tuple[int, int], str]:
-    import imagecodecs
-
-    pixels = imagecodecs.jpegxl_decode(made.read_bytes())
-    return (int(pixels.shape[0]), int(pixels.shape[1])), "jxl"
-
-
-_SECOND: Mapping[str, Callable[[Path], tuple[tuple[int, int], str]]] = MappingProxyType(
-    {"jpeg": _seen_by_pillow, "webp": _seen_by_pillow, "avif": _seen_by_pillow, "jxl": _seen_by_another_binding}
-)
-"""Decoders other than the reader's own; without one, the reader reads again."""

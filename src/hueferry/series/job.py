@@ -107,9 +107,12 @@ def _do(context: Context, job: Job) -> Done:
 
 
 def _entry_of(job: Job, fitted: Fit, picture: Picture) -> Entry:
+    from hueferry.files.write import lost_in
+
+    lost = lost_in(picture, job.stage)
     return Entry(
         source=FileFact.of(job.source, shown_as=job.source_name),
         output=FileFact.of(job.stage, shown_as=job.output_name),
         numbers=fitted.as_dict(),
-        sentences=(*(f"{note[0].upper()}{note[1:]}." for note in picture.notes), *fitted.sentences),
+        sentences=(*(f"{note[0].upper()}{note[1:]}." for note in (*picture.notes, *lost)), *fitted.sentences),
     )
