@@ -5,7 +5,7 @@ from __future__ import annotations
 import struct
 from pathlib import Path
 
-from hueferry.errors import RefusedError
+from hueferry.errors import PictureError, RefusedError
 
 MOST_PIXELS = 1_000_000_000
 """Pixels of the largest picture that is decoded whole; what is larger is a slide, which is read in windows."""
@@ -35,3 +35,21 @@ def webp_shape(data: bytes) -> tuple[int, int]:
         width, height = struct.unpack_from("<HH", body, 6)
         return height & 0x3FFF, width & 0x3FFF
     return 0, 0
+
+
+def promised_pixels(format_: str, data: bytes) -> int:
+    """Return how many pixels the header of a JPEG, PNG or WebP promises; 0 for other formats and broken headers."""
+    if format_ == "png":
+        return int.from_bytes(data[16:20], "big") * int.from_bytes(data[20:24], "big")
+    if format_ == "webp":
+        height, width = webp_shape(data)
+        return height * width
+    if format_ != "jpeg":
+        return 0
+    from hueferry.files.jpeg import read_segments
+
+    try:
+        height, width = read_segments(Path("header"), data).shape
+    except PictureError:
+        return 0
+    return height * width

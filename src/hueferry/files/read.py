@@ -10,6 +10,7 @@ import numpy as np
 from hueferry.errors import InputError, PictureError, RefusedError
 from hueferry.files.codec import Decoded
 from hueferry.files.formats import FORMATS, SUFFIXES, codec, missing, refusal, sniff
+from hueferry.files.guard import can_guard, decode_guarded, is_suspicious
 from hueferry.files.sniff import HEAD
 from hueferry.picture import Encoding, Picture
 
@@ -17,12 +18,14 @@ if TYPE_CHECKING:
     from hueferry.picture import PictureSource
 
 
-def read(path: Path, *, accept_loss: bool = False) -> Picture:
+def read(path: Path, *, accept_loss: bool = False, guarded: bool | None = None) -> Picture:
     """Read a picture with its encoding, depth and metadata; pixels stay as stored.
 
     Args:
         path: the file.
         accept_loss: go on where further frames or a gain map would be lost.
+        guarded: decode in a process of its own, with limits of memory and time; None does so where the header promises
+            far more pixels than the file has bytes for, see `hueferry.files.guard.is_suspicious`.
 
     Raises:
         PictureError: missing, empty, a folder, of an unknown format, or broken.
@@ -35,7 +38,10 @@ def read(path: Path, *, accept_loss: bool = False) -> Picture:
     lacking = missing(FORMATS[format_])
     if lacking:
         raise RefusedError(path, lacking)
-    decoded = codec(format_).read(path, data, accept_loss=accept_loss)
+    if is_suspicious(format_, data) if guarded is None else guarded and can_guard():
+        decoded = decode_guarded(path, format_, accept_loss=accept_loss)
+    else:
+        decoded = codec(format_).read(path, data, accept_loss=accept_loss)
     encoding, notes = _encoding(path, decoded)
     if path.suffix.lower() not in SUFFIXES[format_]:
         notes += (f"named {path.suffix or 'without a suffix'}, but it is {FORMATS[format_].title}",)
