@@ -18,6 +18,7 @@ from collections import deque
 from collections.abc import Iterator
 from concurrent.futures import Future, ThreadPoolExecutor
 from pathlib import Path
+from typing import Any
 
 import attrs
 import numpy as np
@@ -72,10 +73,21 @@ def codec_time(path: Path) -> float:
 
 
 def run_job(source: Path, reference: Path, out: Path) -> None:
-    """Do the job in this process; print seconds of processor and by the clock, peak MB, and the slope of memory."""
+    """Do the job in this process; print seconds (all, of writing, by the clock), peak MB, and the slope of memory."""
+    from hueferry.slides import run
     from hueferry.slides.gather import reference_from
-    from hueferry.slides.run import stain_slide
     from hueferry.slides.settings import StainSettings
+
+    writing: list[float] = []
+    write = run.write_corrected
+
+    def timed(*arguments: Any, **named: Any) -> Path:
+        begun = time.process_time()
+        made = write(*arguments, **named)
+        writing.append(time.process_time() - begun)
+        return made
+
+    run.write_corrected = timed
 
     target = reference_from([reference])
     seen: list[tuple[float, float]] = []
@@ -90,7 +102,7 @@ def run_job(source: Path, reference: Path, out: Path) -> None:
     watcher = threading.Thread(target=watch)
     watcher.start()
     start = time.perf_counter()
-    outcome = stain_slide(source, target, out, settings=StainSettings(threads=THREADS, correct_measured=True))
+    outcome = run.stain_slide(source, target, out, settings=StainSettings(threads=THREADS, correct_measured=True))
     seconds = time.perf_counter() - start
     done.set()
     watcher.join()
@@ -99,7 +111,7 @@ def run_job(source: Path, reference: Path, out: Path) -> None:
     late = np.array([(at, held) for at, held in seen if at > start + 0.2 * seconds])
     slope = np.polyfit((late[:, 0] - start) / seconds * tiles / 1000, late[:, 1], 1)[0] if len(late) > 3 else 0.0
     peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1000
-    sys.stdout.write(f"{time.process_time():.2f} {seconds:.2f} {peak:.0f} {slope:.2f}\n")
+    sys.stdout.write(f"{time.process_time():.2f} {writing[0]:.2f} {seconds:.2f} {peak:.0f} {slope:.2f}\n")
 
 
 @attrs.frozen
@@ -109,6 +121,7 @@ class Row:
     Attributes:
         megapixels: of the full size.
         seconds: of processor, the whole job.
+        writing: of processor, from the table to the finished file; the rest does not grow with the slide.
         codec: of processor, decoding and encoding the same tiles.
         wall: seconds by the clock.
         peak: MB.
@@ -117,6 +130,7 @@ class Row:
 
     megapixels: float
     seconds: float
+    writing: float
     codec: float
     wall: float
     peak: float
@@ -125,7 +139,8 @@ class Row:
     def __str__(self) -> str:
         """One line of the table."""
         return (
-            f"{self.megapixels:6.0f} megapixels: {self.seconds:6.1f} s of processor ({self.wall:.1f} s by the clock), "
+            f"{self.megapixels:6.0f} megapixels: {self.seconds:6.1f} s of processor, {self.writing:.1f} s of them "
+            f"writing ({self.wall:.1f} s by the clock), "
             f"{self.seconds / self.codec:.2f} × decode + encode, peak {self.peak:.0f} MB, "
             f"{self.slope:+.2f} MB per 1,000 tiles\n"
         )
@@ -138,8 +153,8 @@ def measure(megapixels: float, reference: Path, folder: Path) -> Row:
     command = [sys.executable, "-m", "bench.slides", "--job", str(source), str(reference), str(folder / "out")]
     codec = codec_time(source)
     answer = subprocess.run(command, check=True, capture_output=True, text=True).stdout.split()
-    seconds, wall, peak, slope = (float(word) for word in answer)
-    return Row(megapixels, seconds, (codec + codec_time(source)) / 2, wall, peak, slope)
+    seconds, writing, wall, peak, slope = (float(word) for word in answer)
+    return Row(megapixels, seconds, writing, (codec + codec_time(source)) / 2, wall, peak, slope)
 
 
 def main(megapixels: float) -> None:
@@ -153,7 +168,8 @@ def main(megapixels: float) -> None:
                 rows.append(measure(size, reference, Path(own)))
             sys.stdout.write(str(rows[-1]))
             sys.stdout.flush()
-    sys.stdout.write(f"4 × the pixels take {rows[1].seconds / rows[0].seconds:.2f} × the time\n")
+    whole, writing = (getattr(rows[1], name) / getattr(rows[0], name) for name in ("seconds", "writing"))
+    sys.stdout.write(f"4 × the pixels take {whole:.2f} × the time, and {writing:.2f} × that of writing\n")
 
 
 if __name__ == "__main__":

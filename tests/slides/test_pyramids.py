@@ -20,7 +20,7 @@ from hueferry.slides.levels import Halving, level_shapes
 from hueferry.slides.tiff_reader import TiffSlide
 from hueferry.slides.tiff_writer import TILE, Layout, SlideForm, TiffOptions, write_tiff_slide
 
-SIZES = [(1, 1), (255, 256), (257, 255), (256, 257), (1, 4095), (700, 1030)]
+SIZES = [(1, 1), (255, 256), (257, 255), (256, 257), (1, 4095), (4095, 257), (700, 1030)]
 PITCH = (0.2527, 0.2531)
 
 

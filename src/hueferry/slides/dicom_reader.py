@@ -5,7 +5,7 @@ Sources: DICOM PS3.3, A.32.8 (VL whole slide microscopy image), C.7.6.17.3 (dime
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from pathlib import Path
 from types import MappingProxyType
 from typing import Any
@@ -15,7 +15,8 @@ import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
-from hueferry.picture import Encoding, Window
+from hueferry.picture import Window
+from hueferry.slides.file_slide import FileSlide, Opened
 from hueferry.slides.profiles import encoding_of
 from hueferry.slides.source import SlideFacts
 
@@ -39,7 +40,7 @@ class _Level:
     places: Mapping[tuple[int, int], int]
 
 
-class DicomSlide:
+class DicomSlide(FileSlide):
     """The full-size picture of a DICOM whole-slide series and its reductions. Labels and overviews are left out."""
 
     def __init__(self, path: Path) -> None:
@@ -69,38 +70,13 @@ class DicomSlide:
         self._path = path
         self._levels = sorted((_level(*one) for one in found), key=lambda level: -level.width)
         first = self._levels[0].data
-        self._encoding = encoding_of(path, _profile(first))
         texts = {name: str(first.get(name)) for name in _TEXTS if first.get(name)}
-        self._facts = SlideFacts("dicom", _pitch(first), None, texts)
-
-    @property
-    def shape(self) -> tuple[int, int]:
-        """Rows and columns at full size."""
-        return self.levels[0]
-
-    @property
-    def levels(self) -> Sequence[tuple[int, int]]:
-        """Rows and columns of every level."""
-        return [(level.height, level.width) for level in self._levels]
-
-    @property
-    def encoding(self) -> Encoding:
-        """By the profile of the optical path; sRGB where there is none."""
-        return self._encoding
-
-    @property
-    def bits(self) -> int:
-        """Whole-slide pictures have 8 bits here."""
-        return 8
-
-    @property
-    def facts(self) -> SlideFacts:
-        """What else the file says."""
-        return self._facts
-
-    def read(self, window: Window) -> Pixels:
-        """Return a window of the full size."""
-        return self.read_level(0, window)
+        self._opened = Opened(
+            [(level.height, level.width) for level in self._levels],
+            encoding_of(path, _profile(first)),
+            8,
+            SlideFacts("dicom", _pitch(first), None, texts),
+        )
 
     def read_level(self, level: int, window: Window) -> Pixels:
         """Return a window of a level; frames that were not scanned are white.

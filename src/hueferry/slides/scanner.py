@@ -2,21 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
-from hueferry.picture import Encoding, Window
+from hueferry.picture import Window
+from hueferry.slides.file_slide import FileSlide, Opened
 from hueferry.slides.profiles import encoding_of
 from hueferry.slides.source import SlideFacts
 
 _BAND = 1 << 22
 
 
-class ScannerSlide:
+class ScannerSlide(FileSlide):
     """A slide that OpenSlide reads. Its label and macro images are never touched."""
 
     def __init__(self, path: Path) -> None:
@@ -38,43 +38,19 @@ class ScannerSlide:
         self._path = path
         properties = self._slide.properties
         profile = self._slide.color_profile
-        self._encoding = encoding_of(path, None if profile is None else profile.tobytes())
         hexadecimal = properties.get("openslide.background-color", "FFFFFF")
         self._background = tuple(int(hexadecimal[i : i + 2], 16) for i in (0, 2, 4))
         red, green, blue = self._background
-        self._facts = SlideFacts(
+        facts = SlideFacts(
             str(properties.get("openslide.vendor", "scanner")), _pitch(dict(properties)), (red, green, blue),
             {name: value for name, value in properties.items() if not name.startswith("openslide.")},
         )  # fmt: skip
-
-    @property
-    def shape(self) -> tuple[int, int]:
-        """Rows and columns at full size."""
-        return self.levels[0]
-
-    @property
-    def levels(self) -> Sequence[tuple[int, int]]:
-        """Rows and columns of every level."""
-        return [(height, width) for width, height in self._slide.level_dimensions]
-
-    @property
-    def encoding(self) -> Encoding:
-        """By the slide's profile; sRGB where there is none."""
-        return self._encoding
-
-    @property
-    def bits(self) -> int:
-        """OpenSlide hands out 8 bit."""
-        return 8
-
-    @property
-    def facts(self) -> SlideFacts:
-        """What else the file says."""
-        return self._facts
-
-    def read(self, window: Window) -> Pixels:
-        """Return a window of the full size."""
-        return self.read_level(0, window)
+        self._opened = Opened(
+            [(height, width) for width, height in self._slide.level_dimensions],
+            encoding_of(path, None if profile is None else profile.tobytes()),
+            8,  # OpenSlide hands out no more
+            facts,
+        )
 
     def read_level(self, level: int, window: Window) -> Pixels:
         """Return a window of a level; what was not scanned has the background colour.

@@ -5,7 +5,6 @@ from __future__ import annotations
 import os
 import threading
 from collections import OrderedDict
-from collections.abc import Sequence
 from pathlib import Path
 from typing import Any, TypeAlias
 
@@ -15,6 +14,7 @@ import numpy as np
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
 from hueferry.picture import Encoding, Window
+from hueferry.slides.file_slide import FileSlide, Opened
 from hueferry.slides.source import SlideFacts
 
 TiffPage: TypeAlias = Any
@@ -44,7 +44,7 @@ class _Level:
     columns: int
 
 
-class TiffSlide:
+class TiffSlide(FileSlide):
     """A slide in a TIFF file."""
 
     def __init__(self, path: Path) -> None:
@@ -74,38 +74,12 @@ class TiffSlide:
         self._cache: OrderedDict[tuple[int, int], Pixels] = OrderedDict()
         self._held, self._lock = 0, threading.Lock()
         first = pages[0]
-        self._encoding = _encoding(path, first)
-        self._bits = 16 if first.dtype == np.uint16 else 8 if first.dtype == np.uint8 else 32
-        self._facts = SlideFacts("tiff", _pitch(self._tiff, first), None, _texts(first))
-
-    @property
-    def shape(self) -> tuple[int, int]:
-        """Rows and columns at full size."""
-        return self.levels[0]
-
-    @property
-    def levels(self) -> Sequence[tuple[int, int]]:
-        """Rows and columns of every level, largest first."""
-        return [(level.height, level.width) for level in self._levels]
-
-    @property
-    def encoding(self) -> Encoding:
-        """By the embedded profile; sRGB where there is none."""
-        return self._encoding
-
-    @property
-    def bits(self) -> int:
-        """Significant bits a channel."""
-        return self._bits
-
-    @property
-    def facts(self) -> SlideFacts:
-        """What else the file says."""
-        return self._facts
-
-    def read(self, window: Window) -> Pixels:
-        """Return a window of the full size."""
-        return self.read_level(0, window)
+        self._opened = Opened(
+            [(level.height, level.width) for level in self._levels],
+            _encoding(path, first),
+            8 * first.dtype.itemsize,
+            SlideFacts("tiff", _pitch(self._tiff, first), None, _texts(first)),
+        )
 
     def read_level(self, level: int, window: Window) -> Pixels:
         """Return a window of a level; only the tiles it touches are decoded.

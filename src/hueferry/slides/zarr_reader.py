@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
@@ -10,14 +10,15 @@ import numpy as np
 
 from hueferry.arrays import Pixels
 from hueferry.errors import PictureError, RefusedError
-from hueferry.picture import Encoding, Window
+from hueferry.picture import Window
+from hueferry.slides.file_slide import FileSlide, Opened
 from hueferry.slides.profiles import encoding_of
 from hueferry.slides.source import SlideFacts
 
 _UNITS = {"micrometer": 1.0, "nanometer": 1e-3, "millimeter": 1e3, "meter": 1e6}
 
 
-class ZarrSlide:
+class ZarrSlide(FileSlide):
     """A slide in an OME-Zarr folder."""
 
     def __init__(self, path: Path) -> None:
@@ -42,8 +43,13 @@ class ZarrSlide:
         self._path = path
         self._check(path)
         profile = path / "profile.icc"
-        self._encoding = encoding_of(path, profile.read_bytes() if profile.is_file() else None)
-        self._facts = SlideFacts("ome-zarr", _pitch(scales, self._axes))
+        y, x = self._axes.index("y"), self._axes.index("x")
+        self._opened = Opened(
+            [(int(array.shape[y]), int(array.shape[x])) for array in self._arrays],
+            encoding_of(path, profile.read_bytes() if profile.is_file() else None),
+            8 * int(self._arrays[0].dtype.itemsize),
+            SlideFacts("ome-zarr", _pitch(scales, self._axes)),
+        )
 
     def _check(self, path: Path) -> None:
         sizes = dict(zip(self._axes, self._arrays[0].shape, strict=True))
@@ -55,36 +61,6 @@ class ZarrSlide:
             )
         if self._arrays[0].dtype not in (np.uint8, np.uint16, np.float32):
             raise RefusedError(path, f"it holds {self._arrays[0].dtype}; a slide has 8 bit, 16 bit or 32-bit float")
-
-    @property
-    def shape(self) -> tuple[int, int]:
-        """Rows and columns at full size."""
-        return self.levels[0]
-
-    @property
-    def levels(self) -> Sequence[tuple[int, int]]:
-        """Rows and columns of every level."""
-        y, x = self._axes.index("y"), self._axes.index("x")
-        return [(int(array.shape[y]), int(array.shape[x])) for array in self._arrays]
-
-    @property
-    def encoding(self) -> Encoding:
-        """By the profile beside the levels, if there is one; sRGB otherwise."""
-        return self._encoding
-
-    @property
-    def bits(self) -> int:
-        """Significant bits a channel."""
-        return {1: 8, 2: 16}.get(self._arrays[0].dtype.itemsize, 32)
-
-    @property
-    def facts(self) -> SlideFacts:
-        """What else the file says."""
-        return self._facts
-
-    def read(self, window: Window) -> Pixels:
-        """Return a window of the full size."""
-        return self.read_level(0, window)
 
     def read_level(self, level: int, window: Window) -> Pixels:
         """Return a window of a level.
@@ -103,9 +79,6 @@ class ZarrSlide:
             raise PictureError(self._path, f"a chunk of level {level} is broken: {error}") from error
         kept = [name for name in self._axes if name in "cyx"]
         return np.ascontiguousarray(part.transpose([kept.index(name) for name in "yxc"]))
-
-    def close(self) -> None:
-        """Nothing is held."""
 
 
 def _pitch(scales: Mapping[str, Any], axes: list[str]) -> tuple[float, float] | None:

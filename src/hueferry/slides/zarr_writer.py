@@ -69,6 +69,7 @@ def _store(made: Path, bands: Bands, form: SlideForm, version: str, threads: int
             shape=(3, *shape),
             chunks=(3, TILE, TILE),
             dtype=form.dtype,
+            dimension_names=None if version == "0.4" else ["c", "y", "x"],  # Zarr 2 has no place for them
             config={"write_empty_chunks": True},  # a chunk that is missing is then one that was not written
             chunk_key_encoding={"name": "v2" if version == "0.4" else "default", "separator": "/"},
         )
