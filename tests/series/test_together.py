@@ -16,7 +16,7 @@ from hueferry.colour.spaces import oklab_to_lab, xyz_to_oklab
 from hueferry.errors import InputError
 from hueferry.fitting.settings import Aim, Settings
 from hueferry.jobs import check_folder, match_files
-from hueferry.series.match import MatchOrder
+from hueferry.series.match import MatchOrder, plan_match
 from photographs import photograph
 
 CASTS = {"a": (1.0, 1.0, 1.0), "b": (0.95, 0.8, 0.62), "c": (0.7, 0.82, 0.95), "d": (0.78, 0.72, 0.8)}
@@ -77,6 +77,16 @@ def test_without_a_reference_they_are_brought_to_one_of_them(order: MatchOrder) 
     assert len(still) == 1
     assert Path(still[0].source.path).name in record.sentences[0]
     assert (order.out / Path(still[0].source.path).name).read_bytes() == Path(still[0].source.path).read_bytes()
+
+
+def test_a_plan_tells_the_groups_and_writes_nothing(order: MatchOrder) -> None:
+    Image.fromarray(photograph("rocket")[:300, :300]).save(order.inputs[0] / "x.png")
+
+    plan = plan_match(order)
+
+    assert plan.groups == [["b.png", "c.png", "d.png"], ["x.png"]]
+    assert any("x.png" in sentence for sentence in plan.sentences)
+    assert not order.out.exists()
 
 
 def test_other_aims_and_two_pictures_are_no_series(order: MatchOrder) -> None:

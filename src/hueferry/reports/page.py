@@ -78,6 +78,7 @@ def render_page(record: Json, glimpses: Sequence[Glimpse | None]) -> str:
         overview=_overview(entries),
         series=_series(record.get("overview", {})),
         outliers=_outliers(record.get("overview", {})),
+        series_said=" ".join(record["sentences"][1:]),
         failures=record["failures"],
         pictures=[
             _picture(entry, glimpse, drawn=len(entries) <= _DRAWN_UP_TO)

@@ -20,7 +20,7 @@ from hueferry.series.overview import overview
 from hueferry.series.plan import plan_errands
 from hueferry.series.references import load_mask
 from hueferry.series.schedule import Schedule, identity, is_sealed, make_schedule, seal_of
-from hueferry.series.together import LEAST_TOGETHER, Together, bring_together
+from hueferry.series.together import LEAST_TOGETHER, Together, bring_together, foresee_groups
 from hueferry.series.work import Work
 
 OnPlan = Callable[[Schedule], None]
@@ -81,11 +81,17 @@ class MatchOrder:
 def plan_match(order: MatchOrder) -> Schedule:
     """Return what a run would do, and write nothing.
 
+    Where pictures would be solved as one series they are read and compared, to tell the groups.
+
     Raises:
         InputError: it could not be done as asked.
     """
     with _journal_of(order) as journal:
-        return _schedule(order, journal)
+        schedule = _schedule(order, journal)
+        if not schedule.joint or not schedule.to_do:
+            return schedule
+        work = Work(schedule, journal, order.out, order.cluster)
+        return attrs.evolve(schedule, groups=foresee_groups(work, order.to))
 
 
 def match_pictures(order: MatchOrder, *, on_plan: OnPlan | None = None, on_done: OnDone | None = None) -> Run:

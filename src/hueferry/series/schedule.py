@@ -60,6 +60,7 @@ class Schedule:
         workers: pictures done at a time.
         memory: bytes that they may take together, at most.
         joint: the pictures are solved as one series.
+        groups: names of results that would be solved together, as far as it was looked for.
     """
 
     steps: Sequence[Step]
@@ -68,6 +69,7 @@ class Schedule:
     workers: int = 1
     memory: int = 0
     joint: bool = False
+    groups: Sequence[Sequence[str]] = ()
 
     @property
     def to_do(self) -> list[Step]:
@@ -90,6 +92,11 @@ class Schedule:
             said.append(f"{kept} of {len(self.steps)} pictures were dealt with by an earlier run; {count} to do")
         if count > 1:
             said.append(f"{count} pictures, {self.workers} at a time, at most {self.memory / 1e9:.1f} GB of memory")
+        if count and self.joint:
+            said.append("surfaces that several of them share are looked for first, and all are solved together")
+        said += [f"group {place}: {', '.join(group)}" for place, group in enumerate(self.groups, 1) if len(group) > 1]
+        if alone := [group[0] for group in self.groups if len(group) == 1]:
+            said.append(f"sharing no surface with another: {', '.join(alone)}")
         said += [f"{one.source} becomes {one.output.name}: {_why(one)}" for one in self.renamed]
         said += [f"{path} exists already and is not an unchanged result of an earlier run" for path in self.taken]
         return said
@@ -104,6 +111,8 @@ class Schedule:
             ],
             "workers": self.workers,
             "memory": self.memory,
+            "joint": self.joint,
+            "groups": [list(group) for group in self.groups],
             "renamed": [one.source.as_posix() for one in self.renamed],
             "taken": [path.as_posix() for path in self.taken],
         }

@@ -13,7 +13,8 @@ from hueferry.errors import HueferryError
 from hueferry.fitting.fit import Given
 from hueferry.fitting.reference import Reference, joint_palette
 from hueferry.fitting.settings import Settings
-from hueferry.series.links import Link, find_link
+from hueferry.series.groups import components
+from hueferry.series.links import Link, find_link, find_links
 from hueferry.series.references import load_references
 from hueferry.series.solution import Solution, solve_series
 from hueferry.series.views import View, view_of
@@ -77,6 +78,24 @@ def bring_together(work: Work, to: Sequence[Path], settings: Settings, *, time_l
         sentence = f"along its own slow changes; costs are {sentence}"
     given = {frame.name: Given(frame.map, frame.evidence, open=not time_lapse) for frame in solution.frames}
     return Together(named, [sentence, *solution.sentences], given, _overview(solution))
+
+
+def foresee_groups(work: Work, to: Sequence[Path]) -> list[list[str]]:
+    """Return which pictures would be solved together, by the names of their results; single ones are groups of one.
+
+    Pictures are read and compared for it; nothing is written.
+    """
+    views = _looked_at(work)
+    shown = [view for number, path in enumerate(to) if (view := look((path, f"/{number}"))) is not None]
+    everything = [*views, *shown]
+    if not views:
+        return []
+    links = find_links(everything, anchors=range(len(views), len(everything)), spread=partial(_links, work))
+    labels = components(len(everything), links)[: len(views)]
+    groups: dict[int, list[str]] = {}
+    for view, label in zip(views, labels, strict=True):
+        groups.setdefault(int(label), []).append(view.name)
+    return sorted(groups.values(), key=lambda group: (-len(group), group))
 
 
 def _looked_at(work: Work) -> list[View]:
