@@ -128,10 +128,9 @@ def structure_kept(before: Look, after: Look) -> dict[str, float]:
 
 def _nuclear(look: Look) -> NDArray[np.float64]:
     top = 1.0 if look.thumbnail.dtype == np.float32 else float(2**look.bits - 1)
-    density = look.scale.of(look.thumbnail.reshape(-1, 3) / top)
     stains = stains_of(look.density)
-    vectors = FALLBACK if stains is None else stains.vectors
-    return np.asarray((density @ np.linalg.pinv(vectors))[:, 0].reshape(look.thumbnail.shape[:2]))
+    weights = np.linalg.pinv(FALLBACK if stains is None else stains.vectors)[:, 0]
+    return np.stack([look.scale.of(row / top) @ weights for row in look.thumbnail])
 
 
 def _ssim(one: NDArray[np.float64], two: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -159,10 +158,11 @@ def within(look: Look, thumbnail: Pixels) -> Look:
     rows, columns = np.nonzero(look.regions.tissue)
     step = max(1, -(-len(rows) // max(len(look.density), 1)))
     codes = thumbnail[rows[::step], columns[::step], :3].astype(np.float64) / top
-    flat = thumbnail[:, :, :3].astype(np.float64) / top
-    glass = look.scale.glass
-    near = (np.abs(look.thumbnail.astype(np.float64) / top - glass).max(axis=2) < 2 / 255) & ~look.regions.tissue
-    white = np.median(flat[near], axis=0) if near.any() else np.percentile(flat.reshape(-1, 3), 99.5, axis=0)
+    near = ~look.regions.tissue
+    for channel, code in enumerate(look.scale.glass):
+        near &= np.abs(look.thumbnail[:, :, channel] / top - code) < 2 / 255
+    white = np.median(thumbnail[near], axis=0) if near.any() else np.percentile(thumbnail, 99.5, axis=(0, 1))
+    white = white[:3] / top
     scale = Density(np.clip(white, 0.02, 1.0), look.scale.encoding, look.scale.light)
     return attrs.evolve(
         look, thumbnail=thumbnail[:, :, :3], scale=scale, codes=codes, density=scale.of(codes),
