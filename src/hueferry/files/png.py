@@ -31,7 +31,11 @@ def _chunks(path: Path, data: bytes) -> Iterator[Chunk]:
         kind = data[position + 4 : position + 8]
         if position + 12 + length > len(data):
             raise PictureError(path, "a PNG chunk is longer than the file; the file ends early")
-        yield kind, data[position + 8 : position + 8 + length]
+        body = data[position + 8 : position + 8 + length]
+        stated = int.from_bytes(data[position + 8 + length : position + 12 + length], "big")
+        if not kind[0] & 0x20 and zlib.crc32(body, zlib.crc32(kind)) != stated:
+            raise PictureError(path, "a checksum of the PNG stream is wrong; copy the file again from its source")
+        yield kind, body
         if kind == b"IEND":
             return
         position += 12 + length
@@ -56,7 +60,7 @@ def read_png(path: Path, data: bytes, *, accept_loss: bool) -> Decoded:
     width, height = (int.from_bytes(chunks[0][1][start : start + 4], "big") for start in (0, 4))
     check_size(path, (height, width))
     try:
-        pixels = np.atleast_3d(imagecodecs.png_decode(data))
+        pixels = np.atleast_3d(imagecodecs.png_decode(_bare(chunks)))
     except (imagecodecs.PngError, ValueError, MemoryError) as error:
         raise PictureError(path, f"the PNG stream cannot be decoded: {error}") from error
     metadata, notes = _metadata(path, chunks), _notes(chunks)
@@ -77,6 +81,18 @@ def _notes(chunks: list[Chunk]) -> tuple[str, ...]:
     lost = sorted({kind.decode("latin-1") for kind, _ in chunks if kind not in known and kind[0] & 0x20})
     named = ", ".join(name if name.isalnum() else "one without a name" for name in lost[:9])
     return (*notes, f"PNG chunks that cannot be kept with changed pixels were left out: {named}") if lost else notes
+
+
+def _bare(chunks: list[Chunk]) -> bytes:
+    """Return a PNG of what its pixels need, in order: the decoder complains aloud where others are broken."""
+    colour = chunks[0][1][9]
+    palette = [chunk for chunk in chunks if chunk[0] == b"PLTE" and colour == 3][:1]
+    most = len(palette[0][1]) // 3 if palette else 0
+    fits = {0: (2, 2), 2: (6, 6), 3: (1, most)}.get(colour, (1, 0))
+    clear = [chunk for chunk in chunks if chunk[0] == b"tRNS" and fits[0] <= len(chunk[1]) <= fits[1]][:1]
+    data = [chunk for chunk in chunks if chunk[0] == b"IDAT"]
+    needed = (chunks[0], *palette, *clear, *data, (b"IEND", b""))
+    return SIGNATURE + b"".join(_chunk(kind, body) for kind, body in needed)
 
 
 def _stated(path: Path, chunks: list[Chunk]) -> Encoding | None:
