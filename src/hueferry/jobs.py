@@ -9,7 +9,6 @@ from pathlib import Path
 from typing import Any
 
 import attrs
-import numpy as np
 
 from hueferry.api import as_reference, read, report
 from hueferry.errors import InputError
@@ -290,27 +289,3 @@ def house_palette_file(
         "shares": list(found.shares),
         "stain_vectors": None if found.stains is None else found.stains.vectors.tolist(),
     }
-
-
-def export_decision_list(map_file: Path, *, out: Path, over: Path, overwrite: bool = False) -> dict[str, Any]:
-    """Save the decision list nearest to a map over the colours of a picture, and return it with its distance.
-
-    Raises:
-        InputError: a file cannot be read, or the list cannot be written as asked.
-    """
-    from hueferry.colour.spaces import oklab_to_xyz
-    from hueferry.errors import OutputError
-    from hueferry.files.atomic import write_bytes
-    from hueferry.palettes.build import palette_of
-    from hueferry.tables.cdl import cc_text
-    from hueferry.tables.clf import read_clf
-    from hueferry.tables.fit_cdl import fit_decision_list
-
-    if out.suffix.lower() != ".cc":
-        raise OutputError(out, "a decision list is saved with a name that ends in .cc")
-    table, picture = read_clf(map_file), read(over)
-    colours = palette_of(picture)
-    codes = np.clip(picture.encoding.from_xyz(oklab_to_xyz(colours.colours)), 0.0, 1.0)
-    fitted = fit_decision_list(table, codes, colours.weights, picture.encoding)
-    write_bytes(out, cc_text(fitted.grade).encode(), overwrite=overwrite)
-    return {"schema": "hueferry/export-1", "file": out.as_posix(), **attrs.asdict(fitted)}

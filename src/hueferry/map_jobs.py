@@ -13,10 +13,11 @@ from hueferry.api import apply, as_reference, read, write
 from hueferry.errors import HueferryError, InputError, OutputError
 from hueferry.fitting.fit import Fit, fit_picture
 from hueferry.fitting.settings import Settings
-from hueferry.picture import Encoding
+from hueferry.picture import Encoding, Picture
 from hueferry.record.record import Failure
 from hueferry.tables.certificate import Certificate
 from hueferry.tables.saved_map import SavedMap
+from hueferry.tables.table import Table
 
 
 def fit_file(picture: Path, *, to: Sequence[Path], out: Path, settings: Settings, overwrite: bool = False) -> Fit:
@@ -191,3 +192,95 @@ def preview_map(
         encoding, palette = picture.encoding, palette_of(picture)
     drawn = draw_map(checked.saved.table, encoding, title=title, sentences=checked.sentences, palette=palette)
     return write_bytes(out, drawn, overwrite=overwrite)
+
+
+def export_map(
+    map_file: Path,
+    *,
+    out: Path,
+    over: Path | None = None,
+    abstract: bool = False,
+    size: int | None = None,
+    overwrite: bool = False,
+) -> dict[str, Any]:
+    """Save a map in another open standard, told by the suffix of `out`, and return how far it is from the map.
+
+    Args:
+        map_file: any map that can be read.
+        out: `.icc` for an ICC profile, `.cc` for an ASC decision list, `.clf` for CLF.
+        over: picture whose encoding the map's codes are of, and whose colours a decision list must suit; None takes
+            sRGB, and for a decision list all of its colours alike.
+        abstract: make the ICC profile an abstract one, from Lab to Lab, rather than a device link.
+        size: nodes along an axis of a CLF; None keeps the map's own.
+        overwrite: replace an earlier file.
+
+    Raises:
+        InputError: a file cannot be read, or the map cannot be written as asked.
+    """
+    from hueferry.files.atomic import write_bytes
+    from hueferry.tables.saved_map import read_map
+
+    makers = {".icc": _as_profile, ".icm": _as_profile, ".cc": _as_decision_list, ".clf": _as_clf}
+    if out.suffix.lower() not in makers:
+        raise OutputError(out, "the suffix names no form of a map; use .icc, .cc or .clf")
+    picture = None if over is None else read(over)
+    wish = _Export(read_map(map_file).table, map_file.stem, picture, abstract, size)
+    data, facts = makers[out.suffix.lower()](wish)
+    write_bytes(out, data, overwrite=overwrite)
+    return {"schema": "hueferry/export-1", "file": out.as_posix(), **facts}
+
+
+@attrs.frozen(eq=False)
+class _Export:
+    table: Table
+    name: str
+    over: Picture | None
+    abstract: bool
+    size: int | None
+
+    @property
+    def encoding(self) -> Encoding:
+        from hueferry.colour.encoding import SRGB
+
+        return SRGB if self.over is None else self.over.encoding
+
+
+def _as_profile(wish: _Export) -> tuple[bytes, dict[str, Any]]:
+    from hueferry.tables.icc import abstract_error, abstract_profile, device_link, link_error
+
+    if wish.abstract:
+        error = abstract_error(wish.table, wish.encoding)
+        return abstract_profile(wish.table, wish.encoding, name=wish.name), {"kind": "abstract", **attrs.asdict(error)}
+    error = link_error(wish.table, wish.encoding)
+    return device_link(wish.table, name=wish.name), {"kind": "device link", **attrs.asdict(error)}
+
+
+def _as_decision_list(wish: _Export) -> tuple[bytes, dict[str, Any]]:
+    from hueferry.colour.spaces import oklab_to_xyz
+    from hueferry.palettes.build import palette_of
+    from hueferry.tables.cdl import cc_text
+    from hueferry.tables.fit_cdl import fit_decision_list
+
+    if wish.over is None:
+        ramp = np.linspace(0.0, 1.0, 9)
+        codes = np.stack(np.meshgrid(ramp, ramp, ramp, indexing="ij"), axis=-1).reshape(-1, 3)
+        weights = np.full(len(codes), 1 / len(codes))
+    else:
+        colours = palette_of(wish.over)
+        codes = np.clip(wish.encoding.from_xyz(oklab_to_xyz(colours.colours)), 0.0, 1.0)
+        weights = np.array(colours.weights)
+    fitted = fit_decision_list(wish.table, codes, weights, wish.encoding)
+    return cc_text(fitted.grade).encode(), {"kind": "decision list", **attrs.asdict(fitted)}
+
+
+def _as_clf(wish: _Export) -> tuple[bytes, dict[str, Any]]:
+    from hueferry.tables.build import sample_table
+    from hueferry.tables.clf import clf_text
+    from hueferry.tables.icc import table_distance
+    from hueferry.tables.lookup import look_up
+
+    table = wish.table
+    if wish.size is not None and wish.size != table.size:
+        table = sample_table(lambda codes: look_up(wish.table, codes), size=wish.size)
+    error = table_distance(table, wish.table, wish.encoding)
+    return clf_text(table, encoding=wish.encoding.name).encode(), {"kind": "CLF", **attrs.asdict(error)}

@@ -1,4 +1,4 @@
-"""`hueferry export`: a map as a decision list that people can edit."""
+"""`hueferry export`: a map in another open standard."""
 
 from __future__ import annotations
 
@@ -12,20 +12,32 @@ from hueferry.cli.terminal import show_json, show_lines
 
 
 def export(
-    map_file: Annotated[Path, typer.Argument(help="A map in the Common LUT Format.", metavar="MAP.clf")],
-    out: Annotated[Path, typer.Option("--out", help="Where the decision list is saved, as .cc.")],
-    over: Annotated[Path, typer.Option("--over", help="Picture whose colours the list must suit.", metavar="PICTURE")],
+    map_file: Annotated[Path, typer.Argument(help="A saved map.", metavar="MAP")],
+    out: Annotated[
+        Path,
+        typer.Option("--out", help="Where it is saved: .icc profile, .cc decision list, .clf.", metavar="FILE"),
+    ],
     *,
+    over: Annotated[
+        Path | None,
+        typer.Option("--over", help="Picture that the map is for: its encoding, its colours.", metavar="PICTURE"),
+    ] = None,
+    abstract: Annotated[
+        bool, typer.Option("--abstract", help="Make the profile an abstract one, Lab to Lab; else a device link.")
+    ] = False,
+    size: Annotated[int | None, typer.Option("--size", help="Nodes along an axis of a CLF.", min=2, max=129)] = None,
     json: options.Json = False,
     overwrite: options.Overwrite = False,
 ) -> None:
-    """Save the ASC decision list nearest to a map, and say how far it is from it."""
-    from hueferry.jobs import export_decision_list
+    """Save a map as an ICC profile, an ASC decision list or CLF, and say how far that is from it."""
+    from hueferry.map_jobs import export_map
 
-    saved = export_decision_list(map_file, out=out, over=over, overwrite=overwrite)
+    saved = export_map(map_file, out=out, over=over, abstract=abstract, size=size, overwrite=overwrite)
     if json:
         show_json(saved)
-    else:
-        show_lines(
-            [f"saved as {out}: {saved['mean']:.2f} ΔE00 from the map on average, at most {saved['largest']:.2f}"]
-        )
+        return
+    distance = f"{saved['mean']:.2f} ΔE00 from the map on average, at most {saved['largest']:.2f}"
+    lines = [f"saved as {out}, {saved['kind']}: {distance}"]
+    if saved.get("clipped"):
+        lines.append(f"{100 * saved['clipped']:.1f} % of all codes come out beyond the range and are clipped there")
+    show_lines(lines)

@@ -40,8 +40,8 @@ def gray_profile_of(encoding: Encoding) -> bytes:
     if not isinstance(encoding, MatrixEncoding) or len(set(encoding.curves)) != 1:
         raise InputError(f"no gray profile can be made for {encoding.name}")
     tags = {
-        b"desc": _text_tag(f"{encoding.name} gray"),
-        b"cprt": _text_tag(_COPYRIGHT),
+        b"desc": text_tag(f"{encoding.name} gray"),
+        b"cprt": text_tag(_COPYRIGHT),
         b"wtpt": _xyz_tag(WHITE_D50),
         b"kTRC": _curve_tag(encoding.curves[0]),
     }
@@ -52,8 +52,8 @@ def matrix_profile(encoding: MatrixEncoding) -> bytes:
     """Make a display profile, version 4.4 (ICC.1:2022, clause 8.3.3), of a matrix encoding with parametric curves."""
     red, green, blue = (_xyz_tag(encoding.matrix[:, channel]) for channel in range(3))
     tags = {
-        b"desc": _text_tag(encoding.name),
-        b"cprt": _text_tag(_COPYRIGHT),
+        b"desc": text_tag(encoding.name),
+        b"cprt": text_tag(_COPYRIGHT),
         b"wtpt": _xyz_tag(WHITE_D50),
         b"chad": b"sf32\0\0\0\0" + _fixed(adaptation(WHITE_D65, WHITE_D50).ravel()),
         b"rXYZ": red,
@@ -90,7 +90,8 @@ def _xyz_tag(values: NDArray[np.float64]) -> bytes:
     return b"XYZ \0\0\0\0" + _fixed(values)
 
 
-def _text_tag(text: str) -> bytes:
+def text_tag(text: str) -> bytes:
+    """Return a multi-localised text of one language, English (ICC.1:2022, clause 10.15)."""
     encoded = text.encode("utf-16-be")
     return b"mluc\0\0\0\0" + struct.pack(">II2s2sII", 1, 12, b"en", b"US", len(encoded), 28) + encoded
 
