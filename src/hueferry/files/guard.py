@@ -140,13 +140,16 @@ def serve() -> None:
     with Connection(int(sender), readable=False) as pipe:
         try:
             pipe.send(_decode(Path(name), format_, bool(int(accept_loss)), (int(limit), int(memory))))
-        except HueferryError as error:
-            pipe.send(error)
-        except MemoryError:
-            reason = (
-                f"decoding it takes more than the limit of {int(limit) >> 20:,} MB; raise the limit, if you trust it"
-            )
-            pipe.send(PictureError(Path(name), reason))
+        except (HueferryError, MemoryError) as error:
+            short = isinstance(error, MemoryError) or isinstance(error.__cause__, MemoryError)
+            pipe.send(_out_of_memory(Path(name), int(limit)) if short else error)
+
+
+def _out_of_memory(path: Path, limit: int) -> PictureError:
+    size = f"decoding its {path.stat().st_size:,} bytes"
+    return PictureError(
+        path, f"{size} takes more memory than the limit of {limit >> 20:,} MB; raise it, if you trust it"
+    )
 
 
 def _decode(path: Path, format_: str, accept_loss: bool, room: tuple[int, int]) -> tuple[Any, ...]:
