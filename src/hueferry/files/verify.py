@@ -1,4 +1,4 @@
-"""Looking at a written file with a decoder that is not the reader's own, before it gets its name."""
+"""Looking at a written file before it gets its name, with a decoder other than the reader's own where there is one."""
 
 from __future__ import annotations
 
