@@ -115,6 +115,9 @@ class Journal:
             self._home.mkdir(parents=True, exist_ok=True)
             for left in self._home.glob("stage-*"):  # of a run that was killed
                 shutil.rmtree(left, ignore_errors=True)
+            for half in self._out.glob(".hueferry-*"):  # a record or page that such a run was about to name
+                if half.is_file():
+                    half.unlink(missing_ok=True)
             self._stage = Path(tempfile.mkdtemp(prefix="stage-", dir=self._home))
         except OSError as error:
             raise OutputError(self._out, f"nothing can be written here: {error.strerror or error}") from error
