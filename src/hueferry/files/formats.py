@@ -127,7 +127,7 @@ FORMATS: Mapping[str, Format] = MappingProxyType(
                 alpha=True,
                 gray=True,
                 lossless=True,
-                keeps=frozenset({"profile", "xmp", "iptc"}),
+                keeps=_ALL | {"iptc"},
                 turn="own",
             ),
             Format(

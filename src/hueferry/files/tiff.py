@@ -3,6 +3,10 @@
 from __future__ import annotations
 
 import io
+import logging
+import struct
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any, TypeAlias
 
@@ -19,6 +23,20 @@ TiffPage: TypeAlias = Any
 _ICC, _XMP, _IPTC, _ORIENTATION = 34675, 700, 33723, 274
 _COMPRESSIONS = {1: None, 5: "lzw", 7: "jpeg", 8: "zlib", 32946: "zlib", 50000: "zstd"}
 _BYTE, _SHORT, _UNDEFINED = 1, 3, 7
+_BROKEN = (
+    ValueError,
+    KeyError,
+    IndexError,
+    RuntimeError,
+    OSError,
+    TypeError,
+    MemoryError,
+    AttributeError,
+    ArithmeticError,
+    AssertionError,
+    struct.error,
+)
+"""What the library raises for files that are not what they say."""
 
 
 def read_tiff(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Metadata, bytes | None]:
@@ -31,25 +49,27 @@ def read_tiff(path: Path, data: bytes, *, accept_loss: bool) -> tuple[Pixels, Me
     import tifffile
 
     try:
-        with tifffile.TiffFile(io.BytesIO(data)) as tiff:
+        with _quiet(), tifffile.TiffFile(io.BytesIO(data)) as tiff:
             if not accept_loss:
                 _check_single(path, len(tiff.pages))
             page: TiffPage = tiff.pages[0]
             pixels = _pixels(path, page)
-            return pixels, _metadata(page), _bytes(page, _ICC) or None
+            return pixels, _metadata(page, data), _bytes(page, _ICC) or None
     except RefusedError:
         raise
-    except (
-        tifffile.TiffFileError,
-        ValueError,
-        KeyError,
-        IndexError,
-        RuntimeError,
-        OSError,
-        TypeError,
-        MemoryError,
-    ) as error:
+    except (tifffile.TiffFileError, *_BROKEN) as error:
         raise PictureError(path, f"the TIFF cannot be decoded: {error}") from error
+
+
+@contextmanager
+def _quiet() -> Iterator[None]:
+    """Keep what the library logs of a broken file off the terminal: the error says it."""
+    log = logging.getLogger("tifffile")
+    before, log.disabled = log.disabled, True
+    try:
+        yield
+    finally:
+        log.disabled = before
 
 
 def _check_single(path: Path, pages: int) -> None:
@@ -59,7 +79,7 @@ def _check_single(path: Path, pages: int) -> None:
 
 
 def _pixels(path: Path, page: TiffPage) -> Pixels:
-    kind = page.photometric.name
+    kind = getattr(page.photometric, "name", str(page.photometric))
     if kind not in ("RGB", "MINISBLACK", "YCBCR"):
         raise RefusedError(path, f"this TIFF holds {kind} colour; convert it to RGB or gray first")
     check_size(path, (int(page.imagelength), int(page.imagewidth)))
@@ -84,14 +104,17 @@ def _bytes(page: TiffPage, code: int) -> bytes:
     return bytes(value) if isinstance(value, bytes | tuple | list) else str(value).encode()
 
 
-def _metadata(page: TiffPage) -> Metadata:
-    orientation = page.tags.get(_ORIENTATION)
-    value = int(orientation.value) if orientation is not None else 1
+def _metadata(page: TiffPage, data: bytes) -> Metadata:
+    from hueferry.files.tiff_exif import exif_of_tiff
+
+    tag = page.tags.get(_ORIENTATION)
+    orientation = int(tag.value) if tag is not None and 1 <= int(tag.value) <= 8 else 1
     return Metadata(
         format="tiff",
+        exif=exif_of_tiff(data, orientation),
         xmp=_bytes(page, _XMP),
         iptc=_bytes(page, _IPTC),
-        orientation=value if 1 <= value <= 8 else 1,
+        orientation=orientation,
         container={
             "compression": _COMPRESSIONS.get(int(page.compression), "zlib"),
             "predictor": int(page.predictor) > 1,
@@ -116,16 +139,18 @@ def write_tiff(pixels: Pixels, metadata: Metadata, profile: bytes | None) -> byt
     """Encode a TIFF at the depth of its pixels; lossless, also where the source was JPEG in TIFF."""
     import tifffile
 
+    from hueferry.files.tiff_exif import texts_of_exif, with_exif
+
     facts = metadata.container if metadata.format == "tiff" else {}
     compression: Any = facts.get("compression", "zlib") or None
     compression = "zlib" if compression == "jpeg" else compression
     extra: list[Any] = [(_XMP, _BYTE, len(metadata.xmp), metadata.xmp, True)] if metadata.xmp else []
     extra += [(_IPTC, _UNDEFINED, len(metadata.iptc), metadata.iptc, True)] if metadata.iptc else []
     extra += [(_ORIENTATION, _SHORT, 1, metadata.orientation, True)] if metadata.orientation != 1 else []
-    texts = facts.get("texts")
+    texts = facts.get("texts") or texts_of_exif(metadata.exif)
     extra += (
         [(code, 2, 0, str(text), True) for code, text in texts if isinstance(text, str)]
-        if isinstance(texts, tuple)
+        if isinstance(texts, tuple | list)
         else []
     )
     tile: Any = facts.get("tile")
@@ -149,4 +174,4 @@ def write_tiff(pixels: Pixels, metadata: Metadata, profile: bytes | None) -> byt
         metadata=None,
         software=False,
     )
-    return buffer.getvalue()
+    return with_exif(buffer.getvalue(), metadata.exif)
