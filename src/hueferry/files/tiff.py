@@ -121,7 +121,7 @@ def _metadata(page: TiffPage, data: bytes) -> Metadata:
             "tile": tuple(page.tile) if page.is_tiled else None,
             "resolution": _resolution(page),
             "texts": tuple(
-                (code, page.tags[code].value) for code in (270, 271, 272, 306, 315, 33432) if code in page.tags
+                (code, page.tags[code].value) for code in (270, 271, 272, 305, 306, 315, 33432) if code in page.tags
             ),
         },
     )

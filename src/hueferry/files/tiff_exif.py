@@ -16,7 +16,10 @@ import attrs
 
 EXIF_POINTER, GPS_POINTER = 34665, 34853
 _INTEROP_POINTER, _ORIENTATION = 40965, 274
-_TEXTS = (270, 271, 272, 306, 315, 33432)
+_TEXTS = (270, 271, 272, 305, 306, 315, 33432)
+_OF_A_PHOTOGRAPH = frozenset({271, 272, 306, 315, 33432})
+"""Maker, model, time, artist and copyright: what other formats have EXIF for."""
+
 _MOST_ENTRIES = 1000
 _MOST_BYTES = 1 << 24
 _SIZES: Mapping[int, int] = {
@@ -122,7 +125,7 @@ def exif_of_tiff(data: bytes, orientation: int) -> bytes:
         return b""
     first = block.entries(block.first())
     inner, place = block.pointed(first, EXIF_POINTER), block.pointed(first, GPS_POINTER)
-    if not inner and not place:
+    if not inner and not place and not first.keys() & _OF_A_PHOTOGRAPH:
         return b""
     outer = {tag: first[tag] for tag in _TEXTS if tag in first and first[tag].kind == _ASCII}
     outer[_ORIENTATION] = _Value(_SHORT, 1, struct.pack(block.order + "H", orientation))
@@ -132,7 +135,7 @@ def exif_of_tiff(data: bytes, orientation: int) -> bytes:
 
 
 def texts_of_exif(exif: bytes) -> Sequence[tuple[int, str]]:
-    """Return description, maker, model, time, artist and copyright of an EXIF block, by their tags."""
+    """Return description, maker, model, software, time, artist and copyright of an EXIF block, by their tags."""
     block = _Block.of(exif)
     first = {} if block is None else block.entries(block.first())
     found = [(tag, first[tag].data.split(b"\0")[0]) for tag in _TEXTS if tag in first and first[tag].kind == _ASCII]
@@ -145,7 +148,7 @@ def with_exif(tiff: bytes, exif: bytes) -> bytes:
     The new first directory takes the place of the old one, whose long values stay where they are.
     """
     source, target = _Block.of(exif), _Block.of(tiff)
-    if source is None or target is None:
+    if source is None or target is None or not source.entries(source.first()).keys() & {EXIF_POINTER, GPS_POINTER}:
         return tiff
     first, side = source.entries(source.first()), "little" if target.order == "<" else "big"
     rows, following = target.rows()
