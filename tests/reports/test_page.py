@@ -107,6 +107,13 @@ def test_the_page_is_rebuilt_byte_for_byte_from_the_record(run: Path) -> None:
     assert (run / "report.html").read_bytes() == before
 
 
+def test_the_page_says_once_what_the_pictures_were_brought_towards(run: Path) -> None:
+    page = (run / "report.html").read_text(encoding="utf-8")
+
+    assert "Brought towards hero.png. The median" in page
+    assert page.count("were solved together.") == 1
+
+
 def test_a_record_whose_pictures_are_gone_still_makes_a_page(run: Path, tmp_path: Path) -> None:
     (tmp_path / "record.json").write_bytes((run / "record.json").read_bytes())
 

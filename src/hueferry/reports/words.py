@@ -80,7 +80,7 @@ def summary(record: Json) -> str:
     before = median(entry["numbers"]["cost_before"]["w2"] for entry in entries)
     after = median(entry["numbers"]["cost_after"]["w2"] for entry in entries)
     safe = sum(entry["numbers"]["certificate"]["safe"] for entry in entries)
-    where = " ".join(record["sentences"])
+    where = record["sentences"][0]
     failed = f" {len(record['failures'])} could not be done." if record["failures"] else ""
     maps = "every map is safe" if safe == len(entries) else f"{safe} of {len(entries)} maps are safe"
     return (
